@@ -1,0 +1,300 @@
+"""The march: a cloud through the legs of a plan, one accepted step at a time.
+
+`march` is a generator that can be restarted: from any state it yielded, a new march is exactly the rest of the run.
+Recording, checkpoints and progress are consumers of what it yields.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Generator, Iterator, Sequence
+from dataclasses import dataclass, field, replace
+
+import numpy as np
+
+from trapsim.cloud.cloud import Cloud
+from trapsim.errors import Notice
+from trapsim.evolve.guards import Guards, edge_population, spectrum_population
+from trapsim.evolve.pace import Buffers, Flight, Stride, Trapped
+from trapsim.evolve.scaling import Interval, LawStart, MovingLaw, StandingLaw, measure_law, standing_start
+from trapsim.evolve.splitstep import Rest, SplitStep
+from trapsim.fields import ORIGIN, Triple
+from trapsim.measure.observables import Profile, profile
+from trapsim.space.resample import resample
+from trapsim.space.space import Array, Space
+from trapsim.terms.part import remainder
+
+#: the frame law is measured again when a width in the frame has moved by this share
+MOVED = 0.15
+#: transform pairs a full profile costs: half a pair, and one derivative per direction
+PROFILE_PAIRS = 1.5
+
+
+@dataclass(frozen=True)
+class Leg:
+    """A stretch of the march on one space, from one edge of the timeline to the next.
+
+    Parameters
+    ----------
+    name, kind : str
+        The stage it belongs to.
+    stage : int
+        Index of that stage.
+    start, stop : float
+        s, from the start of the sequence.
+    space : Space
+    interval : Interval
+        What acts, smooth on [start, stop].
+    trapped : bool
+        Whether a part that confines is on.
+    moving : bool
+        Whether the frame follows the cloud.
+    landings : tuple of float
+        Times to hit exactly.
+    kick : (3,)
+        Velocity given to the whole cloud at the start, m/s.
+    last : bool
+        Whether the stage ends with it.
+    """
+
+    name: str
+    kind: str
+    stage: int
+    start: float
+    stop: float
+    space: Space
+    interval: Interval
+    trapped: bool
+    moving: bool = True
+    landings: tuple[float, ...] = ()
+    kick: Triple = ORIGIN
+    last: bool = True
+
+
+@dataclass(frozen=True)
+class Books:
+    """What the march has cost and how wrong it may be, so far.
+
+    Parameters
+    ----------
+    pairs : float
+        Transform pairs.
+    steps, rejected : int
+    error : float
+        Sum of the L2 error estimates of the steps.
+    edge, spectrum : (3,)
+        Highest populations seen near the edges of the axes and of their spectra.
+    flight_pairs : float
+        The share of `pairs` spent with no trap on.
+    """
+
+    pairs: float = 0.0
+    steps: int = 0
+    rejected: int = 0
+    error: float = 0.0
+    edge: Array = field(default_factory=lambda: np.zeros(3))
+    spectrum: Array = field(default_factory=lambda: np.zeros(3))
+    flight_pairs: float = 0.0
+
+    def spent(self, pairs: float, *, flight: bool) -> Books:
+        return replace(self, pairs=self.pairs + pairs, flight_pairs=self.flight_pairs + pairs * flight)
+
+
+@dataclass(frozen=True)
+class State:
+    """Where the march stands: all that a checkpoint needs.
+
+    Parameters
+    ----------
+    cloud : Cloud
+    leg : int
+        Index of the leg it is in; `law` is None until that leg is entered.
+    stride : Stride or None
+    law : LawStart or None
+    books : Books
+    notices : tuple of Notice
+    """
+
+    cloud: Cloud
+    leg: int = 0
+    stride: Stride | None = None
+    law: LawStart | None = None
+    books: Books = field(default_factory=Books)
+    notices: tuple[Notice, ...] = ()
+
+    def copy(self) -> State:
+        """The same state with its own samples, to keep beyond the next step."""
+        return replace(self, cloud=self.cloud.copy())
+
+
+@dataclass(frozen=True)
+class Tick:
+    """One accepted step; its state is borrowed until the next one."""
+
+    state: State
+    reason: str  #: "step", "landing" (a time asked for) or "edge" (the end of a leg)
+
+
+@dataclass(frozen=True)
+class Pace:
+    """How accurate the steps are: L2 tolerance of the wave function per step."""
+
+    tolerance: float
+
+    def of(self, leg: Leg) -> Flight | Trapped:
+        return Trapped(self.tolerance) if leg.trapped else Flight(self.tolerance)
+
+
+def march(
+    state: State, legs: Sequence[Leg], *, pace: Pace, guards: Guards
+) -> Iterator[Tick]:
+    """Play the legs from a state on; yields after every accepted step.
+
+    Parameters
+    ----------
+    state : State
+    legs : sequence of Leg
+    pace : Pace
+    guards : Guards
+
+    Raises
+    ------
+    PhysicsRefused
+        When a guard stops the march.
+    """
+    while state.leg < len(legs):
+        leg = legs[state.leg]
+        if state.law is None:
+            state = _enter(state, leg, guards)
+        state = yield from _play(state, leg, pace=pace, guards=guards)
+
+
+def _enter(state: State, leg: Leg, guards: Guards) -> State:
+    """Put the cloud on the leg's space, kick it, and measure the frame law on it."""
+    cloud = replace(state.cloud, time=leg.start)
+    if cloud.space is not leg.space and cloud.space.describe() != leg.space.describe():
+        cloud = replace(cloud, phi=resample(cloud.phi, cloud.space, leg.space), space=leg.space)
+    if any(leg.kick):
+        cloud = kicked(cloud, leg.kick, moving=leg.moving)
+    seen = profile(cloud)
+    spectrum = spectrum_population(cloud.space, seen.spectrum)
+    books = state.books.spent(PROFILE_PAIRS, flight=not leg.trapped)
+    books = replace(books, spectrum=np.maximum(books.spectrum, spectrum))
+    law = _law_start(cloud, seen, leg)
+    alarm = guards.check(
+        time=cloud.time, norm=seen.norm, edge=np.zeros(3), spectrum=spectrum, place=f"stage {leg.name}"
+    )
+    if alarm:
+        raise alarm.refuse(time=cloud.time, place=f"stage {leg.name}", space=cloud.space)
+    return replace(state, cloud=cloud, law=law, stride=None, books=books)
+
+
+def _law_start(cloud: Cloud, seen: Profile, leg: Leg) -> LawStart:
+    return measure_law(cloud, seen, floor=not leg.trapped) if leg.moving else standing_start(cloud, seen)
+
+
+def kicked(cloud: Cloud, velocity: Triple, *, moving: bool) -> Cloud:
+    """The cloud after an instantaneous velocity kick (m/s): the frame takes it, or the wave function does."""
+    if moving:
+        return replace(cloud, frame=replace(cloud.frame, Xdot=cloud.frame.Xdot + np.asarray(velocity)))
+    angle = 0.0
+    for j, (v, x) in enumerate(zip(velocity, cloud.space.coordinates(), strict=True)):
+        if v:
+            if len(cloud.space.axis(j).covers) > 1:
+                raise ValueError("a round axis can carry no velocity of its own")
+            angle = angle + (v / cloud.q) * cloud.frame.b[j] * x
+    return replace(cloud, phi=cloud.space.array(cloud.phi * np.exp(1j * angle)))
+
+
+def _stepper(law_start: LawStart, leg: Leg, q: float) -> SplitStep:
+    law = (MovingLaw if leg.moving else StandingLaw)(law_start, leg.interval, q=q)
+    return SplitStep(leg.space, law, q=q, rest=_rest(law, leg))
+
+
+def _rest(law: MovingLaw | StandingLaw, leg: Leg) -> Rest:
+    """What the frame does not take, as a function of time; evaluated once where nothing changes."""
+    coordinates = leg.space.coordinates()
+
+    def left(t: float) -> Array | float:
+        frame = law.frame(t)
+        lab = tuple(frame.lab(x, j) for j, x in enumerate(coordinates))
+        parts = leg.interval.parts_at(t)
+        if leg.moving:
+            return remainder(parts, tuple(frame.X), *lab)
+        origin = tuple(np.asarray(c) for c in frame.X)
+        return sum(p.energy(*lab) - p.energy(*origin) for p in parts if p.strength)
+
+    if leg.interval.steady and not leg.moving:
+        always = left(0.5 * (leg.start + leg.stop))
+        return lambda t: always
+    return left
+
+
+def _play(state: State, leg: Leg, *, pace: Pace, guards: Guards) -> Generator[Tick, None, State]:
+    """From a state inside a leg to the leg's end; returns the state at the next leg's door."""
+    cloud, law_start, q = state.cloud, state.law, state.cloud.q
+    step = _stepper(law_start, leg, q)
+    steps = pace.of(leg)
+    work = Buffers(cloud.phi, step)
+    stride = state.stride
+    books = state.books
+    phi = cloud.space.array(cloud.phi)
+    targets = sorted({t for t in leg.landings if leg.start < t < leg.stop} | {leg.stop})
+    targets = [t for t in targets if t > cloud.time]
+    for target in targets:
+        while (t := cloud.time) < target:
+            if stride is None:
+                stride = steps.first(step, t, _fastest_rate(cloud, leg))
+            left = target - t
+            limit = left if stride.h >= 0.95 * left else (left / 2 if stride.h > 0.5 * left else left)
+            spent = step.pairs
+            taken = steps.take(step, phi, t, stride, limit, work)
+            stride = taken.stride
+            now = target if left - taken.h < 1e-9 * left else t + taken.h
+            cloud = replace(cloud, phi=phi, time=now, frame=step.law.frame(now))
+            books = replace(
+                books.spent(step.pairs - spent, flight=not leg.trapped),
+                steps=books.steps + 1, rejected=books.rejected + taken.rejected, error=books.error + taken.error,
+            )  # fmt: skip
+            marginals = cloud.space.marginals(cloud.density())
+            books = _watch(cloud, marginals, books, leg, guards)
+            if leg.moving and now < leg.stop and _has_moved(cloud, marginals, law_start):
+                law_start = _law_start(cloud, profile(cloud), leg)
+                books = books.spent(PROFILE_PAIRS, flight=not leg.trapped)
+                step = _stepper(law_start, leg, q)
+            state = replace(state, cloud=cloud, stride=stride, law=law_start, books=books)
+            if now == leg.stop:
+                state = replace(state, leg=state.leg + 1, law=None, stride=None)
+            yield Tick(state, "edge" if now == leg.stop else ("landing" if now == target else "step"))
+    if cloud.time >= leg.stop and state.law is not None:
+        # a leg of no duration: only its kick
+        state = replace(state, leg=state.leg + 1, law=None, stride=None)
+        yield Tick(state, "edge")
+    return state
+
+
+def _watch(cloud: Cloud, marginals: list[Array], books: Books, leg: Leg, guards: Guards) -> Books:
+    edge = edge_population(cloud.space, marginals)
+    norm = float(np.dot(marginals[0], cloud.space.axes[0].weights))
+    place = f"stage {leg.name}"
+    alarm = guards.check(time=cloud.time, norm=norm, edge=edge, spectrum=np.zeros(3), place=place)
+    if alarm:
+        raise alarm.refuse(time=cloud.time, place=place, space=cloud.space)
+    return replace(books, edge=np.maximum(books.edge, edge))
+
+
+def _has_moved(cloud: Cloud, marginals: list[Array], law: LawStart) -> bool:
+    for j in range(3):
+        axis = cloud.space.axis(j)
+        if not axis.uniform:
+            weighted = marginals[cloud.space.dim(j)] * axis.weights
+            mean = weighted @ axis.x1(j)
+            ratio = np.sqrt((weighted @ axis.x2(j) - mean**2) / law.var[j])
+            if not 1 / (1 + MOVED) < ratio < 1 + MOVED:
+                return True
+    return False
+
+
+def _fastest_rate(cloud: Cloud, leg: Leg) -> float:
+    """A rate, rad/s, that the first step must resolve: the mean field's at the cloud's centre and the trap's own."""
+    mean_field = abs(leg.interval.coupling(leg.start)) * float(cloud.density().max()) / cloud.frame.B
+    return max(mean_field, 1 / max(leg.stop - leg.start, 1e-9))

@@ -1,0 +1,147 @@
+"""How long a step: Richardson's comparison in flight, Strang under a cap while a trap is on.
+
+In flight each step is taken once whole (C) and once in two halves (F); (4 F - C)/3 is of fourth order and |F - C|/3 its
+error estimate, for three pairs. In a trap a plain Strang step under the cap on the fastest kinetic phase is cheaper and
+keeps norm and energy; it is compared with its two halves only now and then, as the estimate. Beyond the cap the splitting
+can be wrong with a perfect norm (J. A. C. Weideman and B. M. Herbst, SIAM J. Numer. Anal. 23, 485 (1986)).
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from trapsim.evolve.splitstep import SplitStep
+from trapsim.space.space import Array
+
+#: highest kinetic phase per Strang step, rad
+CAP = 2.6
+#: plain steps between two comparisons
+BETWEEN = 16
+
+
+@dataclass(frozen=True)
+class Stride:
+    """What the pace remembers from step to step.
+
+    Parameters
+    ----------
+    h : float
+        The next step, s, unless a landing comes first.
+    since : int
+        Plain steps since the last comparison.
+    local : float
+        Local error of a plain step at the last comparison.
+    """
+
+    h: float
+    since: int = 0
+    local: float = 0.0
+
+
+@dataclass(frozen=True)
+class Taken:
+    """One accepted step: its length, its estimated error (L2 of phi), the next stride, what it took."""
+
+    h: float
+    error: float
+    stride: Stride
+    rejected: int
+
+
+class Buffers:
+    """Work arrays of a leg, so that a step allocates nothing large."""
+
+    def __init__(self, phi: Array, step: SplitStep) -> None:
+        self.coarse = step.space.empty()
+        self.fine = step.space.empty()
+
+
+@dataclass(frozen=True)
+class Flight:
+    """Fourth-order steps, each with its estimate.
+
+    Parameters
+    ----------
+    tolerance : float
+        L2 error of the wave function per step.
+    """
+
+    tolerance: float
+
+    def first(self, step: SplitStep, t: float, rate: float) -> Stride:
+        """The first stride, given the fastest rate of the problem in rad/s."""
+        return Stride(0.7 / rate)
+
+    def take(self, step: SplitStep, phi: Array, t: float, stride: Stride, limit: float, work: Buffers) -> Taken:
+        """Overwrite phi(t) with phi(t + h), h <= limit."""
+        h, rejected = stride.h, 0
+        while True:
+            h = min(h, limit)
+            error = _compare(step, phi, t, h, work)
+            wish = h * float(np.clip(0.85 * (self.tolerance / max(error, 1e-30)) ** (1 / 3), 0.3, 4.0))
+            if error < 1.5 * self.tolerance or not np.isfinite(error):
+                break
+            h, rejected = wish, rejected + 1
+        np.multiply(work.fine, 4 / 3, out=phi)
+        work.coarse *= 1 / 3
+        phi -= work.coarse
+        # a step cut short by a landing says little about the next one
+        keep = max(wish, stride.h) if h < 0.5 * stride.h else wish
+        return Taken(h, error, Stride(keep), rejected)
+
+
+@dataclass(frozen=True)
+class Trapped:
+    """Second-order steps under the cap, compared with their halves now and then.
+
+    Parameters
+    ----------
+    tolerance : float
+        L2 error of the wave function per step; a comparison beyond it shortens the steps.
+    """
+
+    tolerance: float
+
+    def first(self, step: SplitStep, t: float, rate: float) -> Stride:
+        return Stride(self._capped(step, t, np.inf), since=BETWEEN)
+
+    def _capped(self, step: SplitStep, t: float, limit: float) -> float:
+        """The longest step under the cap; the law's own integrals decide."""
+        end = step.law.interval.stop
+        h = min(limit, end - t)
+        for _ in range(60):
+            phase = step.fastest_phase(t, t + h)
+            if phase <= CAP:
+                return h
+            h *= max(0.999 * CAP / phase, 0.05)
+        return h
+
+    def take(self, step: SplitStep, phi: Array, t: float, stride: Stride, limit: float, work: Buffers) -> Taken:
+        """Overwrite phi(t) with phi(t + h), h <= limit."""
+        h, rejected = self._capped(step, t, min(stride.h, limit)), 0
+        if stride.since < BETWEEN:
+            step.strang(phi, t, h)
+            grown = max(stride.h, min(1.25 * h, 1.02 * stride.h)) if stride.local < self.tolerance else stride.h
+            return Taken(h, stride.local, Stride(grown, stride.since + 1, stride.local), 0)
+        while True:
+            local = 4 * _compare(step, phi, t, h, work)
+            if local < 1.5 * self.tolerance or not np.isfinite(local):
+                break
+            h, rejected = h * float(np.clip(0.85 * (self.tolerance / local) ** (1 / 3), 0.3, 0.9)), rejected + 1
+        phi[...] = work.fine
+        room = float(np.clip(0.85 * (self.tolerance / max(local, 1e-30)) ** (1 / 3), 0.8, 1.5))
+        keep = stride.h if h < 0.5 * stride.h and not rejected else h * room
+        return Taken(h, local / 4, Stride(keep, 0, local), rejected)
+
+
+def _compare(step: SplitStep, phi: Array, t: float, h: float, work: Buffers) -> float:
+    """One whole step in `work.coarse`, two halves in `work.fine`; the L2 norm of their difference over 3."""
+    work.coarse[...] = phi
+    work.fine[...] = phi
+    step.strang(work.coarse, t, h)
+    step.strang(work.fine, t, h / 2)
+    step.strang(work.fine, t + h / 2, h / 2)
+    difference = work.fine - work.coarse
+    return float(np.sqrt(step.space.integral(difference.real**2 + difference.imag**2))) / 3

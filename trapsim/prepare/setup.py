@@ -1,0 +1,202 @@
+"""From a plan to engine objects; the only place that does it."""
+
+from __future__ import annotations
+
+import os
+from dataclasses import dataclass, replace
+
+import numpy as np
+
+from trapsim.cloud import shapes
+from trapsim.constants import HBAR
+from trapsim.errors import Notice, PlanError
+from trapsim.evolve.guards import Guards
+from trapsim.evolve.march import Leg, Pace
+from trapsim.evolve.relax import Hamiltonian
+from trapsim.plan.plan import Plan
+from trapsim.prepare.extent import ACCURACY, Accuracy, Lengths, choose_space, cloud_lengths
+from trapsim.prepare.symmetry import choose_words, round_directions
+from trapsim.prepare.timeline import Step, Timeline, build_timeline
+from trapsim.space.frame import Frame
+from trapsim.space.space import Array, Space
+from trapsim.terms.part import remainder, steered
+
+AXES = "xyz"
+#: from this many points on, more than one thread pays
+LARGE = 48**3
+#: a part with less strength than this at the end of a stretch is dying away, not holding
+DYING = 1e-3
+
+
+@dataclass(frozen=True)
+class Setup:
+    """All that the engine needs for a plan.
+
+    Parameters
+    ----------
+    plan : Plan
+    timeline : Timeline
+    q : float
+        hbar/m, m^2/s.
+    coupling : float
+        4 pi q a N at the start, m^3/s.
+    omega : (3,)
+        Trap frequencies at the start, rad/s; zero where untrapped.
+    lengths : Lengths
+    accuracy : Accuracy
+    space : Space
+        Of the ground state.
+    legs : tuple of Leg
+    pace : Pace
+    guards : Guards
+    why : str
+        Why these axes, in a sentence.
+    notices : tuple of Notice
+    """
+
+    plan: Plan
+    timeline: Timeline
+    q: float
+    coupling: float
+    omega: Array
+    lengths: Lengths
+    accuracy: Accuracy
+    space: Space
+    legs: tuple[Leg, ...]
+    pace: Pace
+    guards: Guards
+    why: str
+    notices: tuple[Notice, ...]
+
+    @property
+    def scattering_number(self) -> float:
+        """N a over the lengths of uniform directions."""
+        return scattering_number(self.coupling, self.q, self.lengths.half, self.omega)
+
+    def frame(self) -> Frame:
+        """The frame of the ground state: at rest around the classical centre."""
+        return Frame(X=np.array(self.timeline.origin))
+
+    def hamiltonian(self) -> Hamiltonian:
+        """What the ground state minimises."""
+        parts, origin, frame = self.timeline.initial.parts_at(0.0), self.timeline.origin, self.frame()
+        _, curvature = steered(parts, origin)
+        lab = tuple(frame.lab(x, j) for j, x in enumerate(self.space.coordinates()))
+        energy = self.space.quadratic(0.5 * curvature) + remainder(parts, origin, *lab)
+        return Hamiltonian(self.space, energy / HBAR, coupling=self.coupling, q=self.q)
+
+    def first_guess(self, hamiltonian: Hamiltonian) -> Array:
+        """Thomas-Fermi where the mean field rules, the best Gaussian otherwise."""
+        if self.coupling > 0 and self.lengths.mu > 3 * self.omega.sum() / 2:
+            return shapes.thomas_fermi(self.space, hamiltonian.V, self.coupling, soft=0.3 * self.omega.max())
+        return shapes.gaussian(self.space, shapes.gaussian_widths(self.omega, self.q, self.scattering_number))
+
+
+def scattering_number(coupling: float, q: float, half: Array, omega: Array) -> float:
+    """N a in m over the full lengths of the directions that nothing traps."""
+    free = np.asarray(omega) == 0
+    return coupling / (4 * np.pi * q) / float(np.prod(2 * np.asarray(half)[free]))
+
+
+def prepare(plan: Plan) -> Setup:
+    """Turn a plan into engine objects.
+
+    Raises
+    ------
+    PlanError
+        When axes are forced that the plan does not allow, or memory is too small.
+    """
+    timeline = build_timeline(plan)
+    accuracy = ACCURACY[plan.numerics.accuracy]
+    q = HBAR / plan.atoms.mass
+    coupling = timeline.initial.coupling(0.0)
+    _, curvature = steered(timeline.initial.parts_at(0.0), timeline.origin)
+    omega = np.sqrt(curvature / plan.atoms.mass)
+    extent = np.asarray(plan.numerics.extent, dtype=float)
+    number = scattering_number(coupling, q, extent / 2, omega)
+    lengths = cloud_lengths(omega, q, number, accuracy)
+    half = np.where(extent > 0, extent / 2, lengths.half)
+    lengths = replace(lengths, half=half)
+    standing = plan.numerics.frame == "lab"
+    round_about = round_directions(timeline, standing=standing)
+    uniform = omega == 0
+    words = [_words(plan, r, uniform) for r in round_about]
+    spaces: dict[tuple[str, ...], Space] = {}
+    for w in words:
+        if w not in spaces:
+            spaces[w] = _space(plan, w, lengths, accuracy)
+    legs = _legs(plan, timeline, [spaces[w] for w in words[1:]], moving=not standing)
+    return Setup(
+        plan=plan, timeline=timeline, q=q, coupling=coupling, omega=omega, lengths=lengths, accuracy=accuracy,
+        space=spaces[words[0]], legs=legs, pace=Pace(accuracy.tolerance),
+        guards=Guards(accuracy.edge, accuracy.spectrum, accuracy.norm), why=_why(plan, round_about, words),
+        notices=timeline.notices,
+    )  # fmt: skip
+
+
+def _words(plan: Plan, round_about: frozenset[int], uniform: Array) -> tuple[str, str, str]:
+    asked = plan.numerics.axes
+    if asked == "auto":
+        return choose_words(round_about, uniform)
+    words = ("wave", "wave", "wave") if asked == "full" else asked
+    pair = [j for j in range(3) if words[j] == "radial"]
+    if pair:
+        (axis,) = set(range(3)) - set(pair)
+        if axis not in round_about or any(uniform[j] for j in pair):
+            raise PlanError.at(
+                "numerics.axes", str(list(words)), f"the plan is not round about {AXES[axis]} all the way",
+                "write axes = \"auto\", or \"full\"",
+            )  # fmt: skip
+    return tuple(words)
+
+
+def _space(plan: Plan, words: tuple[str, ...], lengths: Lengths, accuracy: Accuracy) -> Space:
+    threads = plan.numerics.threads or os.cpu_count() or 1
+    space = choose_space(words, lengths, accuracy, extent=plan.numerics.extent, points=plan.numerics.points, threads=1)
+    if space.size >= LARGE:
+        space = Space(space.axes, threads=threads)
+    needed = memory_needed(space)
+    if plan.numerics.memory is not None and needed > plan.numerics.memory:
+        raise PlanError.at(
+            "numerics.memory", f"{plan.numerics.memory / 1e9:.3g} GB",
+            f"{' x '.join(map(str, space.shape))} points need about {needed / 1e9:.3g} GB",
+            "allow more, take numerics.accuracy = \"draft\", or fewer numerics.points",
+        )  # fmt: skip
+    return space
+
+
+def memory_needed(space: Space) -> float:
+    """Bytes a run keeps in work: about a dozen complex arrays."""
+    return 12 * 16.0 * space.size
+
+
+def _legs(plan: Plan, timeline: Timeline, spaces: list[Space], *, moving: bool) -> tuple[Leg, ...]:
+    legs = []
+    for step, space in zip(timeline.steps, spaces, strict=True):
+        stage, stretch = plan.sequence[step.stage], step.stretch
+        begin, _ = timeline.stage_times[step.stage]
+        wanted = [begin + t for t in stage.pictures] + list(plan.track.at)
+        legs.append(Leg(
+            name=stage.name, kind=stage.kind, stage=step.stage, start=stretch.start, stop=stretch.stop, space=space,
+            interval=stretch, trapped=_held(step), moving=moving,
+            landings=tuple(sorted({t for t in wanted if stretch.start < t < stretch.stop})), kick=step.kick,
+            last=step.last,
+        ))  # fmt: skip
+    return tuple(legs)
+
+
+def _held(step: Step) -> bool:
+    """Whether a trap is on and stays on; one that is dying away leaves the cloud to fly."""
+    return any(p.confines and p.strength > DYING for p in step.stretch.parts_at(step.stretch.stop))
+
+
+def _why(plan: Plan, round_about: list[frozenset[int]], words: list[tuple[str, ...]]) -> str:
+    if plan.numerics.axes != "auto":
+        return "the axes are as the plan forces them"
+    if "radial" not in words[0]:
+        return "no two directions are alike, so each has its own axis"
+    axis = AXES[words[0].index("wave")]
+    pair = " and ".join(a for a in AXES if a != axis)
+    if words[-1] == words[0]:
+        return f"{pair} are alike to the end, so one radial axis covers them"
+    return f"{pair} are alike at first; from where the sequence sets them apart each has its own axis"

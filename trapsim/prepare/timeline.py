@@ -1,0 +1,315 @@
+"""The timeline: every rampable number as a function of time; a part itself knows none.
+
+It is cut at every edge (stage boundary, start or end of a change), so that inside each `Stretch` all numbers are smooth,
+and a stretch answers for its closed interval with the values of its inside: nothing is ever evaluated at a jump.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass, field, replace
+from functools import cached_property
+
+import numpy as np
+from scipy import integrate
+
+from trapsim.constants import HBAR
+from trapsim.errors import Notice, PlanError
+from trapsim.fields import Triple
+from trapsim.plan.plan import Plan
+from trapsim.plan.stages import Change, Kick, Pulse, Ramp, Release, Stage
+from trapsim.terms.part import Array, Part, steered
+from trapsim.terms.ramps import Course, Value
+
+HELD = "held"
+SCATTERING = "atoms.scattering_length"
+
+
+@dataclass(frozen=True)
+class Stretch:
+    """The plan between two edges: an `Interval` for the engine.
+
+    Parameters
+    ----------
+    start, stop : float
+        s.
+    parts : mapping of str to Part
+        As they are at the start.
+    gravity : Part or None
+    courses : mapping of str to Course
+        "dipole.frequency" -> how it changes meanwhile.
+    equilibrium : (3,)
+        Where parts with a held centre keep the cloud.
+    scattering : float
+        m, unless it has a course.
+    factor : float
+        Coupling (m^3/s) per metre of scattering length.
+    """
+
+    start: float
+    stop: float
+    parts: Mapping[str, Part]
+    gravity: Part | None
+    courses: Mapping[str, Course]
+    equilibrium: Triple
+    scattering: float
+    factor: float
+
+    @cached_property
+    def steady(self) -> bool:
+        """Whether nothing changes in it."""
+        return not self.courses
+
+    @cached_property
+    def _fixed(self) -> tuple[Part, ...]:
+        return self._parts(self.start)
+
+    def parts_at(self, t: float) -> tuple[Part, ...]:
+        """The parts that are on (and gravity) with their values at a time inside."""
+        return self._fixed if self.steady else self._parts(t)
+
+    def _parts(self, t: float) -> tuple[Part, ...]:
+        now = dict(self.parts)
+        for path, course in self.courses.items():
+            name, _, key = path.partition(".")
+            if name in now:
+                now[name] = replace(now[name], **{key: course.at(t)})
+        on = [p for p in now.values() if p.strength > 0 and getattr(p, "centre", None) != HELD]
+        held = [p for p in now.values() if p.strength > 0 and getattr(p, "centre", None) == HELD]
+        if self.gravity is not None:
+            on.append(self.gravity)
+        return (*on, *self._held(held, on))
+
+    def _held(self, held: list[Part], others: list[Part]) -> list[Part]:
+        """Parts with a held centre, put where the others' force is balanced at the equilibrium."""
+        if not held:
+            return []
+        force, _ = steered(others, self.equilibrium)
+        stiffness = sum(p.stiffness() for p in held)
+        shift = np.divide(force, stiffness, out=np.zeros(3), where=stiffness > 0)
+        centre = tuple(np.asarray(self.equilibrium) - shift)
+        return [replace(p, centre=centre) for p in held]
+
+    def coupling(self, t: float) -> float:
+        """4 pi q a N at a time inside, m^3/s."""
+        course = self.courses.get(SCATTERING)
+        return self.factor * (course.at(t) if course else self.scattering)
+
+    def confined(self, t: float) -> bool:
+        """Whether a part that confines is on at a time inside."""
+        return any(p.confines and p.strength > 0 for p in self.parts_at(t))
+
+
+@dataclass(frozen=True)
+class Step:
+    """A stretch together with the stage it belongs to and the kick at its start."""
+
+    stretch: Stretch
+    stage: int
+    first: bool
+    last: bool
+    kick: Triple
+
+
+@dataclass(frozen=True)
+class Timeline:
+    """The whole sequence as smooth stretches.
+
+    Parameters
+    ----------
+    initial : Stretch
+        What holds the cloud before the sequence.
+    origin : (3,)
+        Where the cloud's classical centre sits before the sequence, m.
+    steps : tuple of Step
+        In order; a kick is a step of no duration.
+    stage_times : tuple of (start, stop)
+        s, per stage.
+    path : tuple of (6,)
+        Classical centre and velocity at the end of every step.
+    released : float or None
+        When the flight clock starts: the start of the last release's switch-off.
+    notices : tuple of Notice
+    """
+
+    initial: Stretch
+    origin: Triple
+    steps: tuple[Step, ...]
+    stage_times: tuple[tuple[float, float], ...]
+    path: tuple[Array, ...]
+    released: float | None
+    notices: tuple[Notice, ...] = ()
+
+
+def equilibrium(parts: tuple[Part, ...]) -> Array:
+    """Where the steerable forces balance, m; zero along directions that nothing holds."""
+    force, curvature = steered(parts, (0.0, 0.0, 0.0))
+    return np.divide(force, curvature, out=np.zeros(3), where=curvature > 0)
+
+
+def build_timeline(plan: Plan) -> Timeline:
+    """Cut a plan's sequence into smooth stretches, and follow the classical centre through them."""
+    return _Builder(plan).build()
+
+
+def _span(change: Change, start: float, stop: float) -> tuple[float, float]:
+    """When a change begins and ends; one meant to last until the stage ends does so exactly."""
+    begin = start + change.delay
+    end = stop if change.duration is None else begin + change.duration
+    return begin, (stop if end > stop - 1e-9 * (stop - start) else end)
+
+
+@dataclass
+class _Builder:
+    """Walks the stages once, carrying the present values and the classical centre."""
+
+    plan: Plan
+    notices: list[Notice] = field(default_factory=list)
+
+    def build(self) -> Timeline:
+        plan = self.plan
+        self.parts = dict(plan.trap)
+        self.scattering = plan.atoms.scattering_length
+        self.q = HBAR / plan.atoms.mass
+        self.gravity = plan.gravity.part(plan.atoms.mass) if plan.gravity is not None else None
+        self.still = (0.0, 0.0, 0.0)
+        at_rest = {n: replace(p, centre=(0.0, 0.0, 0.0)) if getattr(p, "centre", None) == HELD else p
+                   for n, p in self.parts.items()}
+        origin = equilibrium(self._stretch(0.0, 0.0, {}, at_rest).parts_at(0.0))
+        self.still = tuple(origin)
+        # a part that is on from the start is where the plan puts it, and the cloud is made there
+        self._met = {n for n, p in self.parts.items() if p.strength > 0}
+        initial = self._stretch(0.0, 0.0, {})
+        self.state = np.concatenate([origin, np.zeros(3)])
+        steps: list[Step] = []
+        self.path: list[Array] = []
+        times: list[tuple[float, float]] = []
+        released = None
+        durations = [s.duration for s in plan.sequence]
+        for index, stage in enumerate(plan.sequence):
+            start, stop = float(np.sum(durations[:index])), float(np.sum(durations[: index + 1]))
+            times.append((start, stop))
+            if isinstance(stage, Release):
+                released = start
+            steps.extend(self._stage(index, stage, start, stop))
+        return Timeline(initial, self.still, tuple(steps), tuple(times), tuple(self.path), released, tuple(self.notices))
+
+    def _stretch(
+        self, start: float, stop: float, courses: Mapping[str, Course], parts: Mapping[str, Part] | None = None
+    ) -> Stretch:
+        return Stretch(
+            start, stop, dict(self.parts if parts is None else parts), self.gravity, dict(courses), self.still,
+            self.scattering, 4 * np.pi * self.q * self.plan.atoms.number,
+        )  # fmt: skip
+
+    def _stage(self, index: int, stage: Stage, start: float, stop: float) -> list[Step]:
+        if isinstance(stage, Kick):
+            self.state[3:] += stage.velocity
+            self.path.append(self.state.copy())
+            return [Step(self._stretch(start, start, {}), index, True, True, stage.velocity)]
+        before = (dict(self.parts), self.scattering)
+        courses = self._courses(stage, start, stop)
+        windows = self._windows(stage, start, stop)
+        edges = {start, stop, *(c.start for c in courses.values()), *(c.stop for c in courses.values())}
+        edges |= {t for begin, end, _, _ in windows.values() for t in (begin, end)}
+        ordered = sorted(edges)
+        steps = []
+        for t0, t1 in zip(ordered[:-1], ordered[1:], strict=True):
+            for path, (begin, end, inside, outside) in windows.items():
+                self._set(path, inside if begin <= t0 and t1 <= end else outside)
+            self._meet_cloud(courses, t0)
+            running = {p: c for p, c in courses.items() if c.start <= t0 and t1 <= c.stop and c.before != c.after}
+            stretch = self._stretch(t0, t1, running)
+            steps.append(Step(stretch, index, t0 == start, t1 == stop, (0.0, 0.0, 0.0)))
+            self._follow(stretch)
+            for path, course in courses.items():
+                if course.stop == t1:
+                    self._set(path, course.after)
+                    self._report_left_over(stage, path, course)
+        if isinstance(stage, Pulse):
+            self.parts, self.scattering = before
+        self._met &= {n for n, p in self.parts.items() if p.strength > 0}
+        return steps
+
+    def _courses(self, stage: Stage, start: float, stop: float) -> dict[str, Course]:
+        """How the numbers change in a stage; what jumps at its start is set at once."""
+        if isinstance(stage, Ramp):
+            return {p: self._course(p, c, start, stop) for p, c in stage.to.items()}
+        return self._release(stage, start, stop) if isinstance(stage, Release) else {}
+
+    def _windows(self, stage: Stage, start: float, stop: float) -> dict[str, tuple[float, float, Value, Value]]:
+        """From when until when a pulse sets a number, to which value, and what it is outside."""
+        if not isinstance(stage, Pulse):
+            return {}
+        return {p: (*_span(c, start, stop), c.value, self._get(p)) for p, c in stage.to.items()}
+
+    def _course(self, path: str, change: Change, start: float, stop: float) -> Course:
+        begin, end = _span(change, start, stop)
+        sharpness = (end - begin) / change.time_constant if change.time_constant else 1.0
+        before, after = self._get(path), change.value
+        if HELD in (before, after) and before != after:
+            raise PlanError.at(
+                f"sequence.{path}", str(after), "a held centre cannot be ramped to or from a place",
+                "write the centre as three lengths from the start",
+            )  # fmt: skip
+        return Course(begin, end, before, after, change.shape or "linear", sharpness)
+
+    def _release(self, stage: Release, start: float, stop: float) -> dict[str, Course]:
+        names = stage.off if stage.off is not None else [n for n, p in self.parts.items() if p.confines]
+        courses = {}
+        for name in names:
+            path = f"{name}.strength"
+            off = stage.switch_off
+            if off is None or self.parts[name].strength == 0:
+                self._set(path, 0.0)
+                continue
+            end = min(stop, start + off.duration) if off.duration else stop
+            sharpness = (end - start) / off.time_constant if off.time_constant else 1.0
+            courses[path] = Course(start, end, self.parts[name].strength, 0.0, off.shape, sharpness)
+        return courses
+
+    def _get(self, path: str) -> Value | str:
+        if path == SCATTERING:
+            return self.scattering
+        name, _, key = path.partition(".")
+        return getattr(self.parts[name], key)
+
+    def _set(self, path: str, value: Value | str) -> None:
+        if path == SCATTERING:
+            self.scattering = value
+            return
+        name, _, key = path.partition(".")
+        self.parts[name] = replace(self.parts[name], **{key: value})
+
+    def _meet_cloud(self, courses: Mapping[str, Course], t: float) -> None:
+        """Centre parts that say at = "cloud" where the cloud is when they come on."""
+        for name, part in self.parts.items():
+            if getattr(part, "at", None) != "cloud":
+                continue
+            course = courses.get(f"{name}.strength")
+            on = part.strength > 0 or (course is not None and course.start <= t < course.stop)
+            if on and name not in self._met:
+                self._met.add(name)
+                self.parts[name] = replace(part, centre=tuple(self.state[:3]))
+
+    def _follow(self, stretch: Stretch) -> None:
+        """Carry the classical centre through a stretch."""
+        mass = self.plan.atoms.mass
+
+        def slope(t: float, y: Array) -> Array:
+            force, _ = steered(stretch.parts_at(t), y[:3])
+            return np.concatenate([y[3:], force / mass])
+
+        solution = integrate.solve_ivp(
+            slope, (stretch.start, stretch.stop), self.state, method="DOP853", rtol=1e-12, atol=1e-17
+        )
+        self.state = solution.y[:, -1]
+        self.path.append(self.state.copy())
+
+    def _report_left_over(self, stage: Stage, path: str, course: Course) -> None:
+        left = course.left_over()
+        if left > 1e-6:
+            self.notices.append(Notice(
+                "jump", f"{stage.name}: {path} still has {100 * left:.3g} % of its change to go when its exponential "
+                "ends; it jumps there",
+            ))  # fmt: skip

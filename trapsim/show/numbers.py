@@ -1,0 +1,64 @@
+"""Numbers as a person writes them: four significant figures, never a power of ten where one can do without."""
+
+from __future__ import annotations
+
+import math
+from decimal import Decimal
+
+MISSING = "-"
+
+
+def four(value: float | None) -> str:
+    """Four significant figures in plain digits: "0.01234", "25.06", "137200"; a dash where there is no figure."""
+    return figures(value, 4)
+
+
+def figures(value: float | None, digits: int) -> str:
+    """So many significant figures in plain digits; below a ten-thousandth, and from ten million on, a power of ten."""
+    if value is None or not math.isfinite(value):
+        return MISSING
+    if value == 0:
+        return "0"
+    rounded = Decimal(f"{value:.{digits - 1}e}")
+    power = rounded.adjusted()
+    if -5 < power < 7:
+        return f"{rounded.quantize(Decimal(1).scaleb(power - digits + 1)):f}" if power < digits else f"{rounded:.0f}"
+    mantissa = rounded.scaleb(-power).normalize()
+    return f"{mantissa:f}e{power}"
+
+
+def brief(value: float | None) -> str:
+    """A setting, such as a time: up to four significant figures without needless zeros."""
+    text = four(value)
+    return text.rstrip("0").rstrip(".") if "." in text and "e" not in text else text
+
+
+def with_error(value: float | None, error: float | None) -> str:
+    """A number and its error, "25.06 +- 0.01"; the number alone where the error is unknown.
+
+    The number has the digits its error deserves: at least two significant figures and at most seven.
+    """
+    if value is None or error is None or not math.isfinite(value) or not (math.isfinite(error) and error > 0):
+        return four(value)
+    size = math.floor(math.log10(abs(value))) if value else math.floor(math.log10(error))
+    digits = min(7, max(2, 1 + size - math.floor(math.log10(error))))
+    return f"{figures(value, max(digits, 4))} +- {figures(error, 1)}"
+
+
+def percent(part: float) -> str:
+    """A relative gap with its sign: "+0.62 %"; "0 %" below a hundredth of a per cent."""
+    hundredths = round(part * 1e4)
+    if hundredths == 0:
+        return "0 %"
+    return f"{hundredths / 100:+.2g} %" if abs(part) < 1 else f"{part * 100:+.0f} %"
+
+
+def signed(text: str) -> str:
+    """The same number with the minus sign of print."""
+    return text.replace("-", "\u2212") if text != MISSING else text
+
+
+def nice_length(about: float) -> float:
+    """The 1, 2 or 5 times a power of ten that is next below a length, for a scale bar."""
+    ten = 10.0 ** math.floor(math.log10(about))
+    return max(step * ten for step in (1.0, 2.0, 5.0) if step * ten <= about * (1 + 1e-9))

@@ -1,0 +1,235 @@
+"""Axes: the points, weights and spectrum along one or two lab directions.
+
+A member of the family says, for arrays of n samples along it:
+
+1. `covers`, the lab directions (0, 1, 2 = x, y, z) it stands for;
+2. `points` (n,) m and `weights` (n,): integrals are weighted sums of samples;
+3. `k` (n,) 1/m and `spectral_weights` (n,): weighted sums of |spectrum|^2 give the same norm;
+4. its transform: either a one-dimensional transform of FFTW (`fftw = True`) whose round trip multiplies by
+   `round_trip`, or a pair of real matrices (`forward_matrix`, `inverse_matrix`);
+5. `x1(j)`, `x2(j)`, `k1(j)`, `k2(j)` (n,): the powers of x_j and k_j whose weighted sums are <x_j>, <x_j^2>, ...;
+6. `lever` (n,): x_j d/dx_j = lever * gradient for every covered direction j;
+7. `basis(x)` (len(x), n): the matrix that evaluates the samples' own series anywhere; zero outside.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+
+import numpy as np
+from scipy import special
+
+Array = np.ndarray
+
+
+class Axis:
+    """Base of the family; the module's docstring is the contract."""
+
+    kind: str
+    covers: tuple[int, ...]
+    points: Array
+    weights: Array
+    k: Array
+    spectral_weights: Array
+    lever: Array
+    half_extent: float
+    fftw = False
+    round_trip = 1.0
+    forward_matrix: Array
+    inverse_matrix: Array
+
+    @property
+    def n(self) -> int:
+        return len(self.points)
+
+    @property
+    def k_max(self) -> float:
+        return float(np.abs(self.k).max())
+
+    @property
+    def uniform(self) -> bool:
+        """Whether nothing varies along it: one point stands for the whole length."""
+        return self.n == 1
+
+    def x1(self, j: int) -> Array:
+        raise TypeError(f"{type(self).__name__} does not say x1")
+
+    def x2(self, j: int) -> Array:
+        raise TypeError(f"{type(self).__name__} does not say x2")
+
+    def k1(self, j: int) -> Array:
+        raise TypeError(f"{type(self).__name__} does not say k1")
+
+    def k2(self, j: int) -> Array:
+        raise TypeError(f"{type(self).__name__} does not say k2")
+
+    def basis(self, x: Array) -> Array:
+        raise TypeError(f"{type(self).__name__} does not say its basis")
+
+    def finer(self) -> Axis:
+        """The same stretch with twice the points, on which the density is as well resolved as the field."""
+        raise TypeError(f"{type(self).__name__} has no finer twin")
+
+    def describe(self) -> dict[str, object]:
+        """What it takes to build the same axis again."""
+        return {"kind": self.kind, "covers": list(self.covers), "n": self.n, "half_extent": self.half_extent}
+
+
+class Wave(Axis):
+    """Periodic along one direction; plane waves.
+
+    Parameters
+    ----------
+    covers : sequence of one int
+        The lab direction.
+    n : int
+        Number of points, at the midpoints of n equal cells; 1 makes the direction uniform.
+    half_extent : float
+        Half the period, m.
+    """
+
+    kind = "wave"
+
+    def __init__(self, covers: Sequence[int], n: int, half_extent: float) -> None:
+        (direction,) = covers
+        self.covers = (direction,)
+        self.half_extent = float(half_extent)
+        spacing = 2 * self.half_extent / n
+        self.spacing = spacing
+        self.points = (np.arange(n) - (n - 1) / 2) * spacing
+        self.weights = np.full(n, spacing)
+        self.k = 2 * np.pi * np.fft.fftfreq(n, spacing)
+        self.spectral_weights = np.full(n, spacing / n)
+        self.lever = self.points
+        self.fftw = n > 1
+        self.round_trip = float(n)
+        if n == 1:
+            self.forward_matrix = self.inverse_matrix = np.ones((1, 1))
+
+    def x1(self, j: int) -> Array:
+        return self.points
+
+    def x2(self, j: int) -> Array:
+        return self.points**2
+
+    def k1(self, j: int) -> Array:
+        return self.derivative_k()
+
+    def k2(self, j: int) -> Array:
+        return self.k**2
+
+    def derivative_k(self) -> Array:
+        """k with the highest even-n mode left out: it has no sign, so it has no first derivative."""
+        k = self.k.copy()
+        if self.n % 2 == 0:
+            k[self.n // 2] = 0.0
+        return k
+
+    def basis(self, x: Array) -> Array:
+        """Periodic sinc (Dirichlet kernel) on each point, zero outside the extent."""
+        x = np.asarray(x, dtype=float)
+        if self.n == 1:
+            return np.ones((len(x), 1))
+        angle = np.pi * (x[:, None] - self.points[None, :]) / (self.n * self.spacing)
+        sine = np.sin(angle)
+        close = np.abs(sine) < 1e-14
+        safe = np.where(close, 1.0, sine)
+        kernel = np.sin(self.n * angle) / (self.n * safe)
+        if self.n % 2 == 0:
+            kernel = kernel * np.cos(angle)
+        kernel = np.where(close, 1.0, kernel)
+        return np.where(np.abs(x)[:, None] <= self.half_extent, kernel, 0.0)
+
+    def finer(self) -> Wave:
+        return Wave(self.covers, 2 * self.n if self.n > 1 else 1, self.half_extent)
+
+    def project(self, x: Array) -> Array:
+        """(len(x), n): a round density's samples seen from the side; a flat axis has no side view of its own."""
+        raise TypeError("a wave axis is integrated over, it has no side view")
+
+
+class Radial(Axis):
+    """Round in two directions; Bessel series on the zeros of J0.
+
+    Source: M. Guizar-Sicairos and J. C. Gutierrez-Vega, J. Opt. Soc. Am. A 21, 53 (2004); the transform
+    matrix is made exactly orthogonal once, so that a round trip is exact to rounding.
+
+    Parameters
+    ----------
+    covers : sequence of two int
+        The two lab directions.
+    n : int
+        Number of points r_i.
+    half_extent : float
+        The radius R at which the field vanishes, m.
+    """
+
+    kind = "radial"
+
+    def __init__(self, covers: Sequence[int], n: int, half_extent: float) -> None:
+        first, second = sorted(covers)
+        self.covers = (first, second)
+        radius = self.half_extent = float(half_extent)
+        zeros = special.jn_zeros(0, n + 1)
+        alpha, last = zeros[:n], zeros[n]
+        j1 = np.abs(special.j1(alpha))
+        self.points = alpha * radius / last
+        self.k = alpha / radius
+        self.weights = 4 * np.pi * radius**2 / (last * j1) ** 2
+        self.spectral_weights = np.ones(n)
+        self.lever = self.points / 2
+        self.spacing = radius * np.pi / last
+        transform = 2 * special.j0(np.outer(alpha, alpha) / last) / (np.outer(j1, j1) * last)
+        eigenvalues, vectors = np.linalg.eigh((transform + transform.T) / 2)
+        transform = (vectors * np.sign(eigenvalues)) @ vectors.T
+        root = np.sqrt(self.weights)
+        self.forward_matrix = np.ascontiguousarray(transform * root[None, :])
+        self.inverse_matrix = np.ascontiguousarray(transform / root[:, None])
+        self._norms = 1 / (np.sqrt(np.pi) * radius * j1)
+        #: (n, n): d/dr of the samples' series at the points
+        slopes = -special.j1(np.outer(self.points, self.k)) * (self.k * self._norms)[None, :]
+        self.gradient_matrix = np.ascontiguousarray(slopes @ self.forward_matrix)
+
+    def x1(self, j: int) -> Array:
+        return np.zeros(self.n)
+
+    def x2(self, j: int) -> Array:
+        return self.points**2 / 2
+
+    def k1(self, j: int) -> Array:
+        return np.zeros(self.n)
+
+    def k2(self, j: int) -> Array:
+        return self.k**2 / 2
+
+    def basis(self, x: Array) -> Array:
+        """The Bessel series at radii x, zero outside R."""
+        x = np.abs(np.asarray(x, dtype=float))
+        series = special.j0(np.outer(x, self.k)) * self._norms[None, :]
+        series[x > self.half_extent] = 0.0
+        return series @ self.forward_matrix
+
+    def finer(self) -> Radial:
+        return Radial(self.covers, 2 * self.n, self.half_extent)
+
+    def project(self, x: Array) -> Array:
+        """(len(x), n): the side view of a round density on a line, by the Fourier slice theorem.
+
+        N(k) = sum_i w_i n(r_i) J0(k r_i) on k = pi j/R up to the axis' own highest k, then a cosine series.
+        """
+        x = np.asarray(x, dtype=float)
+        radius = self.half_extent
+        waves = np.pi * np.arange(int(self.k_max * radius / np.pi) + 1) / radius
+        slices = special.j0(np.outer(waves, self.points)) * self.weights[None, :]
+        cosines = np.cos(np.outer(x, waves)) / radius
+        cosines[:, 0] /= 2
+        cosines[np.abs(x) > radius] = 0.0
+        return cosines @ slices
+
+
+KINDS = {Wave.kind: Wave, Radial.kind: Radial}
+
+
+def build(description: dict[str, object]) -> Axis:
+    """The axis that `Axis.describe` described."""
+    return KINDS[description["kind"]](tuple(description["covers"]), int(description["n"]), description["half_extent"])

@@ -1,0 +1,195 @@
+"""The space: its axes together, quadrature and planned transforms. The only door to pyfftw."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from functools import cached_property
+
+import numpy as np
+import pyfftw
+
+from trapsim.space.axes import Array, Axis, Radial, build
+
+
+class Space:
+    """Axes that together cover x, y and z, each once.
+
+    One array dimension per axis, the radial axis first (its transform is then one matrix product), else in the
+    order x, y, z. Transforms are planned on first use, work in place and carry no factor: a round trip multiplies
+    by `round_trip`, which belongs in whatever is multiplied in between.
+
+    Parameters
+    ----------
+    axes : sequence of Axis
+    threads : int
+        For the transforms.
+    """
+
+    def __init__(self, axes: Sequence[Axis], *, threads: int = 1) -> None:
+        covered = sorted(j for axis in axes for j in axis.covers)
+        if covered != [0, 1, 2]:
+            raise ValueError(f"the axes of a space cover x, y and z once each, not {covered}")
+        self.axes = tuple(sorted(axes, key=lambda a: (not isinstance(a, Radial), a.covers)))
+        self.shape = tuple(a.n for a in self.axes)
+        self.threads = threads
+        self.round_trip = float(np.prod([a.round_trip for a in self.axes]))
+
+    @property
+    def size(self) -> int:
+        return int(np.prod(self.shape))
+
+    def dim(self, j: int) -> int:
+        """The array dimension that covers lab direction j."""
+        return next(d for d, a in enumerate(self.axes) if j in a.covers)
+
+    def axis(self, j: int) -> Axis:
+        """The axis that covers lab direction j."""
+        return self.axes[self.dim(j)]
+
+    def along(self, d: int, values: Array) -> Array:
+        """Values (n,) along array dimension d, shaped to broadcast against samples."""
+        shape = [1] * len(self.axes)
+        shape[d] = -1
+        return np.reshape(values, shape)
+
+    def coordinates(self) -> tuple[Array, Array, Array]:
+        """Broadcastable x, y, z of the points; on a radial axis, r and 0."""
+        out: list[Array] = []
+        for j in range(3):
+            axis = self.axis(j)
+            own = j == axis.covers[0]
+            out.append(self.along(self.dim(j), axis.points if own else np.zeros(axis.n)))
+        return tuple(out)
+
+    def empty(self) -> Array:
+        """A complex work array, aligned for the transforms."""
+        return pyfftw.empty_aligned(self.shape, dtype="complex128")
+
+    def array(self, samples: Array) -> Array:
+        """A complex, aligned copy of samples that broadcast to the shape."""
+        out = self.empty()
+        out[...] = samples
+        return out
+
+    # quadrature
+
+    @cached_property
+    def _weights(self) -> list[Array]:
+        return [a.weights for a in self.axes]
+
+    @cached_property
+    def _spectral_weights(self) -> list[Array]:
+        return [a.spectral_weights for a in self.axes]
+
+    def integral(self, density: Array) -> float:
+        """Integral over all space of real samples (broadcast to the shape)."""
+        return float(np.dot(self.marginals(density)[0], self._weights[0]))
+
+    def marginals(self, density: Array) -> list[Array]:
+        """Per array dimension, the density with all other directions integrated away."""
+        return _marginals(np.broadcast_to(density, self.shape), self._weights)
+
+    def spectral_marginals(self, power: Array) -> list[Array]:
+        """The same for |spectrum|^2."""
+        return _marginals(power, self._spectral_weights)
+
+    def moment(self, marginals: Sequence[Array], values: Sequence[Array], j: int) -> float:
+        """Weighted sum of values[d] (n,) with the marginal of the axis that covers j."""
+        d = self.dim(j)
+        return float(np.dot(marginals[d] * self._weights[d], values[d]))
+
+    def quadratic(self, coefficients: Sequence[float]) -> Array:
+        """sum_j c_j x_j^2 on the points."""
+        return sum(self.along(d, v) for d, v in enumerate(self.per_axis(coefficients, "x2")))
+
+    def per_axis(self, coefficients: Sequence[float], power: str) -> list[Array]:
+        """Per array dimension, the sum over its directions of c_j times x1, x2, k1 or k2."""
+        return [sum(coefficients[j] * getattr(a, power)(j) for j in a.covers) for a in self.axes]
+
+    # transforms
+
+    @cached_property
+    def _plans(self) -> tuple[pyfftw.FFTW, pyfftw.FFTW] | None:
+        dims = tuple(d for d, a in enumerate(self.axes) if a.fftw)
+        if not dims:
+            return None
+        scratch = self.empty()
+        effort = "FFTW_MEASURE" if self.size <= 64**3 else "FFTW_ESTIMATE"
+        return tuple(
+            pyfftw.FFTW(scratch, scratch, axes=dims, direction=direction, flags=(effort,), threads=self.threads)
+            for direction in ("FFTW_FORWARD", "FFTW_BACKWARD")
+        )
+
+    def forward(self, a: Array) -> Array:
+        """Overwrite samples `a` with their spectrum; returns it."""
+        if self._plans:
+            self._plans[0](a, a)
+        self._matrices(a, "forward_matrix")
+        return a
+
+    def inverse(self, a: Array) -> Array:
+        """Overwrite a spectrum `a` with its samples times `round_trip`; returns them."""
+        if self._plans:
+            self._plans[1](a, a, normalise_idft=False)
+        self._matrices(a, "inverse_matrix")
+        return a
+
+    def _matrices(self, a: Array, which: str) -> None:
+        if isinstance(self.axes[0], Radial):
+            flat = a.reshape(self.shape[0], -1).view(np.float64)
+            flat[...] = getattr(self.axes[0], which) @ flat
+
+    def gradient(self, a: Array, d: int) -> Array:
+        """The derivative of samples along the coordinate of array dimension d, as a new array."""
+        axis = self.axes[d]
+        if isinstance(axis, Radial):
+            flat = a.reshape(self.shape[0], -1).view(np.float64)
+            return (axis.gradient_matrix @ flat).view(np.complex128).reshape(self.shape)
+        out = self.array(a)
+        if axis.uniform:
+            out[...] = 0.0
+            return out
+        forward, backward = self._line_plans[d]
+        forward(out, out)
+        out *= self.along(d, 1j * axis.derivative_k() / axis.n)
+        return backward(out, out, normalise_idft=False)
+
+    @cached_property
+    def _line_plans(self) -> dict[int, tuple[pyfftw.FFTW, pyfftw.FFTW]]:
+        scratch = self.empty()
+        return {
+            d: tuple(
+                pyfftw.FFTW(scratch, scratch, axes=(d,), direction=way, flags=("FFTW_ESTIMATE",), threads=self.threads)
+                for way in ("FFTW_FORWARD", "FFTW_BACKWARD")
+            )
+            for d, a in enumerate(self.axes)
+            if a.fftw
+        }
+
+    # words
+
+    def words(self) -> list[str]:
+        """The kind of axis that covers each lab direction."""
+        return [self.axis(j).kind if not self.axis(j).uniform else "uniform" for j in range(3)]
+
+    def points_per_direction(self) -> list[int]:
+        return [self.axis(j).n for j in range(3)]
+
+    def describe(self) -> list[dict[str, object]]:
+        """What it takes to build the same space again."""
+        return [a.describe() for a in self.axes]
+
+    @classmethod
+    def from_description(cls, description: Sequence[dict[str, object]], *, threads: int = 1) -> Space:
+        return cls([build(d) for d in description], threads=threads)
+
+
+def _marginals(density: Array, weights: Sequence[Array]) -> list[Array]:
+    """Contract all dimensions but one with their weights, sharing the contractions."""
+    if density.ndim == 1:
+        return [density]
+    if density.ndim == 2:
+        return [density @ weights[1], weights[0] @ density]
+    last_gone = density @ weights[2]
+    first_gone = np.tensordot(weights[0], density, axes=(0, 0))
+    return [last_gone @ weights[1], weights[0] @ last_gone, weights[1] @ first_gone]
