@@ -74,8 +74,10 @@ def test_chemical_potentials_on_a_line_of_bao_and_tang(row: tables.Published) ->
 def test_ground_states_in_one_and_two_dimensions(dimension: int, row: tables.LowDimension) -> None:
     s = stationary.isotropic(dimension, row.beta)
     # Independent calculation: collocation with other node counts (line), Laguerre functions (plane).
-    for name in ("mu", "energy", "kinetic", "interaction", "width", "peak_density"):
-        assert getattr(s, name) == pytest.approx(getattr(row, name), abs=2e-8), name
+    for name in ("mu", "energy", "kinetic", "interaction", "width"):
+        assert getattr(s, name) == pytest.approx(getattr(row, name), abs=1.1e-8), name
+    # One tabulated peak (line, -5) is not converged in its last digit.
+    assert s.peak_density == pytest.approx(row.peak_density, abs=1.3e-7 if row.beta == -5 else 1.1e-8)
 
 
 @pytest.mark.parametrize("row", tables.ROUND_PUBLISHED, ids=lambda r: f"{r.number}")
@@ -98,10 +100,10 @@ def test_round_trap_in_all_figures(row: tables.Round) -> None:
 
 
 def test_the_two_discretisations_agree() -> None:
-    one, two = stationary.isotropic(3, 100), anisotropic.round_trap(1.0, 100)
+    one, two = stationary.isotropic(3, 100), anisotropic.round_trap(1.0, 100, counts=(26, 24))
     expected = one.mu, one.interaction, one.width, one.width
-    assert (two.mu, two.interaction, *two.widths) == pytest.approx(expected, abs=1e-7)
-    assert two.peak_density == pytest.approx(one.peak_density, rel=1e-6)
+    assert (two.mu, two.interaction, *two.widths) == pytest.approx(expected, abs=1e-9)
+    assert two.peak_density == pytest.approx(one.peak_density, rel=1e-7)
 
 
 def test_collapse_of_an_isotropic_cloud() -> None:

@@ -44,7 +44,7 @@ def test_scaling_law_of_a_sphere_keeps_its_energy() -> None:
     assert rate**2 == pytest.approx(2 / 3 * (1 - b**-3), abs=1e-11)
 
 
-@pytest.mark.parametrize("row", flights.LAW_IN_LAB, ids=lambda r: f"{r.frequency}")
+@pytest.mark.parametrize("row", flights.LAW_IN_LAB, ids=lambda r: f"{r.frequency[2]}Hz")
 def test_scaling_law_in_laboratory_units(row: flights.LawInLab) -> None:
     omegas = tuple(2 * pi * f for f in row.frequency)
     b, _ = scaling.castin_dum(omegas, (scaling.off,) * 3, [row.time])
@@ -268,6 +268,26 @@ def test_packet_current_is_the_flow_of_its_phase_and_continuous() -> None:
     # The law of continuity.
     assert change == pytest.approx(-divergence, abs=1e-9)
     assert change == pytest.approx(in_time, abs=1e-9)
+
+
+def test_packet_is_a_sum_of_free_plane_waves() -> None:
+    q, omega, t, v = 0.7, 2.0, 0.9, 1.1
+    k, dk = np.linspace(-15, 18, 1201, retstep=True)
+    # Textbook: the kicked ground state's spectrum is a Gaussian about v/q; each wave gains exp(-i q k^2 t/2).
+    spectrum = (q / (pi * omega)) ** 0.25 * np.exp(-q * (k - v / q) ** 2 / (2 * omega))
+    phases = np.array([gaussian.plane_wave_phase(one, t, q=q) for one in k])
+    x = np.linspace(-3, 4, 15)
+    summed = np.exp(1j * np.outer(x, k)) @ (spectrum * phases) * dk / sqrt(2 * pi)
+    assert gaussian.packet(x, t, omega=omega, q=q, v0=v) == pytest.approx(summed, abs=1e-12)
+
+
+def test_column_density_of_a_packet() -> None:
+    u, v = np.linspace(-12, 12, 241), np.linspace(-15, 15, 301)
+    image = gaussian.column(u, v, 1.5, omegas=(2.0, 3.0)) * 0.1 * 0.1
+    # It holds all atoms, and its widths are those of the free Gaussian along each direction.
+    assert image.sum() == pytest.approx(1, abs=1e-12)
+    assert image.sum(axis=1) @ u**2 == pytest.approx(gaussian.width(1.5, omega=2) ** 2, rel=1e-10)
+    assert image.sum(axis=0) @ v**2 == pytest.approx(gaussian.width(1.5, omega=3) ** 2, rel=1e-10)
 
 
 def test_packet_energy_and_width_rate() -> None:

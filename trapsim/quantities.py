@@ -250,7 +250,7 @@ def _part(text: str) -> tuple[tuple[Fraction, Fraction], str]:
 
 
 def _bare(number: float, kind: Kind, context: Mapping[str, float]) -> Quantity:
-    if not math.isfinite(number):
+    if isinstance(number, float) and not math.isfinite(number):
         raise UnreadableQuantity("a finite number", "write a number")
     if not kind.plain:
         raise UnreadableQuantity(
@@ -276,10 +276,11 @@ def in_unit(value: float, unit: str, kind: str | None = None) -> float:
     return float(Fraction(value) / found[0])
 
 
-def human(value: float, kind: str, sigma: float = 0.0) -> str:
+def human(value: float, kind: str, *, sigma: float = 0.0, figures: int = 4) -> str:
     """An SI value as a person would write it: "31.2 um", "20 Hz", or "150(2) Hz" with its sigma.
 
-    Four significant figures, in the unit that leaves one to three digits before the point.
+    It has at most `figures` significant figures, in the unit that leaves one to three digits
+    before the point where there is one.
     """
     sort = KINDS[kind]
     if not math.isfinite(value):
@@ -289,13 +290,13 @@ def human(value: float, kind: str, sigma: float = 0.0) -> str:
         if step == sort.ladder[0] or abs(in_unit(value, step, kind)) >= 0.99995:
             unit = step
     shown = in_unit(value, unit, kind)
-    number = _with_sigma(shown, in_unit(sigma, unit, kind)) if sigma > 0 else _figures(shown)
+    number = _with_sigma(shown, in_unit(sigma, unit, kind)) if sigma > 0 else _figures(shown, figures)
     return f"{number} {unit}".rstrip()
 
 
-def _figures(value: float) -> str:
-    """Four significant figures, without needless zeros."""
-    mantissa, _, exponent = f"{value:.3e}".partition("e")
+def _figures(value: float, figures: int) -> str:
+    """Some significant figures, without needless zeros."""
+    mantissa, _, exponent = f"{value:.{figures - 1}e}".partition("e")
     power = int(exponent)
     if value == 0:
         return "0"

@@ -76,7 +76,8 @@ def path(
             t = min(max(t, low), high)
             return [y[1], -(omega**2) * strength(t) * (y[0] - centre(t)) + acceleration]
 
-        size = max(abs(y[0]), abs(y[1]) / omega, abs(acceleration) / omega**2, 1e-300)
+        moved = max(abs(centre(t)) for t in (low, (start + stop) / 2, high))
+        size = max(abs(y[0]), abs(y[1]) / omega, abs(acceleration) / omega**2, moved, 1e-30)
         tolerance = 1e-14 * np.array([size, size * omega])
         done = solve_ivp(
             rate, (start, stop), y, method="DOP853", t_eval=[*asked[inside], stop], rtol=1e-12, atol=tolerance

@@ -1,8 +1,8 @@
 """Motion of an interacting cloud from its ground state, by the method of lines on oscillator functions.
 
 The wave function is a sum of oscillator functions in coordinates stretched by the Castin-Dum factors b_j(t), marched
-with an adaptive Runge-Kutta method: no periodic grid, no splitting. Natural units (hbar = m = 1). Factors of the trap as
-in `anisotropic`.
+with an adaptive Runge-Kutta method: no periodic grid, no splitting. Natural units (hbar = m = 1). Factors of the trap
+as in `anisotropic`.
 """
 
 from __future__ import annotations

@@ -34,7 +34,7 @@ def _cubic(u: Array) -> tuple[Array, Array]:
     return u**3, np.diag(3 * u**2)
 
 
-def isotropic(dimension: int, beta: float, *, points: int = 80, reach: float | None = None) -> Isotropic:
+def isotropic(dimension: int, beta: float, *, points: int = 120, reach: float | None = None) -> Isotropic:
     """The ground state in the trap r^2/2 in 1, 2 or 3 dimensions, for any beta that has one."""
     grid = radius(dimension, reach or newton.edge(dimension, beta), points=points)
     hamiltonian = grid.hamiltonian()
@@ -63,7 +63,7 @@ def isotropic(dimension: int, beta: float, *, points: int = 80, reach: float | N
     )
 
 
-def critical_isotropic(*, points: int = 80) -> tuple[float, float]:
+def critical_isotropic(*, points: int = 120) -> tuple[float, float]:
     """N |a|/a_ho beyond which an attractive gas in an isotropic trap collapses, and mu there.
 
     Quantity: Ruprecht et al., PRA 51, 4704 (1995); Gammal et al., PRA 64, 055602 (2001).

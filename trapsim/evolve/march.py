@@ -80,7 +80,9 @@ class Books:
         Transform pairs.
     steps, rejected : int
     error : float
-        Sum of the L2 error estimates of the steps.
+        Sum of the L2 error estimates of the steps in flight.
+    local : float
+        Highest L2 error of a plain step in a trap.
     edge, spectrum : (3,)
         Highest populations seen near the edges of the axes and of their spectra.
     flight_pairs : float
@@ -91,6 +93,7 @@ class Books:
     steps: int = 0
     rejected: int = 0
     error: float = 0.0
+    local: float = 0.0
     edge: Array = field(default_factory=lambda: np.zeros(3))
     spectrum: Array = field(default_factory=lambda: np.zeros(3))
     flight_pairs: float = 0.0
@@ -136,12 +139,22 @@ class Tick:
 
 @dataclass(frozen=True)
 class Pace:
-    """How accurate the steps are: L2 tolerance of the wave function per step."""
+    """How long the steps may be.
+
+    Parameters
+    ----------
+    tolerance : float
+        L2 error of the wave function per step in flight.
+    cap : float
+        Highest phase per plain step in a trap, rad.
+    """
 
     tolerance: float
+    cap: float
 
     def of(self, leg: Leg) -> Flight | Trapped:
-        return Trapped(self.tolerance) if leg.trapped else Flight(self.tolerance)
+        # in a trap the errors of plain steps do not add up, so that one step may be that much worse
+        return Trapped(30 * self.tolerance, self.cap) if leg.trapped else Flight(self.tolerance)
 
 
 def march(
@@ -205,7 +218,8 @@ def kicked(cloud: Cloud, velocity: Triple, *, moving: bool) -> Cloud:
     return replace(cloud, phi=cloud.space.array(cloud.phi * np.exp(1j * angle)))
 
 
-def _stepper(law_start: LawStart, leg: Leg, q: float) -> SplitStep:
+def stepper(law_start: LawStart, leg: Leg, q: float) -> SplitStep:
+    """Steps on a leg under the frame law that starts from `law_start`."""
     law = (MovingLaw if leg.moving else StandingLaw)(law_start, leg.interval, q=q)
     return SplitStep(leg.space, law, q=q, rest=_rest(law, leg))
 
@@ -232,7 +246,7 @@ def _rest(law: MovingLaw | StandingLaw, leg: Leg) -> Rest:
 def _play(state: State, leg: Leg, *, pace: Pace, guards: Guards) -> Generator[Tick, None, State]:
     """From a state inside a leg to the leg's end; returns the state at the next leg's door."""
     cloud, law_start, q = state.cloud, state.law, state.cloud.q
-    step = _stepper(law_start, leg, q)
+    step = stepper(law_start, leg, q)
     steps = pace.of(leg)
     work = Buffers(cloud.phi, step)
     stride = state.stride
@@ -243,7 +257,7 @@ def _play(state: State, leg: Leg, *, pace: Pace, guards: Guards) -> Generator[Ti
     for target in targets:
         while (t := cloud.time) < target:
             if stride is None:
-                stride = steps.first(step, t, _fastest_rate(cloud, leg))
+                stride = steps.first(step, t, float(cloud.density().max()))
             left = target - t
             limit = left if stride.h >= 0.95 * left else (left / 2 if stride.h > 0.5 * left else left)
             spent = step.pairs
@@ -254,13 +268,14 @@ def _play(state: State, leg: Leg, *, pace: Pace, guards: Guards) -> Generator[Ti
             books = replace(
                 books.spent(step.pairs - spent, flight=not leg.trapped),
                 steps=books.steps + 1, rejected=books.rejected + taken.rejected, error=books.error + taken.error,
+                local=max(books.local, taken.local),
             )  # fmt: skip
             marginals = cloud.space.marginals(cloud.density())
             books = _watch(cloud, marginals, books, leg, guards)
             if leg.moving and now < leg.stop and _has_moved(cloud, marginals, law_start):
                 law_start = _law_start(cloud, profile(cloud), leg)
                 books = books.spent(PROFILE_PAIRS, flight=not leg.trapped)
-                step = _stepper(law_start, leg, q)
+                step = stepper(law_start, leg, q)
             state = replace(state, cloud=cloud, stride=stride, law=law_start, books=books)
             if now == leg.stop:
                 state = replace(state, leg=state.leg + 1, law=None, stride=None)
@@ -293,8 +308,3 @@ def _has_moved(cloud: Cloud, marginals: list[Array], law: LawStart) -> bool:
                 return True
     return False
 
-
-def _fastest_rate(cloud: Cloud, leg: Leg) -> float:
-    """A rate, rad/s, that the first step must resolve: the mean field's at the cloud's centre and the trap's own."""
-    mean_field = abs(leg.interval.coupling(leg.start)) * float(cloud.density().max()) / cloud.frame.B
-    return max(mean_field, 1 / max(leg.stop - leg.start, 1e-9))

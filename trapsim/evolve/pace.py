@@ -8,15 +8,13 @@ can be wrong with a perfect norm (J. A. C. Weideman and B. M. Herbst, SIAM J. Nu
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
 from trapsim.evolve.splitstep import SplitStep
 from trapsim.space.space import Array
 
-#: highest kinetic phase per Strang step, rad
-CAP = 2.6
 #: plain steps between two comparisons
 BETWEEN = 16
 
@@ -33,21 +31,28 @@ class Stride:
         Plain steps since the last comparison.
     local : float
         Local error of a plain step at the last comparison.
+    peak : float
+        Highest density in the frame when the leg was entered, 1/m^3.
     """
 
     h: float
     since: int = 0
     local: float = 0.0
+    peak: float = 0.0
 
 
 @dataclass(frozen=True)
 class Taken:
-    """One accepted step: its length, its estimated error (L2 of phi), the next stride, what it took."""
+    """One accepted step: its length, the next stride, the steps that were refused before it.
+
+    `error` is the L2 error of a step whose errors add up (flight), `local` that of one whose errors stay bounded.
+    """
 
     h: float
-    error: float
     stride: Stride
-    rejected: int
+    rejected: int = 0
+    error: float = 0.0
+    local: float = 0.0
 
 
 class Buffers:
@@ -70,9 +75,12 @@ class Flight:
 
     tolerance: float
 
-    def first(self, step: SplitStep, t: float, rate: float) -> Stride:
-        """The first stride, given the fastest rate of the problem in rad/s."""
-        return Stride(0.7 / rate)
+    def first(self, step: SplitStep, t: float, peak: float) -> Stride:
+        """The first stride, given the highest density in the frame, 1/m^3: 0.7 rad of its mean field."""
+        h = step.law.interval.stop - t
+        while step.mean_field_phase(t, t + h, peak) > 0.7:
+            h *= 0.8
+        return Stride(h)
 
     def take(self, step: SplitStep, phi: Array, t: float, stride: Stride, limit: float, work: Buffers) -> Taken:
         """Overwrite phi(t) with phi(t + h), h <= limit."""
@@ -89,7 +97,7 @@ class Flight:
         phi -= work.coarse
         # a step cut short by a landing says little about the next one
         keep = max(wish, stride.h) if h < 0.5 * stride.h else wish
-        return Taken(h, error, Stride(keep), rejected)
+        return Taken(h, Stride(keep), rejected, error=error)
 
 
 @dataclass(frozen=True)
@@ -100,31 +108,34 @@ class Trapped:
     ----------
     tolerance : float
         L2 error of the wave function per step; a comparison beyond it shortens the steps.
+    cap : float
+        Highest phase per step, rad, of the highest wave number and the mean field at its peak together.
     """
 
     tolerance: float
+    cap: float
 
-    def first(self, step: SplitStep, t: float, rate: float) -> Stride:
-        return Stride(self._capped(step, t, np.inf), since=BETWEEN)
+    def first(self, step: SplitStep, t: float, peak: float) -> Stride:
+        return Stride(self._capped(step, t, np.inf, peak), since=BETWEEN, peak=peak)
 
-    def _capped(self, step: SplitStep, t: float, limit: float) -> float:
+    def _capped(self, step: SplitStep, t: float, limit: float, peak: float) -> float:
         """The longest step under the cap; the law's own integrals decide."""
         end = step.law.interval.stop
         h = min(limit, end - t)
         for _ in range(60):
-            phase = step.fastest_phase(t, t + h)
-            if phase <= CAP:
+            phase = step.fastest_phase(t, t + h, peak)
+            if phase <= self.cap:
                 return h
-            h *= max(0.999 * CAP / phase, 0.05)
+            h *= max(0.999 * self.cap / phase, 0.05)
         return h
 
     def take(self, step: SplitStep, phi: Array, t: float, stride: Stride, limit: float, work: Buffers) -> Taken:
         """Overwrite phi(t) with phi(t + h), h <= limit."""
-        h, rejected = self._capped(step, t, min(stride.h, limit)), 0
+        h, rejected = self._capped(step, t, min(stride.h, limit), stride.peak), 0
         if stride.since < BETWEEN:
             step.strang(phi, t, h)
             grown = max(stride.h, min(1.25 * h, 1.02 * stride.h)) if stride.local < self.tolerance else stride.h
-            return Taken(h, stride.local, Stride(grown, stride.since + 1, stride.local), 0)
+            return Taken(h, replace(stride, h=grown, since=stride.since + 1))
         while True:
             local = 4 * _compare(step, phi, t, h, work)
             if local < 1.5 * self.tolerance or not np.isfinite(local):
@@ -133,7 +144,7 @@ class Trapped:
         phi[...] = work.fine
         room = float(np.clip(0.85 * (self.tolerance / max(local, 1e-30)) ** (1 / 3), 0.8, 1.5))
         keep = stride.h if h < 0.5 * stride.h and not rejected else h * room
-        return Taken(h, local / 4, Stride(keep, 0, local), rejected)
+        return Taken(h, replace(stride, h=keep, since=0, local=local), rejected, local=local)
 
 
 def _compare(step: SplitStep, phi: Array, t: float, h: float, work: Buffers) -> float:

@@ -83,7 +83,14 @@ class SplitStep:
         self.space.inverse(phi)
         self.pairs += 1
 
-    def fastest_phase(self, t0: float, t1: float) -> float:
-        """Kinetic phase of the highest wave number over an interval, sum_j q k_max^2 dK_j/2."""
-        dK, _ = self.law.integrals(t0, t1)
-        return float(0.5 * self.q * self._fastest @ dK)
+    def fastest_phase(self, t0: float, t1: float, peak: float) -> float:
+        """Phase over an interval of the highest wave number, sum_j q k_max^2 dK_j/2, with the mean field at its peak.
+
+        The sum is about the phase of the highest Bogoliubov mode; the splitting is unstable from pi on.
+        """
+        dK, dJ = self.law.integrals(t0, t1)
+        return float(0.5 * self.q * self._fastest @ dK) + abs(dJ) * peak
+
+    def mean_field_phase(self, t0: float, t1: float, peak: float) -> float:
+        """Phase of the mean field over an interval where the density in the frame is `peak`."""
+        return abs(self.law.integrals(t0, t1)[1]) * peak

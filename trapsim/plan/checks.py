@@ -9,13 +9,15 @@ import numpy as np
 
 from trapsim.errors import Complaint
 from trapsim.fields import ORIGIN
-from trapsim.plan.plan import Numerics, Track
+from trapsim.plan.plan import Numerics, Track, with_mass
 from trapsim.plan.stages import Stage, Switches
 from trapsim.quantities import human
 from trapsim.terms.field import Gravity
 from trapsim.terms.part import Part
 
 AXES = "xyz"
+#: m/s^2; what a levitation may leave over without anybody minding
+_NO_FALL = 1e-6
 
 
 def settle_sequence(
@@ -68,37 +70,38 @@ def check_parts(trap: Mapping[str, Part]) -> list[Complaint]:
     return complaints
 
 
-def check_hold(trap: Mapping[str, Part], gravity: Gravity | None, numerics: Numerics, mass: float) -> list[Complaint]:
+def check_hold(trap: Mapping[str, Part], gravity: Gravity | None, numerics: Numerics) -> list[Complaint]:
     """Every direction has something that holds the atoms at the start, or a length."""
-    holds = np.zeros(3, dtype=bool)
-    force = np.zeros(3) if gravity is None else mass * np.asarray(gravity.acceleration())
-    for part in trap.values():
-        pull, curvature = _centred(part).steer(ORIGIN)
-        holds |= part.confines & (np.asarray(curvature) > 0)
-        force = force + (np.zeros(3) if part.confines else np.asarray(pull))
     if not trap and not any(numerics.extent):
         return [Complaint("trap", "", "a plan needs a part that holds the atoms",
                           'write [trap.dipole], kind = "harmonic", frequency = ["20 Hz", "120 Hz", "120 Hz"]; '
                           "or give numerics.extent for all three directions")]
+    holds = np.zeros(3, dtype=bool)
+    fall = np.zeros(3) if gravity is None else np.asarray(gravity.acceleration())
+    for part in trap.values():
+        pull, curvature = _of_unit_mass(part).steer(ORIGIN)
+        holds |= part.confines & (np.asarray(curvature) > 0)
+        fall = fall + (np.zeros(3) if part.confines else np.asarray(pull))
+    loose = [j for j in range(3) if not holds[j] and not numerics.extent[j]]
+    falling = [j for j in range(3) if not holds[j] and numerics.extent[j] and abs(fall[j]) > _NO_FALL]
     complaints = []
-    for j, axis in enumerate(AXES):
-        if holds[j]:
-            continue
-        if not numerics.extent[j]:
-            lengths = ", ".join('"40 um"' if k == j else '"auto"' for k in range(3))
-            complaints.append(Complaint("trap", "", f"nothing holds the atoms along {axis} at the start",
-                                        f"give a trap frequency along {axis}, or numerics.extent = [{lengths}], "
-                                        "which makes that direction uniform and periodic"))
-        elif abs(force[j]) > 1e-6 * mass:
-            rule = f"the atoms fall along {axis} and nothing holds them at the start"
-            way_out = f"trap them along {axis}, levitate them with a gradient, or leave [gravity] out"
-            complaints.append(Complaint("trap", "", rule, way_out))
+    if loose:
+        along = ", ".join(AXES[j] for j in loose)
+        lengths = ", ".join('"40 um"' if k in loose else '"auto"' for k in range(3))
+        complaints.append(Complaint("trap", "", f"nothing holds the atoms along {along} at the start",
+                                    f"give a trap frequency along {along}; or numerics.extent = [{lengths}], "
+                                    "which makes such a direction uniform and periodic"))
+    if falling:
+        along = ", ".join(AXES[j] for j in falling)
+        rule = f"the atoms fall along {along} and nothing holds them at the start"
+        way_out = f"trap them along {along}, levitate them with a gradient, or leave [gravity] out"
+        complaints.append(Complaint("trap", "", rule, way_out))
     return complaints
 
 
-def _centred(part: Part) -> Part:
-    """The part with a number for its centre."""
-    return dataclasses.replace(part, centre=ORIGIN) if isinstance(getattr(part, "centre", None), str) else part
+def _of_unit_mass(part: Part) -> Part:
+    """The part as it acts on a mass of 1 kg, with a number for its centre."""
+    return with_mass(dataclasses.replace(part, centre=ORIGIN) if hasattr(part, "centre") else part, 1.0)
 
 
 def check_numerics(numerics: Numerics) -> list[Complaint]:

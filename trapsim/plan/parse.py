@@ -67,8 +67,9 @@ def parse(cls: type, raw: Any, where: str, context: Context = NOWHERE, *, also: 
         return _wrong(where, raw, "a table of entries", f"write a table: [{where}]")
     known = entries(cls)
     also = tuple(also)
-    complaints = [unknown(f"{where}.{key}".lstrip("."), key, [*also, *known]) for key in raw
-                  if key not in known and key not in also]
+    strange = [key for key in raw if key not in known and key not in also]
+    complaints = [unknown(f"{where}.{key}".lstrip("."), key, [*also, *known]) for key in strange]
+    misspelt = {nearest(key, known) for key in strange}
     values: dict[str, Any] = {}
     sigma: dict[str, float] = {}
     for spot in dataclasses.fields(cls):
@@ -81,7 +82,7 @@ def parse(cls: type, raw: Any, where: str, context: Context = NOWHERE, *, also: 
             complaints += reading.complaints
             sigma |= reading.sigma
             values[spot.name] = reading.value
-        elif spot.default is REQUIRED:
+        elif spot.default is REQUIRED and spot.name not in misspelt:
             complaints.append(Complaint(path, "", f"this is needed: {about.about}", f"write {_line(spot.name, about)}"))
     return Reading(None, tuple(complaints)) if complaints else Reading(cls(**values), (), sigma)
 

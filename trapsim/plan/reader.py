@@ -76,7 +76,7 @@ def interpret(text: str) -> Any:
     """
     try:
         tree = tomllib.loads(f"value = {text}")
-    except (tomllib.TOMLDecodeError, RecursionError):
+    except (ValueError, RecursionError):
         if text.startswith("[") and text.endswith("]"):
             return [interpret(item.strip()) for item in text[1:-1].split(",") if item.strip()]
         return text
@@ -122,7 +122,7 @@ def _read(text: str, name: str, changes: Mapping[str, Any] | None, source: str) 
 def _tree(text: str, source: str) -> Tree:
     try:
         tree = tomllib.loads(text.replace("\r\n", "\n"))
-    except tomllib.TOMLDecodeError as trouble:
+    except ValueError as trouble:  # also numbers with thousands of digits
         hint = "texts and quantities are quoted: \"20 Hz\"; a name stands once"
         raise PlanError.at(source, "", f"this is not TOML: {trouble}", hint) from None
     except RecursionError:
@@ -156,11 +156,11 @@ def assemble(tree: Tree, *, name: str, source: str = "") -> tuple[Plan | None, l
     if track is not None and not any(c.place.startswith("sequence") for c in complaints):
         complaints += checks.check_track(track, sum(stage.duration for stage in sequence))
         track = dataclasses.replace(track, at=tuple(sorted(set(track.at))))
-    if not complaints:
-        trap = {part_name: with_mass(part, atoms.mass) for part_name, part in trap.items()}
-        complaints += checks.check_hold(trap, gravity, numerics, atoms.mass)
+    if not any(c.place.partition(".")[0] in ("trap", "gravity", "numerics") for c in complaints):
+        complaints += checks.check_hold(trap, gravity, numerics)
     if complaints:
         return None, complaints
+    trap = {part_name: with_mass(part, atoms.mass) for part_name, part in trap.items()}
     return Plan(title=title, name=name, atoms=atoms, trap=trap, gravity=gravity, sequence=sequence, numerics=numerics,
                 track=track, sigma=sigma, source=source), []
 

@@ -75,7 +75,7 @@ def _put(tree: Tree, path: str, value: Any) -> Complaint | None:
     if top == "sequence" and (rest or index):
         stages = tree.get("sequence", [])
         found = _stage(stages, index, rest[0][0] if rest else "")
-        if found is None:
+        if found is None or (not index and rest[0][1]):
             return _no_stage(path, stages, rest)
         rest = rest if index else rest[1:]
         if not rest:

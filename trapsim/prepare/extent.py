@@ -9,6 +9,7 @@ import numpy as np
 from scipy import fft, optimize
 
 from trapsim.cloud.shapes import chemical_potential_guess
+from trapsim.evolve.guards import OUTER
 from trapsim.space.axes import Array, Axis, Radial, Wave
 from trapsim.space.space import Space
 
@@ -22,11 +23,13 @@ class Accuracy:
     spacing : float
         In units of the cloud's finest length.
     tolerance : float
-        L2 error of the wave function per step.
+        L2 error of the wave function per step in flight.
+    cap : float
+        Highest phase per plain step in a trap, rad.
     tail : float
         The ground state falls to exp(-tail) at the edge.
-    room : float
-        Edge thicknesses kept free around the Thomas-Fermi radius in flight.
+    room, inner : float
+        Edge thicknesses kept free around the Thomas-Fermi radius, up to the edge and up to where the guard looks.
     residual : float
         Of the ground state.
     edge, spectrum, norm : float
@@ -35,8 +38,10 @@ class Accuracy:
 
     spacing: float
     tolerance: float
+    cap: float
     tail: float
     room: float
+    inner: float
     residual: float
     edge: float
     spectrum: float
@@ -44,9 +49,9 @@ class Accuracy:
 
 
 ACCURACY = {
-    "draft": Accuracy(2.2, 3e-4, 4.0, 3.5, 1e-6, 1e-3, 1e-3, 1e-2),
-    "normal": Accuracy(1.4, 1e-4, 5.5, 5.0, 1e-7, 1e-4, 1e-4, 1e-3),
-    "fine": Accuracy(1.1, 1e-5, 7.0, 6.0, 1e-9, 1e-6, 1e-6, 1e-4),
+    "draft": Accuracy(2.2, 3e-4, 2.4, 4.0, 3.5, 0.5, 1e-6, 1e-3, 1e-3, 1e-2),
+    "normal": Accuracy(1.4, 1e-4, 2.4, 5.5, 5.0, 1.5, 1e-7, 1e-4, 1e-4, 1e-3),
+    "fine": Accuracy(1.1, 1e-5, 0.8, 7.0, 6.0, 3.0, 1e-9, 1e-6, 1e-6, 1e-4),
 }
 
 
@@ -86,8 +91,12 @@ def cloud_lengths(omega: Array, q: float, scattering_number: float, accuracy: Ac
         oscillator = np.sqrt(q / w)
         radius = np.sqrt(2 * q * available) / w
         edge = (q**2 / (2 * w**2 * radius)) ** (1 / 3)
-        half[j] = max(_tail_end(radius / oscillator, accuracy.tail) * oscillator, radius + accuracy.room * edge)
-        finest[j] = min(edge, 0.58 * oscillator)
+        half[j] = max(
+            _tail_end(radius / oscillator, accuracy.tail) * oscillator,
+            radius + accuracy.room * edge,
+            (radius + accuracy.inner * edge) / OUTER,
+        )
+        finest[j] = min(edge, 0.42 * oscillator)
     if scattering_number < 0:
         # an attractive cloud draws together as it nears collapse (0.575 in an isotropic trap)
         trapped = omega[omega > 0]

@@ -128,7 +128,7 @@ def prepare(plan: Plan) -> Setup:
     legs = _legs(plan, timeline, [spaces[w] for w in words[1:]], moving=not standing)
     return Setup(
         plan=plan, timeline=timeline, q=q, coupling=coupling, omega=omega, lengths=lengths, accuracy=accuracy,
-        space=spaces[words[0]], legs=legs, pace=Pace(accuracy.tolerance),
+        space=spaces[words[0]], legs=legs, pace=Pace(accuracy.tolerance, accuracy.cap),
         guards=Guards(accuracy.edge, accuracy.spectrum, accuracy.norm), why=_why(plan, round_about, words),
         notices=timeline.notices,
     )  # fmt: skip

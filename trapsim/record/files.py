@@ -17,10 +17,10 @@ import numpy as np
 from trapsim.errors import FileTrouble
 
 Array = np.ndarray
-_ATTRIBUTES = "attributes.json"
+_CONTENT = "content.json"
 
 
-def write_atomic(path: str | Path, data: bytes) -> None:
+def write_atomic(path: str | Path, data: bytes | memoryview) -> None:
     """Write a small file beside its place, sync it and rename it.
 
     Raises
@@ -42,11 +42,11 @@ def write_checkpoint(path: str | Path, arrays: Mapping[str, Array], attributes: 
     attributes : mapping
         What JSON can say: numbers, words, None, lists, mappings with words as keys.
     """
-    text = json.dumps(dict(attributes))
+    text = json.dumps({"arrays": list(arrays), "attributes": dict(attributes)})
 
     def fill(part: Path) -> None:
         with zipfile.ZipFile(part, "w") as whole:
-            whole.writestr(_ATTRIBUTES, text)
+            whole.writestr(_CONTENT, text)
             for name, one in arrays.items():
                 with whole.open(f"{name}.npy", "w", force_zip64=True) as member:
                     np.lib.format.write_array(member, np.asarray(one), allow_pickle=False)
@@ -66,15 +66,15 @@ def read_checkpoint(path: str | Path) -> tuple[dict[str, Array], dict[str, Any]]
     with reading(path, "delete this file: the run then starts from its beginning"):
         with zipfile.ZipFile(path) as whole:
             kept = {name: whole.read(name) for name in whole.namelist()}  # read() checks the sum of the part
-        attributes = json.loads(kept.pop(_ATTRIBUTES))
+        content = json.loads(kept[_CONTENT])
         arrays = {
-            name.removesuffix(".npy"): np.lib.format.read_array(io.BytesIO(one), allow_pickle=False)
-            for name, one in kept.items()
+            name: np.lib.format.read_array(io.BytesIO(kept[f"{name}.npy"]), allow_pickle=False)
+            for name in content["arrays"]
         }
-    return arrays, attributes
+    return arrays, content["attributes"]
 
 
-def _write_bytes(part: Path, data: bytes) -> None:
+def _write_bytes(part: Path, data: bytes | memoryview) -> None:
     part.write_bytes(data)
 
 

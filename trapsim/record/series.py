@@ -241,8 +241,8 @@ def track_csv(track: Track) -> str:
     ]
     for name, one in track.series.items():
         unit = f" ({one.shown})" if one.shown else ""
-        parts = [(f"{name}_{d}", one.lab[:, j]) for j, d in enumerate(DIRECTIONS)]
-        for title, values in parts if one.per_direction else [(name, one.lab)]:
+        titles = [f"{name}_{d}" for d in DIRECTIONS] if one.per_direction else [name]
+        for title, values in zip(titles, one.lab.reshape(len(track), -1).T, strict=True):
             header.append(title + unit)
             columns.append([_number(v) for v in values])
     out = io.StringIO()

@@ -6,6 +6,7 @@ xarray opens each group with the engine h5netcdf and a stranger understands it.
 
 from __future__ import annotations
 
+import io
 import json
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field
@@ -16,7 +17,7 @@ import h5py
 import numpy as np
 
 from trapsim.errors import FileTrouble
-from trapsim.record.files import read_checkpoint, reading, replace, write_atomic, write_checkpoint
+from trapsim.record.files import read_checkpoint, reading, write_atomic, write_checkpoint
 from trapsim.record.series import DIRECTIONS, AxisRecord, ColumnSeries, Series, Track, WaveFunction, track_csv
 from trapsim.record.summary import Summary
 
@@ -28,7 +29,7 @@ RUN_FILE = "run.h5"
 LAYOUT = 1
 _TEXT = h5py.string_dtype()
 _PSI = (
-    "psi(x) = (real + i imag) / sqrt(product of scale) "
+    "psi(x) = (psi_real + i psi_imag) / sqrt(product of scale) "
     "* exp(i m/hbar sum_j [scale_rate_j/(2 scale_j) y_j^2 + velocity_j y_j]), y = x - centre, "
     "x = scale * xi + centre, xi the axes here; positions count from the origin of the ground state"
 )
@@ -79,12 +80,10 @@ def write_run(folder: str | Path, contents: Contents) -> Path:
         When it cannot be written; what was there before stays.
     """
     path = Path(folder) / RUN_FILE
-
-    def fill(part: Path) -> None:
-        with h5py.File(part, "w", track_order=True) as file:
-            _fill(file, contents)
-
-    replace(path, fill)
+    memory = io.BytesIO()  # a full disk in the middle of HDF5's own writing ends the process, so it never meets one
+    with h5py.File(memory, "w") as file:
+        _fill(file, contents)
+    write_atomic(path, memory.getbuffer())
     return path
 
 
@@ -200,8 +199,8 @@ def _put_wave(group: _Group, wave: WaveFunction) -> None:
         words = f"quadrature weight along {' and '.join(axis.name)}"
         group.put(f"weight_{axis.name}", axis.weights, (dim,), unit, words)
     values = np.asarray(wave.values, dtype=np.complex128)
-    group.put("real", values.real, dims, "m^-3/2", "real part of the wave function in the moving frame")
-    group.put("imag", values.imag, dims, "m^-3/2", "imaginary part of the wave function in the moving frame")
+    group.put("psi_real", values.real, dims, "m^-3/2", "real part of the wave function in the moving frame")
+    group.put("psi_imag", values.imag, dims, "m^-3/2", "imaginary part of the wave function in the moving frame")
     _put_direction(group)
     frame = (("scale", "1"), ("scale_rate", "s^-1"), ("centre", "m"), ("velocity", "m/s"))
     for name, unit in frame:
@@ -216,7 +215,7 @@ def _contents(file: h5py.File, path: str) -> Contents:
         track=_track(file["track"]) if "track" in file else None,
         columns={view: _columns(group) for view, group in file.get("columns", {}).items()},
         final=_wave(file["final"]) if "final" in file else None,
-        ground=_wave(file["ground"]) if "real" in file["ground"] else None,
+        ground=_wave(file["ground"]) if "psi_real" in file["ground"] else None,
     )
 
 
@@ -240,11 +239,11 @@ def _columns(group: h5py.Group) -> ColumnSeries:
 
 def _wave(group: h5py.Group) -> WaveFunction:
     axes = []
-    for dim in (scale[0].name.rsplit("/", 1)[1] for scale in group["real"].dims):
+    for dim in (scale[0].name.rsplit("/", 1)[1] for scale in group["psi_real"].dims):
         name = dim.removeprefix("xi_")
         covers = tuple(DIRECTIONS.index(letter) for letter in name)
         axes.append(AxisRecord(group[dim].attrs["kind"], covers, group[dim][()], group[f"weight_{name}"][()]))
     frame = {name: group[name][()] for name in ("scale", "scale_rate", "centre", "velocity")}
-    values = np.empty(group["real"].shape, dtype=np.complex128)
-    values.real, values.imag = group["real"][()], group["imag"][()]
+    values = np.empty(group["psi_real"].shape, dtype=np.complex128)
+    values.real, values.imag = group["psi_real"][()], group["psi_imag"][()]
     return WaveFunction(float(group.attrs["time"]), values, tuple(axes), **frame)

@@ -11,14 +11,14 @@ from __future__ import annotations
 import json
 import math
 from collections.abc import Mapping
-from dataclasses import dataclass, field, fields, is_dataclass
+from dataclasses import asdict, dataclass, field, fields, is_dataclass
 from pathlib import Path
 from typing import Any, ClassVar, get_args, get_type_hints
 
 import numpy as np
 
 from trapsim.constants import K_B
-from trapsim.errors import FileTrouble
+from trapsim.errors import FileTrouble, Notice
 from trapsim.record.series import ColumnSeries, Track, WaveFunction, track_csv
 
 Number = float | None
@@ -170,14 +170,6 @@ class Numerics(_Record):
 
 
 @dataclass(frozen=True)
-class Notice(_Record):
-    """Something the user should know; `code` is one short word for machines."""
-
-    code: str
-    text: str
-
-
-@dataclass(frozen=True)
 class Summary(_Record):
     """All figures of a run; `end` is None for a plan without a sequence."""
 
@@ -243,7 +235,7 @@ class Run:
 
 
 def moment_of(track: Track, index: int, *, mass: float, law_model: str = "scaling law") -> Moment:
-    """The cloud at one sample of the track, in lab units.
+    """The cloud at one sample of the track, in lab units; a direction without a width is uniform and has no size.
 
     Parameters
     ----------
@@ -256,11 +248,14 @@ def moment_of(track: Track, index: int, *, mass: float, law_model: str = "scalin
         What the law beside it is called, where the track has one.
     """
 
+    uniform = track["width"][index] == 0
+
     def lab(name: str) -> Any:
         if name not in track:
             return None
         one = track.series[name]
-        return one.values[index] * one.factor
+        here = one.values[index] * one.factor
+        return np.where(uniform, np.nan, here) if "width" in name or "rate" in name else here
 
     spread = track["velocity_spread"][index]
     kinetic = lab("kinetic")
@@ -298,6 +293,8 @@ def _tidy(value: Any) -> Any:
 def _plain(value: Any) -> Any:
     if isinstance(value, _Record):
         return value.as_dict()
+    if is_dataclass(value) and not isinstance(value, type):
+        return asdict(value)
     if isinstance(value, tuple):
         return [_plain(one) for one in value]
     return value

@@ -46,7 +46,7 @@ def smooth(time: Array, values: Array, rates: Array, *, slope: bool = False) -> 
     return np.append(moments.T.ravel(), time[-1]), np.append(between.T.ravel(), last)
 
 
-def alike(values: Array, *, tolerance: float = 1e-3) -> list[tuple[int, ...]]:
+def alike(values: Array, *, tolerance: float = 1e-3, nothing: float = 0.0) -> list[tuple[int, ...]]:
     """Directions whose curves cannot be told apart, together; a direction without values is left out.
 
     Parameters
@@ -54,6 +54,8 @@ def alike(values: Array, *, tolerance: float = 1e-3) -> list[tuple[int, ...]]:
     values : ndarray, shape (T, 3)
     tolerance : float
         Largest difference, as a share of the largest magnitude of the two curves.
+    nothing : float
+        A difference that is never seen.
     """
     groups: list[list[int]] = []
     for j in range(values.shape[1]):
@@ -62,7 +64,7 @@ def alike(values: Array, *, tolerance: float = 1e-3) -> list[tuple[int, ...]]:
         for group in groups:
             first, this = values[:, group[0]], values[:, j]
             size = np.nanmax(np.abs([first, this]))
-            if np.nanmax(np.abs(first - this)) <= tolerance * size:
+            if np.nanmax(np.abs(first - this)) <= max(tolerance * size, nothing):
                 group.append(j)
                 break
         else:

@@ -20,7 +20,7 @@ FAINTEST = 3e-3
 #: Longer clouds than this are drawn with the short side enlarged.
 LONGEST = 3.5
 #: Inches: a picture with all that belongs to it, its side, and the depth of its side profiles.
-CELL, SIDE, EDGE = 4.75, 2.9, 0.5
+CELL, SIDE, EDGE = 4.85, 2.9, 0.5
 ENLARGE = (2, 5, 10, 20, 50, 100, 200, 500, 1000)
 
 
@@ -183,10 +183,10 @@ def _draw_profiles(above: Axes, beside: Axes, series: ColumnSeries, index: int) 
     beside.fill_betweenx(rows, up, color=DENSITY(0.5), linewidth=0)
     above.set_ylim(0, _peak(right) * 1.05)
     beside.set_xlim(0, _peak(up) * 1.05)
-    for ax, profile, spot in ((above, right, (0.99, 0.8)), (beside, up, (0.96, 0.93))):
+    for ax, profile, spot, side in ((above, right, (0.99, 0.95), "right"), (beside, up, (0.5, -0.02), "center")):
         ax.axis("off")
         text = f"{figures(float(profile.max()), 3)}/µm"
-        ax.text(*spot, text, transform=ax.transAxes, ha="right", size=SMALL - 1, color=QUIET)
+        ax.text(*spot, text, transform=ax.transAxes, ha=side, va="top", size=SMALL - 1, color=QUIET)
 
 
 def _pixel(centres: Array) -> float:
@@ -210,10 +210,13 @@ def _write_facts(
     ax = _box(figure, corner[0] + 0.85, corner[1] - CELL + 0.3, 0.5 * WIDTH - 1.1, CELL - 0.6)
     ax.axis("off")
     lines = []
-    if summary.end is not None and index == -1:
-        end = summary.end
+    end = summary.end
+    if end is not None and index == -1:
         lines += [("atoms", brief(end.atoms))]
-        lines += [(f"half-width {d}", f"{four(w)} µm") for d, w in zip("xyz", end.width_um, strict=True) if w]
+    if end is None or index == -1:
+        widths = zip("xyz", (end or summary.ground).width_um, strict=True)
+        lines += [(f"half-width {d}", f"{four(w)} µm") for d, w in widths if w]
+    if end is not None and index == -1:
         centres = zip("xyz", end.centre_um, strict=True)
         lines += [(f"centre {d}", f"{signed(_rounded(c))} µm") for d, c in centres if c is not None]
     peaks = [(view, series.values[index].max() * 1e-12) for view, series in columns.items() if len(series)]

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from dataclasses import dataclass
 
 import numpy as np
 from matplotlib.axes import Axes
@@ -12,7 +13,7 @@ from matplotlib.lines import Line2D
 from trapsim.record.series import DIRECTIONS, Track
 from trapsim.record.summary import StageEnd, Summary
 from trapsim.show.curves import alike, apart, smooth
-from trapsim.show.look import BAND, INK, LOOKS, QUIET, SMALL, TYPE, WIDTH, dress, new_figure
+from trapsim.show.look import BAND, INK, LOOKS, QUIET, SMALL, TYPE, dress, new_figure
 from trapsim.show.numbers import brief, four, percent, signed
 
 Array = np.ndarray
@@ -21,17 +22,18 @@ DASHES = (4, 2.5)
 TITLE = {"size": TYPE, "color": INK, "weight": "bold"}
 #: Names of stages: rows at most, points between them, and the width of a letter as a share of the panel.
 ROWS, ROW, LETTER = 3, 14, 0.0118
-#: A centre that moves less than this, in um, is drawn as standing still.
-STILL = 0.1
+LAW = ("law_width", "law_expansion_rate")
+#: A centre (um) and a rate (mm/s) below which there is nothing to see.
+STILL_CENTRE, STILL_RATE = 2e-3, 1e-4
 #: A stage shorter than this share of the whole is a dotted line, not a band.
 SHORTEST = 0.006
 
 
 def flight_figure(summary: Summary, track: Track) -> Figure:
     """Three panels over one time axis: rms half-widths, expansion rates, and the centre of mass."""
-    height = 9.0
+    height = 9.1
     figure = new_figure(height, summary.title or "Sizes and path of the cloud", _subtitle(summary))
-    left, right, top, bottom = 0.095, 0.80, 1 - 1.5 / height, 0.68 / height
+    left, right, top, bottom = 0.095, 0.80, 1 - 1.62 / height, 0.68 / height
     panels = figure.subplots(
         3, 1, sharex=True,
         gridspec_kw={"height_ratios": [1.3, 1, 1], "hspace": 0.3, "left": left, "right": right, "top": top,
@@ -61,27 +63,38 @@ def _subtitle(summary: Summary) -> str:
 
 def draw_widths(ax: Axes, track: Track) -> None:
     """Rms half-width of each direction, the scaling law dashed, the last value written at its end."""
-    _draw(ax, track, "width", "expansion_rate", unit="µm", law=("law_width", "law_expansion_rate"))
+    dress(ax)
+    ends = _draw(ax, track, "width", "expansion_rate", law=LAW)
     ax.set_ylim(bottom=0.0)
     _words(ax, "How large: rms half-width", "half-width (µm)")
+    _write_ends(ax, ends, "µm")
 
 
 def draw_rates(ax: Axes, track: Track) -> None:
     """Rate of change of each rms half-width, the scaling law dashed."""
-    law = ("law_width", "law_expansion_rate")
-    _draw(ax, track, "width", "expansion_rate", unit="mm/s", law=law, slope=True)
+    dress(ax)
+    ends = _draw(ax, track, "width", "expansion_rate", law=LAW, slope=True, nothing=STILL_RATE)
     ax.axhline(0.0, color=QUIET, linewidth=0.8)
+    _spread(ax, 5 * STILL_RATE)
     _words(ax, "How fast it grows: expansion rate", "rate (mm/s)")
+    _write_ends(ax, ends, "mm/s", nothing=STILL_RATE)
 
 
 def draw_centre(ax: Axes, track: Track) -> None:
     """Centre of mass in each direction, counted from where the cloud rested at the start."""
-    _draw(ax, track, "centre", "velocity", unit="µm")
-    low, high = ax.get_ylim()
-    if high - low < 2 * STILL:
-        middle = 0.5 * (low + high)
-        ax.set_ylim(middle - STILL, middle + STILL)
+    dress(ax)
+    ends = _draw(ax, track, "centre", "velocity", nothing=STILL_CENTRE)
+    _spread(ax, 50 * STILL_CENTRE)
     _words(ax, "Where it is: centre of mass, from where it rested", "centre (µm)")
+    _write_ends(ax, ends, "µm", nothing=STILL_CENTRE)
+
+
+def _spread(ax: Axes, least: float) -> None:
+    """Keep a panel from enlarging what is nothing: it shows at least this much up and down."""
+    low, high = ax.get_ylim()
+    if high - low < 2 * least:
+        middle = 0.5 * (low + high)
+        ax.set_ylim(middle - least, middle + least)
 
 
 def draw_stages(ax: Axes, stages: Sequence[StageEnd], *, names: bool = False) -> int:
@@ -122,7 +135,7 @@ def _name_stages(ax: Axes, stages: Sequence[StageEnd], *, begin: float, span: fl
         ax.annotate(
             text, xy=(begin + start * span, 1.0), xycoords=("data", "axes fraction"), xytext=(1, 4 + ROW * height),
             textcoords="offset points", size=SMALL, color=INK if one is flies else QUIET,
-            weight="bold" if one is flies else "normal", annotation_clip=False,
+            weight="bold" if one is flies else "normal", annotation_clip=False, parse_math=False,
         )  # fmt: skip
     return sum(bool(row) for row in rows)
 
@@ -141,21 +154,32 @@ def _words(ax: Axes, title: str, label: str) -> None:
     ax.set_ylabel(label, size=TYPE, color=INK)
 
 
+@dataclass(frozen=True)
+class _End:
+    """What is written at the right end of a curve."""
+
+    value: float
+    names: str
+    colour: str
+    beside: str
+
+
 def _draw(
-    ax: Axes, track: Track, name: str, rate: str, *, unit: str, law: tuple[str, str] | None = None, slope: bool = False
-) -> None:
-    """Curves of one observable, a colour and a mark per direction, the last value at the right edge."""
-    dress(ax)
+    ax: Axes, track: Track, name: str, rate: str, *, law: tuple[str, str] | None = None, slope: bool = False,
+    nothing: float = 0.0,
+) -> list[_End]:  # fmt: skip
+    """Curves of one observable, a colour and a mark per direction; what differs by less than `nothing` is one curve."""
     shown = track.series[rate if slope else name]
     time = track.time * 1e3
     uniform = (track["width"] == 0).all(axis=0)
     present = np.where(uniform, np.nan, shown.lab)
-    ends: list[tuple[float, str, str, str]] = []
-    for number, group in enumerate(alike(present)):
+    ends = []
+    for number, group in enumerate(alike(present, nothing=nothing)):
         j = group[0]
         look = LOOKS[DIRECTIONS[j]]
-        curve = smooth(track.time, track[name][:, j], track[rate][:, j], slope=slope)
-        ax.plot(curve[0] * 1e3, curve[1] * shown.factor, color=look.colour, linewidth=2.0, zorder=3)
+        names = ", ".join(DIRECTIONS[i] for i in group)
+        t, curve = smooth(track.time, track[name][:, j], track[rate][:, j], slope=slope)
+        ax.plot(t * 1e3, curve * shown.factor, color=look.colour, linewidth=2.0, zorder=3, label=names)
         marked = _marked(time, offset=number / 3)
         ax.plot(
             time[marked], present[marked, j], linestyle="", marker=look.marker, markersize=5.5, color=look.colour,
@@ -163,13 +187,12 @@ def _draw(
         )  # fmt: skip
         beside = ""
         if law is not None and law[0] in track:
-            dashed = smooth(track.time, track[law[0]][:, j], track[law[1]][:, j], slope=slope)
-            t, v = dashed[0] * 1e3, dashed[1] * shown.factor
-            ax.plot(t, v, color=look.colour, linewidth=1.6, dashes=DASHES, zorder=5)
-            beside = _gap(track[law[1] if slope else law[0]][-1, j], shown.values[-1, j])
-        ends.append((present[-1, j], ", ".join(DIRECTIONS[i] for i in group), look.colour, beside))
-    if ends:
-        _write_ends(ax, ends, unit)
+            t, curve = smooth(track.time, track[law[0]][:, j], track[law[1]][:, j], slope=slope)
+            ax.plot(t * 1e3, curve * shown.factor, color=look.colour, linewidth=1.6, dashes=DASHES, zorder=5)
+            if abs(present[-1, j]) > nothing:
+                beside = _gap(track[law[1] if slope else law[0]][-1, j], shown.values[-1, j])
+        ends.append(_End(float(present[-1, j]), names, look.colour, beside))
+    return ends
 
 
 def _gap(law: float, full: float) -> str:
@@ -187,17 +210,18 @@ def _marked(time: Array, *, offset: float) -> Array:
     return np.unique([int(np.argmin(np.abs(time - one))) for one in wanted])
 
 
-def _write_ends(ax: Axes, ends: Sequence[tuple[float, str, str, str]], unit: str) -> None:
+def _write_ends(ax: Axes, ends: Sequence[_End], unit: str, *, nothing: float = 0.0) -> None:
+    """The last values in the right margin, level with their curves as far as there is room."""
     low, high = ax.get_ylim()
     tall = ax.get_position().height * ax.figure.get_size_inches()[1]
     line = (TYPE + 1) / 72 / tall * 1.15
-    gap = line * (2 if any(beside for *_, beside in ends) else 1)
-    places = apart(np.array([(value - low) / (high - low) for value, *_ in ends]), gap, low=0.02, high=0.96)
-    edge = 1 + 0.012 * WIDTH / 9
-    for (value, names, colour, beside), place in zip(ends, places, strict=True):
+    gap = line * (2 if any(one.beside for one in ends) else 1)
+    places = apart(np.array([(one.value - low) / (high - low) for one in ends]), gap, low=0.02, high=0.96)
+    for one, place in zip(ends, places, strict=True):
+        number = signed(four(one.value)) if abs(one.value) > nothing else "0"
         ax.text(
-            edge, place, f"{names}  {signed(four(value))} {unit}", transform=ax.transAxes, color=colour, size=TYPE,
+            1.012, place, f"{one.names}  {number} {unit}", transform=ax.transAxes, color=one.colour, size=TYPE,
             weight="bold", va="center",
         )  # fmt: skip
-        if beside:
-            ax.text(edge, place - line, beside, transform=ax.transAxes, color=QUIET, size=SMALL, va="center")
+        if one.beside:
+            ax.text(1.012, place - line, one.beside, transform=ax.transAxes, color=QUIET, size=SMALL, va="center")

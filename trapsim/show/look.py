@@ -9,6 +9,7 @@ from __future__ import annotations
 import io
 from collections.abc import Mapping
 from dataclasses import dataclass
+from textwrap import shorten
 
 from matplotlib.axes import Axes
 from matplotlib.colors import LinearSegmentedColormap
@@ -47,7 +48,8 @@ DENSITY = LinearSegmentedColormap.from_list(
 def new_figure(height: float, title: str, subtitle: str = "") -> Figure:
     """White paper with a title in its upper left corner."""
     figure = Figure(figsize=(WIDTH, height), facecolor="white")
-    figure.text(0.02, 1 - 0.16 / height, title, size=TYPE + 3, weight="bold", color=INK, va="top")
+    title = shorten(title, 68, placeholder=" ...")
+    figure.text(0.02, 1 - 0.16 / height, title, size=TYPE + 3, weight="bold", color=INK, va="top", parse_math=False)
     figure.text(0.02, 1 - 0.48 / height, subtitle, size=TYPE, color=QUIET, va="top")
     return figure
 

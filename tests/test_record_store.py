@@ -1,0 +1,440 @@
+"""What is kept can be read back, by us and by strangers, and a failed write harms nothing."""
+
+from __future__ import annotations
+
+import csv
+import dataclasses
+import io
+import json
+import math
+import os
+import resource
+import subprocess
+import sys
+from pathlib import Path
+
+import h5py
+import numpy as np
+import pytest
+import xarray
+from scipy import constants
+
+import invented_run
+from trapsim.errors import FileTrouble
+from trapsim.record import files
+from trapsim.record.series import OBSERVABLES, VIEWS, ColumnSeries, Track, WaveFunction, track_csv
+from trapsim.record.store import (
+    Contents,
+    read_checkpoint,
+    read_run,
+    write_atomic,
+    write_checkpoint,
+    write_results,
+    write_run,
+)
+from trapsim.record.summary import ErrorEstimate, Moment, Summary, moment_of
+
+GROUPS = ["/", "plan", "ground", "track", "columns/x", "columns/y", "columns/z", "final", "notices"]
+
+
+@pytest.fixture(scope="module")
+def contents() -> Contents:
+    return invented_run.contents()
+
+
+@pytest.fixture(scope="module")
+def folder(contents: Contents, tmp_path_factory: pytest.TempPathFactory) -> Path:
+    place = tmp_path_factory.mktemp("kept") / "a result"
+    write_results(place, contents)
+    return place
+
+
+def same_bits(a: np.ndarray, b: np.ndarray) -> bool:
+    return a.dtype == b.dtype and a.shape == b.shape and a.tobytes() == b.tobytes()
+
+
+def no_constant(name: str) -> None:
+    raise AssertionError(f"{name} is not JSON")
+
+
+# --- the summary ----------------------------------------------------------------------------------------------------
+
+
+def test_a_summary_survives_its_own_json(folder: Path, contents: Contents) -> None:
+    text = (folder / "summary.json").read_text()
+    raw = json.loads(text, parse_constant=no_constant)
+    assert Summary.from_dict(raw) == contents.summary
+    assert raw["end"]["law"]["model"] == "scaling law"
+
+
+def test_numbers_keep_every_bit_in_json(folder: Path, contents: Contents) -> None:
+    raw = json.loads((folder / "summary.json").read_text())
+    exact = contents.track["width"][-1] * 1e6
+    assert [float(one).hex() for one in raw["end"]["width_um"]] == [float(one).hex() for one in exact]
+
+
+def test_what_does_not_apply_is_null_and_never_not_a_number() -> None:
+    kept = invented_run.track()
+    before = moment_of(kept, 0, mass=invented_run.MASS)
+    assert before.flight_ms is None
+    estimate = ErrorEstimate(width_relative=math.nan, rate_relative=np.float64(np.inf), centre_um=np.float64(2.0))
+    assert estimate.as_dict() == {"width_relative": None, "rate_relative": None, "centre_um": 2.0}
+    assert type(estimate.centre_um) is float
+
+
+def test_a_moment_speaks_in_lab_units() -> None:
+    """sigma(t) = sigma0 sqrt(1 + (w t)^2), sigma0^2 = hbar/(2 m w), m v_rms^2 = hbar w/2; z = -g t^2/2 (textbook)."""
+    moment = moment_of(invented_run.track(), -1, mass=invented_run.MASS)
+    w, t = 2 * math.pi * 20.0, 20e-3
+    sigma = math.sqrt(constants.hbar / (2 * invented_run.MASS * w) * (1 + (w * t) ** 2))
+    assert moment.width_um[0] == pytest.approx(sigma * 1e6, rel=1e-12)
+    assert moment.expansion_energy_nk[0] == pytest.approx(0.5 * constants.hbar * w / constants.k * 1e9, rel=1e-12)
+    assert moment.centre_um[2] == pytest.approx(-0.5 * constants.g * t**2 * 1e6, rel=1e-12)
+    assert moment.velocity_mm_per_s == pytest.approx((4.0, 0.0, -constants.g * t * 1e3), rel=1e-12)
+    rate = constants.hbar / (2 * invented_run.MASS * w) * w**2 * t / sigma  # d sigma/dt = sigma0^2 w^2 t/sigma
+    assert moment.expansion_rate_mm_per_s[0] == pytest.approx(rate * 1e3, rel=1e-12)
+    assert (moment.time_ms, moment.flight_ms) == pytest.approx((22.0, 20.0), rel=1e-12)
+    # the three directions of the oscillator's ground state hold hbar w/4 of kinetic energy each (virial theorem)
+    three = constants.h * (20 + 120 + 120) / 4 / constants.k * 1e9
+    assert moment.internal_kinetic_nk == pytest.approx(three, rel=1e-12)
+
+
+def test_every_observable_is_shown_in_a_unit_of_its_own_kind() -> None:
+    """SI prefixes (BIPM), and energies over Boltzmann's constant."""
+    per_si = {"um": ("m", 1e6), "ms": ("s", 1e3), "mm/s": ("m/s", 1e3), "nK": ("J", 1e9 / constants.k), "": ("1", 1.0)}
+    for name, (unit, words, shown, factor) in OBSERVABLES.items():
+        assert (unit, factor) == (per_si[shown][0], pytest.approx(per_si[shown][1])), name
+        assert words[0].islower() and len(words) > 10
+
+
+def test_a_uniform_direction_has_no_size() -> None:
+    kept = invented_run.track()
+    flat = {name: one.values * ([1, 1, 0] if "width" in name else 1) for name, one in kept.series.items()}
+    moment = moment_of(Track.of(kept.time, kept.stage, flat), -1, mass=invented_run.MASS)
+    assert moment.width_um[2] is None and moment.expansion_rate_mm_per_s[2] is None and moment.width_um[1] > 0
+    assert moment.law is not None and moment.law.width_um[2] is None and moment.velocity_mm_per_s[2] is not None
+
+
+def test_aspect_ratios_are_width_over_width() -> None:
+    moment = moment_of(invented_run.track(), 0, mass=invented_run.MASS)
+    # sigma0 goes with frequency^(-1/2): 120 Hz against 20 Hz
+    assert moment.aspect_ratio["xy"] == pytest.approx(math.sqrt(6.0), rel=1e-12)
+    assert moment.aspect_ratio["yz"] == pytest.approx(1.0, rel=1e-12)
+    uniform = dataclasses.replace(moment, width_um=(1.0, 2.0, None))
+    assert uniform.as_dict()["aspect_ratio"] == {"xy": 0.5, "xz": None, "yz": None}
+
+
+def test_a_summary_of_a_later_version_is_read_and_a_broken_one_refused(contents: Contents) -> None:
+    raw = contents.summary.as_dict()
+    assert Summary.from_dict({**raw, "phase_of_the_moon": 1}) == contents.summary
+    for broken in ({}, {**raw, "ground": {"origin_um": [0, 0, 0]}}, {**raw, "ground": 7}):
+        with pytest.raises(FileTrouble, match=r"summary\.json"):
+            Summary.from_dict(broken)
+
+
+# --- the track ------------------------------------------------------------------------------------------------------
+
+
+def test_the_table_has_units_in_its_header_and_lab_numbers_below() -> None:
+    kept = invented_run.track()
+    rows = list(csv.reader(io.StringIO(track_csv(kept))))
+    header, first, last = rows[0], rows[1], rows[-1]
+    assert header[:6] == ["time (ms)", "stage", "flight_time (ms)", "width_x (um)", "width_y (um)", "width_z (um)"]
+    assert {"velocity_z (mm/s)", "kinetic_x (nK)", "atoms", "scale_y"} <= set(header)
+    assert len(rows) == 1 + len(kept)
+    seen = dict(zip(header, last, strict=True))
+    assert float(seen["time (ms)"]) == pytest.approx(22.0, rel=1e-11)
+    assert float(seen["centre_z (um)"]) == pytest.approx(-0.5 * constants.g * 0.02**2 * 1e6, rel=1e-11)  # free fall
+    assert seen["stage"] == "release"
+    assert dict(zip(header, first, strict=True))["flight_time (ms)"] == ""
+
+
+def test_a_series_that_is_nowhere_known_is_absent() -> None:
+    gaps = np.full((4, 3), np.nan)
+    kept = Track.of(np.arange(4.0), np.zeros(4), {"width": np.ones((4, 3)), "law_width": gaps})
+    assert "law_width" not in kept and "law_width_x" not in track_csv(kept)
+    assert kept["width"].shape == (4, 3)
+    with pytest.raises(ValueError, match="shape"):
+        Track.of(np.arange(4.0), np.zeros(4), {"width": np.ones((4, 2))})
+
+
+# --- run.h5 ---------------------------------------------------------------------------------------------------------
+
+
+def test_what_is_written_is_read_back_bit_by_bit(folder: Path, contents: Contents) -> None:
+    again = read_run(folder)
+    assert (again.plan_text, again.plan, again.summary) == (contents.plan_text, contents.plan, contents.summary)
+    assert list(again.track) == list(contents.track)
+    assert again.track.stage_names == contents.track.stage_names
+    for name in ("time", "stage", *contents.track):
+        assert same_bits(again.track[name], contents.track[name]), name
+    for name, one in contents.track.series.items():
+        other = again.track.series[name]
+        assert (one.unit, one.label, one.shown, one.factor) == (other.unit, other.label, other.shown, other.factor)
+    assert set(again.columns) == set(VIEWS)
+    for view, series in contents.columns.items():
+        for name in ("times", "rows", "cols", "values"):
+            assert same_bits(getattr(series, name), getattr(again.columns[view], name)), (view, name)
+    for kept, read in ((contents.final, again.final), (contents.ground, again.ground)):
+        assert same_bits(kept.values, read.values) and kept.time == read.time
+        for name in ("scale", "scale_rate", "centre", "velocity"):
+            assert same_bits(getattr(kept, name), getattr(read, name)), name
+        for a, b in zip(kept.axes, read.axes, strict=True):
+            assert (a.kind, a.covers) == (b.kind, b.covers)
+            assert same_bits(a.points, b.points) and same_bits(a.weights, b.weights)
+
+
+def test_every_dimension_has_a_scale_and_every_dataset_a_unit_and_a_name(folder: Path) -> None:
+    seen = []
+
+    def look(name: str, item: h5py.Group | h5py.Dataset) -> None:
+        if not isinstance(item, h5py.Dataset):
+            return
+        seen.append(name)
+        assert item.attrs["units"] and item.attrs["long_name"], name
+        for dim in item.dims if not item.is_scale else ():
+            assert len(dim) == 1, f"a dimension of {name} has no scale"
+
+    with h5py.File(folder / "run.h5") as file:
+        file.visititems(look)
+    assert {"track/width", "track/direction", "columns/y/column_density", "final/psi_real", "notices/text"} <= set(seen)
+
+
+@pytest.mark.parametrize("group", GROUPS)
+def test_xarray_opens_each_group(folder: Path, group: str) -> None:
+    with xarray.open_dataset(folder / "run.h5", engine="h5netcdf", group=group) as seen:
+        if group == "track":
+            assert seen.width.dims == ("time", "direction")
+            # the clock of the flight ends 20 ms after the release: seconds, not a date
+            assert float(seen.flight_time[-1]) == pytest.approx(0.02, rel=1e-12)
+            assert list(seen.direction.values) == ["x", "y", "z"]
+            assert seen.width.sel(direction="y").attrs["units"] == "m"
+        elif group.startswith("columns"):
+            view = group[-1]
+            right, up = VIEWS[view]
+            assert set(seen.coords) == {"time", "row", "column", f"{right}_lab", f"{up}_lab"}
+            assert seen[f"{up}_lab"].dims == ("time", "row") and seen[f"{right}_lab"].dims == ("time", "column")
+            last = seen.isel(time=-1)
+            whole = last.column_density.astype(float)
+            pixel = float(last[f"{right}_lab"].diff("column")[0] * last[f"{up}_lab"].diff("row")[0])
+            # 1e5 atoms; the raster ends at six sigma, where erf leaves 2e-9
+            assert float(whole.sum() * pixel) == pytest.approx(1e5, rel=1e-6)
+            # the cloud's middle is where it fell to: -g t^2/2, and kicked by 4 mm/s
+            middle = {"x": 80e-6, "y": 0.0, "z": -0.5 * constants.g * 0.02**2}
+            for side in (right, up):
+                assert float((whole * last[f"{side}_lab"]).sum() / whole.sum()) == pytest.approx(
+                    middle[side], abs=1e-12
+                )
+        elif group == "final":
+            assert seen.psi_real.dims == ("xi_x", "xi_yz") and float(seen.centre.sel(direction="z")) == -2e-3
+        elif group == "ground":
+            assert seen.attrs["chemical_potential_hz"] == pytest.approx(130.0)  # half of 20 + 120 + 120 Hz
+            assert "healing_length_um" not in seen.attrs
+        elif group == "plan":
+            assert json.loads(str(seen.resolved.values)) == {"title": "Invented", "atoms": {"number": 1e5}}
+            assert str(seen.text.values) == 'title = "Invented µ"\n'
+        elif group == "notices":
+            assert list(seen.code.values) == ["ideal gas"]
+        else:
+            assert json.loads(str(seen.summary.values))["status"] == "complete"
+
+
+def test_a_run_without_sequence_track_or_pictures_is_kept_too(tmp_path: Path) -> None:
+    only = dataclasses.replace(invented_run.summary(None), warnings=())
+    write_run(tmp_path, Contents("", {}, only))
+    again = read_run(tmp_path)
+    assert again.summary == only and again.summary.end is None
+    assert again.track is None and again.final is None and again.ground is None and again.columns == {}
+    with xarray.open_dataset(tmp_path / "run.h5", engine="h5netcdf", group="notices") as seen:
+        assert seen.sizes == {"notice": 0}
+
+
+def test_one_sample_and_no_picture_are_kept_too(tmp_path: Path) -> None:
+    one = Track.of(np.zeros(1), np.zeros(1), {"width": np.ones((1, 3))})
+    none = ColumnSeries("y", np.zeros(0), np.zeros((0, 4)), np.zeros((0, 4)), np.zeros((0, 4, 4), np.float32))
+    write_run(tmp_path, Contents("", {}, invented_run.summary(None), one, {"y": none}))
+    again = read_run(tmp_path)
+    assert len(again.track) == 1 and len(again.columns["y"]) == 0
+
+
+def test_the_file_says_which_wave_function_it_holds() -> None:
+    axes = invented_run.wave().axes
+    with pytest.raises(ValueError, match="axes"):
+        WaveFunction(0.0, np.zeros((3, 8), complex), axes)
+    with pytest.raises(ValueError, match="along y"):
+        ColumnSeries("y", np.zeros(1), np.zeros((1, 4)), np.zeros((1, 5)), np.zeros((1, 5, 4)))
+
+
+# --- when writing or reading fails ----------------------------------------------------------------------------------
+
+
+@pytest.mark.parametrize("damage", ["missing", "text", "cut", "folder", "group gone", "newer"])
+def test_a_result_that_cannot_be_read_is_explained(tmp_path: Path, contents: Contents, damage: str) -> None:
+    path = write_run(tmp_path, contents)
+    if damage == "missing":
+        path.unlink()
+    elif damage == "text":
+        path.write_text("not a result")
+    elif damage == "cut":
+        path.write_bytes(path.read_bytes()[:5000])
+    elif damage == "folder":
+        path.unlink()
+        path.mkdir()
+    else:
+        with h5py.File(path, "a") as file:
+            if damage == "newer":
+                file.attrs["layout"] = 99
+            else:
+                del file["plan"]
+    with pytest.raises(FileTrouble, match="run.h5") as caught:
+        read_run(tmp_path)
+    assert "->" in str(caught.value)
+
+
+def test_a_write_that_fails_leaves_what_was_there(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    path = tmp_path / "kept.txt"
+    write_atomic(path, b"first")
+
+    def full(part: Path, data: bytes) -> None:
+        part.write_bytes(data[:3])
+        raise OSError(28, "No space left on device")
+
+    monkeypatch.setattr(files, "_write_bytes", full)
+    with pytest.raises(FileTrouble, match="kept.txt.*No space left") as caught:
+        write_atomic(path, b"second")
+    assert "--out" in str(caught.value)
+    assert path.read_bytes() == b"first" and os.listdir(tmp_path) == ["kept.txt"]
+
+
+def test_an_interrupted_write_leaves_what_was_there(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    path = tmp_path / "kept.txt"
+    write_atomic(path, b"first")
+
+    def stop(part: Path, data: bytes) -> None:
+        part.write_bytes(data[:3])
+        raise KeyboardInterrupt
+
+    monkeypatch.setattr(files, "_write_bytes", stop)
+    with pytest.raises(KeyboardInterrupt):
+        write_atomic(path, b"second")
+    assert path.read_bytes() == b"first" and os.listdir(tmp_path) == ["kept.txt"]
+
+
+def test_a_file_or_folder_in_the_way_is_explained(tmp_path: Path, contents: Contents) -> None:
+    (tmp_path / "taken").write_text("mine")
+    with pytest.raises(FileTrouble, match="taken"):
+        write_results(tmp_path / "taken", contents)
+    assert (tmp_path / "taken").read_text() == "mine"
+    (tmp_path / "run.h5").mkdir()
+    with pytest.raises(FileTrouble, match="a folder of their own"):
+        write_run(tmp_path, contents)
+    assert os.listdir(tmp_path / "run.h5") == []
+
+
+FULL = """
+import resource, sys
+sys.path.insert(0, sys.argv[2])
+import invented_run
+from trapsim.errors import FileTrouble
+from trapsim.record.store import write_checkpoint, write_run
+import numpy as np
+contents = invented_run.contents()
+resource.setrlimit(resource.RLIMIT_FSIZE, (20000, 20000))
+checkpoint = (sys.argv[1] + "/c", {"a": np.ones(9999)}, {})
+for write, given in ((write_run, (sys.argv[1], contents)), (write_checkpoint, checkpoint)):
+    try:
+        write(*given)
+    except FileTrouble as trouble:
+        print("explained:", "--out" in str(trouble), "room" in str(trouble))
+"""
+
+
+def test_a_full_disk_is_explained_and_leaves_the_older_result(tmp_path: Path, contents: Contents) -> None:
+    write_run(tmp_path, contents)
+    before = (tmp_path / "run.h5").read_bytes()
+    root = Path(__file__).parent
+    done = subprocess.run(
+        [sys.executable, "-c", FULL, str(tmp_path), str(root)],
+        capture_output=True, text=True, env={**os.environ, "PYTHONPATH": str(root.parent)},
+    )  # fmt: skip
+    assert done.returncode == 0, done.stderr
+    assert done.stdout.splitlines() == ["explained: True True"] * 2
+    assert done.stderr == ""
+    assert (tmp_path / "run.h5").read_bytes() == before and os.listdir(tmp_path) == ["run.h5"]
+    assert resource.getrlimit(resource.RLIMIT_FSIZE)[0] != 20000
+
+
+# --- checkpoints ----------------------------------------------------------------------------------------------------
+
+ARRAYS = {
+    "phi": np.array([[complex(-0.0, math.nan), complex(math.inf, 5e-324)], [1 / 3 + 2j, 0]]),
+    "file": np.arange(5, dtype=np.int32),
+    "books/pairs": np.array(2**62, dtype=np.int64),
+    "names": np.array(["µ", "release"]),
+    "flags": np.array([True, False]),
+    "thin": np.linspace(0, 1, 3, dtype=np.float32),
+    "none at all": np.zeros((0, 3)),
+    "columns first": np.asfortranarray(np.arange(6.0).reshape(2, 3)),
+}
+ATTRIBUTES = {"leg": 3, "key": "ab12", "alarm": None, "tolerance": 0.1 + 0.2, "open": [1, None, "x", {"deep": True}]}
+
+
+def test_a_checkpoint_gives_back_every_bit(tmp_path: Path) -> None:
+    path = tmp_path / "checkpoint"
+    write_checkpoint(path, ARRAYS, ATTRIBUTES)
+    arrays, attributes = read_checkpoint(path)
+    assert list(arrays) == list(ARRAYS) and attributes == ATTRIBUTES
+    assert all(same_bits(one, arrays[name]) for name, one in ARRAYS.items())
+    assert os.listdir(tmp_path) == ["checkpoint"]
+
+
+def test_no_object_of_python_enters_a_checkpoint(tmp_path: Path) -> None:
+    with pytest.raises(ValueError, match="Object arrays"):
+        write_checkpoint(tmp_path / "c", {"a": np.array([object()])}, {})
+    with pytest.raises(TypeError):
+        write_checkpoint(tmp_path / "c", {}, {"a": {1, 2}})
+    assert os.listdir(tmp_path) == []
+
+
+def test_no_damage_to_a_checkpoint_goes_unseen(tmp_path: Path) -> None:
+    """Turn each byte in turn: the file is refused, or (a date, say) all that it holds is still exact."""
+    path = tmp_path / "checkpoint"
+    write_checkpoint(path, {"phi": ARRAYS["phi"], "n": np.arange(3)}, {"leg": 3})
+    whole = path.read_bytes()
+    refused = 0
+    for place in range(len(whole)):
+        damaged = bytearray(whole)
+        damaged[place] ^= 0x55
+        path.write_bytes(damaged)
+        try:
+            arrays, attributes = read_checkpoint(path)
+        except FileTrouble as trouble:
+            assert "checkpoint" in str(trouble) and "delete this file" in str(trouble)
+            refused += 1
+            continue
+        assert attributes == {"leg": 3} and list(arrays) == ["phi", "n"]
+        assert same_bits(arrays["phi"], ARRAYS["phi"]) and same_bits(arrays["n"], np.arange(3))
+    assert refused > len(whole) // 2
+    for length in (0, 1, len(whole) // 2, len(whole) - 1):
+        path.write_bytes(whole[:length])
+        with pytest.raises(FileTrouble):
+            read_checkpoint(path)
+    path.unlink()
+    with pytest.raises(FileTrouble, match="no such file"):
+        read_checkpoint(path)
+
+
+def test_the_summary_needs_neither_h5py_nor_matplotlib() -> None:
+    script = "import sys, trapsim.record.summary, trapsim.show.text; print([n for n in sys.modules if n in sys.argv])"
+    done = subprocess.run(
+        [sys.executable, "-c", script, "h5py", "matplotlib", "json"],
+        capture_output=True, text=True, env={**os.environ, "PYTHONPATH": str(Path(__file__).parents[1])},
+    )  # fmt: skip
+    assert done.stdout.strip() == "['json']", done.stderr
+
+
+def test_a_moment_without_law_says_so() -> None:
+    kept = invented_run.track()
+    plain = dataclasses.replace(kept, series={n: s for n, s in kept.series.items() if not n.startswith("law")})
+    moment = moment_of(plain, -1, mass=invented_run.MASS)
+    assert isinstance(moment, Moment) and moment.law is None and moment.as_dict()["law"] is None

@@ -1,0 +1,199 @@
+"""From what the engine did to the figures of the summary."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+
+import trapsim
+from trapsim.cloud.cloud import Cloud
+from trapsim.constants import HBAR
+from trapsim.errors import Notice
+from trapsim.estimate.law import ScalingLaw
+from trapsim.estimate.trust import trust
+from trapsim.evolve.march import Leg, State
+from trapsim.evolve.relax import Relaxed
+from trapsim.measure.observables import Moments
+from trapsim.prepare.setup import Setup
+from trapsim.record.series import AxisRecord, Track, WaveFunction
+from trapsim.record.summary import (
+    Effort,
+    ErrorEstimate,
+    Ground,
+    LegSpace,
+    MarchEffort,
+    Moment,
+    Numerics,
+    StageEnd,
+    Summary,
+    moment_of,
+)
+from trapsim.space.space import Array
+
+_HZ = 1 / (2 * np.pi)
+
+
+def ground_figures(setup: Setup, relaxed: Relaxed, cloud: Cloud, seen: Moments, law: ScalingLaw | None) -> Ground:
+    """The figures of the ground state."""
+    atoms = setup.plan.atoms
+    peak = atoms.number * peak_density(cloud)
+    a = atoms.scattering_length
+    return Ground(
+        origin_um=1e6 * np.array(setup.timeline.origin),
+        chemical_potential_hz=relaxed.mu * _HZ,
+        energy_hz=relaxed.energy * _HZ,
+        kinetic_hz=relaxed.kinetic * _HZ,
+        trap_hz=relaxed.potential * _HZ,
+        interaction_hz=relaxed.interaction * _HZ,
+        width_um=np.where(setup.omega > 0, 1e6 * seen.width, np.nan),
+        thomas_fermi_radius_um=np.full(3, np.nan) if law is None or law.radius is None else 1e6 * law.radius,
+        peak_density_per_um3=1e-18 * peak,
+        healing_length_um=1e6 / np.sqrt(8 * np.pi * peak * a) if a > 0 else None,
+        gas_parameter=peak * abs(a) ** 3,
+        residual=relaxed.residual,
+        virial=virial(setup, seen),
+    )
+
+
+def peak_density(cloud: Cloud) -> float:
+    """Highest density, 1/m^3: on the points, or at the frame's centre between them."""
+    centre = cloud.phi
+    for axis in cloud.space.axes:
+        centre = np.tensordot(axis.basis(np.zeros(1))[0], centre, axes=(0, 0))
+    return max(float(np.abs(centre) ** 2), float(cloud.density().max())) / cloud.frame.B
+
+
+def virial(setup: Setup, seen: Moments) -> float | None:
+    """The worst of |2 K_j - 2 P_j + E_int| over the trapped directions, relative to the energy."""
+    trapped = setup.omega > 0
+    if not trapped.any():
+        return None
+    mass = HBAR / setup.q
+    potential = 0.5 * mass * (setup.omega * seen.width) ** 2
+    off = np.abs(2 * seen.kinetic - 2 * potential + seen.interaction)[trapped]
+    return float(off.max() / seen.internal) if seen.internal > 0 else float(off.max() / seen.kinetic.sum())
+
+
+@dataclass(frozen=True)
+class Spent:
+    """Pairs and wall-clock seconds."""
+
+    ground_pairs: float
+    ground_seconds: float
+    march_seconds: float
+    seconds: float
+    recorder_pairs: float
+
+
+def summarise(
+    setup: Setup,
+    *,
+    status: str,
+    ground: Ground,
+    state: State,
+    track: Track,
+    law: ScalingLaw | None,
+    spent: Spent,
+    continuity: float | None,
+    notices: Sequence[Notice],
+) -> Summary:
+    """All figures of a run, complete or not."""
+    plan, timeline = setup.plan, setup.timeline
+    mass = plan.atoms.mass
+    model = law.model if law else ""
+    ends = _stage_ends(track, timeline.stage_times, state.cloud.time)
+    stages = tuple(
+        StageEnd(
+            name=stage.name, kind=stage.kind, start_ms=1e3 * start, duration_ms=1e3 * stage.duration,
+            end=None if index is None else moment_of(track, index, mass=mass, law_model=model),
+        )
+        for stage, (start, _), index in zip(plan.sequence, timeline.stage_times, ends, strict=True)
+    )  # fmt: skip
+    end: Moment | None = moment_of(track, -1, mass=mass, law_model=model) if plan.sequence else None
+    drift = energy_drift(track, setup.legs)
+    error = trust(
+        state.books, residual=ground.residual or 0.0, energy_drift=drift, centre_off=_centre_off(setup, state, track)
+    )
+    return Summary(
+        title=plan.title or plan.name,
+        status=status,
+        key=plan.key,
+        march_key=plan.march_key,
+        version=trapsim.__version__,
+        ground=ground,
+        stages=stages,
+        end=end,
+        numerics=Numerics(
+            axes=tuple(setup.space.words()),
+            points=tuple(setup.space.points_per_direction()),
+            legs=_leg_spaces(setup),
+            ground=Effort(spent.ground_pairs, spent.ground_seconds),
+            march=None if not setup.legs else MarchEffort(
+                state.books.steps, state.books.pairs + spent.recorder_pairs, spent.march_seconds
+            ),
+            seconds=spent.seconds,
+            norm_drift=float(track["norm"][-1] - track["norm"][0]),
+            energy_drift=drift,
+            continuity=continuity,
+            error=ErrorEstimate(error.width, error.rate, 1e6 * error.centre),
+        ),
+        warnings=tuple(notices),
+    )  # fmt: skip
+
+
+def _leg_spaces(setup: Setup) -> tuple[LegSpace, ...]:
+    return tuple(
+        LegSpace(
+            leg.name, 1e3 * leg.start, 1e3 * leg.stop, tuple(leg.space.words()),
+            tuple(leg.space.points_per_direction()), setup.why,
+        )
+        for leg in setup.legs
+    )  # fmt: skip
+
+
+def _stage_ends(track: Track, times: Sequence[tuple[float, float]], now: float) -> list[int | None]:
+    """Where in the track each stage ends; None for a stage that was not finished."""
+    out: list[int | None] = []
+    for index, (_, stop) in enumerate(times):
+        there = np.nonzero((track["stage"] == index) & (track.time == stop))[0]
+        out.append(int(there[-1]) if len(there) and now >= stop else None)
+    return out
+
+
+def energy_drift(track: Track, legs: Sequence[Leg]) -> float | None:
+    """The worst relative change of the internal energy over stretches in which nothing changes in time."""
+    energy = np.nansum(track["kinetic"], axis=1) + track["trap"] + track["interaction"]
+    worst = None
+    for leg in legs:
+        inside = (track["stage"] == leg.stage) & (track.time > leg.start) & (track.time <= leg.stop)
+        if leg.interval.steady and inside.sum() > 1:
+            values = energy[inside]
+            change = float(np.max(np.abs(values - values[0])) / np.abs(values).max())
+            worst = change if worst is None else max(worst, change)
+    return worst
+
+
+def _centre_off(setup: Setup, state: State, track: Track) -> float:
+    """How far the centre is from the classical path where the last finished leg ended, m.
+
+    The path is exact for everything that is exactly quadratic (Kohn's theorem), whatever the interaction.
+    """
+    finished = state.leg if state.law is None else state.leg - 1
+    if finished < 1 or finished > len(setup.timeline.path):
+        return 0.0
+    where = np.nonzero(track.time == setup.legs[finished - 1].stop)[0]
+    if not len(where):
+        return 0.0
+    here = track["centre"][where[-1]] + np.array(setup.timeline.origin)
+    return float(np.abs(here - setup.timeline.path[finished - 1][:3]).max())
+
+
+def wave_function(cloud: Cloud, origin: Array) -> WaveFunction:
+    """A cloud as it is kept in a file, positions counted from the origin."""
+    axes = tuple(AxisRecord(a.kind, a.covers, a.points, a.weights) for a in cloud.space.axes)
+    frame = cloud.frame
+    return WaveFunction(
+        cloud.time, np.array(cloud.phi), axes, frame.b, frame.bdot, frame.X - np.asarray(origin), frame.Xdot
+    )

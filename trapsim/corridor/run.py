@@ -1,0 +1,312 @@
+"""The corridor: plan in, finished folder out.
+
+text -> plan -> setup -> ground state -> march through the legs -> track and columns -> folder. Figures are drawn from the
+finished folder by whoever wants them.
+"""
+
+from __future__ import annotations
+
+import logging
+import time
+from collections.abc import Callable
+from contextlib import ExitStack
+from dataclasses import dataclass
+from pathlib import Path
+from typing import Any, Protocol
+
+from trapsim.cloud.cloud import Cloud
+from trapsim.corridor import folder as place
+from trapsim.corridor.findings import Spent, ground_figures, summarise, wave_function
+from trapsim.errors import Interrupted, Notice, PhysicsRefused
+from trapsim.estimate.law import ScalingLaw, scaling_law
+from trapsim.estimate.validity import FINE, validity
+from trapsim.evolve.continuity import continuity
+from trapsim.evolve.march import Leg, State, Tick, march
+from trapsim.evolve.relax import Relaxed, relax
+from trapsim.plan.plan import Plan
+from trapsim.prepare.setup import Setup, prepare
+from trapsim.record.recorder import Recorder
+from trapsim.record.series import WaveFunction
+from trapsim.record.store import RUN_FILE, Contents, read_run, write_results
+from trapsim.record.summary import Ground, Run
+
+log = logging.getLogger(__name__)
+
+#: a checkpoint is due when this many times what the last one took has passed, but not more often than FIRST seconds
+PATIENCE = 50.0
+FIRST = 2.0
+#: with imaginary time, residuals below this would take thousands of pairs
+IMAGINARY_RESIDUAL = 1e-6
+
+
+class Progress(Protocol):
+    """Who is told how far a run is."""
+
+    def begin(self, total: float) -> None: ...
+
+    def at(self, time: float, stage: str) -> None: ...
+
+    def end(self) -> None: ...
+
+
+class Silent:
+    """Nobody is told."""
+
+    def begin(self, total: float) -> None:
+        pass
+
+    def at(self, time: float, stage: str) -> None:
+        pass
+
+    def end(self) -> None:
+        pass
+
+
+def run(
+    plan: Plan,
+    out: str | Path | None = None,
+    *,
+    progress: Progress | None = None,
+    stop: Callable[[], bool] = lambda: False,
+    force: bool = False,
+) -> Run:
+    """Play a plan: relax the cloud, march through the sequence, keep what was seen.
+
+    Parameters
+    ----------
+    plan : Plan
+    out : path, optional
+        The result folder; without one everything stays in memory. A finished result of the same plan is opened again,
+        an interrupted one taken up where it was left.
+    progress : Progress, optional
+    stop : callable, optional
+        Asked after every step; when it says True the state is saved and the run stops.
+    force : bool
+        Throw away what is in the folder first.
+
+    Returns
+    -------
+    Run
+
+    Raises
+    ------
+    PlanError
+        When the plan cannot be prepared, or the folder holds another plan's result.
+    PhysicsRefused
+        On collapse, when the ground state does not converge, or when a guard stops the march.
+    Interrupted
+        When `stop` said so; a folder then holds what was done so far.
+    FileTrouble
+        When the folder cannot be read or written.
+    """
+    setup = prepare(plan)
+    if out is None:
+        return _Corridor(setup, None, progress or Silent(), stop).walk()
+    folder = Path(out)
+    with place.locked(folder):
+        if force:
+            place.clear(folder)
+        place.claim(folder, plan)
+        if (folder / RUN_FILE).exists() and not (folder / place.CHECKPOINT).exists():
+            return open_run(folder, plan=plan)
+        return _Corridor(setup, folder, progress or Silent(), stop).walk()
+
+
+def open_run(folder: str | Path, *, plan: Plan | None = None) -> Run:
+    """A finished run, from its folder.
+
+    Raises
+    ------
+    FileTrouble
+        When there is no result in it, or it is damaged.
+    """
+    kept = read_run(folder)
+    return Run(
+        plan if plan is not None else kept.plan, kept.summary, kept.track, kept.columns, {}, kept.final, Path(folder)
+    )
+
+
+@dataclass
+class _Clock:
+    """Wall-clock seconds of this run, earlier attempts included."""
+
+    before: float = 0.0
+
+    def __post_init__(self) -> None:
+        self.start = time.perf_counter()
+
+    def seconds(self) -> float:
+        return self.before + time.perf_counter() - self.start
+
+
+class _Corridor:
+    """One walk through the corridor, with or without a folder."""
+
+    def __init__(self, setup: Setup, folder: Path | None, progress: Progress, stop: Callable[[], bool]) -> None:
+        self.setup = setup
+        self.folder = folder
+        self.progress = progress
+        self.stop = stop
+        self.clock = _Clock()
+        self.law = scaling_law(setup)
+        plan, timeline = setup.plan, setup.timeline
+        self.recorder = Recorder(
+            origin=timeline.origin, atoms=plan.atoms.number, duration=plan.duration, released=timeline.released,
+            law=self.law.at if self.law else None, stage_names=tuple(s.name for s in plan.sequence),
+        )  # fmt: skip
+        self.march_seconds = 0.0
+        self._probed = -1
+        self.next_save = time.perf_counter() + FIRST
+
+    def walk(self) -> Run:
+        state, self.ground = self._begin()
+        with ExitStack() as stack:
+            self.progress.begin(self.setup.plan.duration)
+            stack.callback(self.progress.end)
+            try:
+                state = self._march(state)
+            except PhysicsRefused as refused:
+                self._finish(self._last, "stopped", extra=(Notice("stopped", str(refused)),))
+                raise
+        return self._finish(state, "complete")
+
+    # the ground state
+
+    def _begin(self) -> tuple[State, dict[str, Any]]:
+        spaces = [self.setup.space, *(leg.space for leg in self.setup.legs)]
+        kept = place.load(self.folder, spaces) if self.folder else None
+        if kept is not None:
+            state, heard, ground, seconds = kept
+            self.recorder.restore(heard)
+            self.clock.before = seconds
+            self.march_seconds = ground["march_seconds"]
+            self._probed = state.leg
+            self._last = state
+            return state, ground
+        return self._relax()
+
+    def _relax(self) -> tuple[State, dict[str, Any]]:
+        setup = self.setup
+        began = time.perf_counter()
+        relaxed = ground_state(setup)
+        cloud = Cloud(setup.space, setup.space.array(relaxed.u), setup.frame(), 0.0, setup.q)
+        seen = self.recorder.begin(cloud, setup.timeline.initial)
+        figures = ground_figures(setup, relaxed, cloud, seen, self.law)
+        ground = {"figures": figures.as_dict(), "pairs": relaxed.pairs, "seconds": time.perf_counter() - began,
+                  "march_seconds": 0.0, "continuity": None}
+        state = State(cloud, notices=self._notices())
+        self._last = state
+        self._save(state, ground)
+        return state, ground
+
+    def _notices(self) -> tuple[Notice, ...]:
+        card = validity(self.setup, self.law)
+        return (*self.setup.notices, *(Notice(c.code, c.text) for c in card if c.level != FINE))
+
+    # the march
+
+    def _march(self, state: State) -> State:
+        setup = self.setup
+        for tick in march(state, setup.legs, pace=setup.pace, guards=setup.guards):
+            state = self._hear(tick)
+        return state
+
+    def _hear(self, tick: Tick) -> State:
+        now = time.perf_counter()
+        state = tick.state
+        leg = self.setup.legs[state.leg - (tick.reason == "edge")]
+        self.recorder.listen(tick, leg)
+        self._probe(tick, leg)
+        self.progress.at(state.cloud.time, leg.name)
+        self._last = state
+        self.march_seconds = self.clock.seconds() - self.ground["seconds"]
+        if self.folder and now > self.next_save:
+            self._save(state, self.ground)
+        if self.stop():
+            self._interrupt(state)
+        return state
+
+    def _probe(self, tick: Tick, leg: Leg) -> None:
+        """Measure the continuity residual once per leg, after its first step; keep the worst."""
+        state = tick.state
+        if state.law is None or state.leg == self._probed:
+            return
+        self._probed = state.leg
+        residual = continuity(state.cloud, state.law, leg, state.stride.h)
+        self.ground["continuity"] = max(residual, self.ground["continuity"] or 0.0)
+
+    def _interrupt(self, state: State) -> None:
+        self.progress.end()
+        if self.folder:
+            self._save(state, self.ground)
+            raise Interrupted(
+                f"interrupted at {1e3 * state.cloud.time:.4g} ms of {1e3 * self.setup.plan.duration:.4g} ms; the state is "
+                f"saved in {self.folder}: the same command goes on from there"
+            )
+        raise Interrupted("interrupted; without a result folder nothing was kept")
+
+    def _save(self, state: State, ground: dict[str, Any]) -> None:
+        if self.folder is None:
+            return
+        began = time.perf_counter()
+        ground = {**ground, "march_seconds": self.march_seconds}
+        place.save(self.folder, state, self.recorder.arrays(), ground, self.clock.seconds())
+        took = time.perf_counter() - began
+        self.next_save = time.perf_counter() + max(FIRST, PATIENCE * took)
+        log.debug("checkpoint at %.6g s took %.3g s", state.cloud.time, took)
+
+    # the end
+
+    def _finish(self, state: State, status: str, extra: tuple[Notice, ...] = ()) -> Run:
+        setup, plan = self.setup, self.setup.plan
+        track = self.recorder.track()
+        spent = Spent(
+            ground_pairs=self.ground["pairs"], ground_seconds=self.ground["seconds"], march_seconds=self.march_seconds,
+            seconds=self.clock.seconds(), recorder_pairs=self.recorder.pairs,
+        )  # fmt: skip
+        summary = summarise(
+            setup, status=status, ground=Ground(**self.ground["figures"]), state=state, track=track, law=self.law,
+            spent=spent, continuity=self.ground["continuity"], notices=(*state.notices, *extra),
+        )  # fmt: skip
+        final: WaveFunction = wave_function(state.cloud, setup.timeline.origin)
+        columns = self.recorder.columns()
+        if self.folder:
+            contents = Contents(plan.source, plan.resolved(), summary, track, columns, final)
+            write_results(self.folder, contents)
+            if status == "complete":
+                (self.folder / place.CHECKPOINT).unlink(missing_ok=True)
+        return Run(plan, summary, track, columns, {}, final, self.folder)
+
+
+def ground_state(setup: Setup) -> Relaxed:
+    """Relax the cloud of a plan.
+
+    Raises
+    ------
+    PhysicsRefused
+        On collapse, or when it does not converge to a positive state.
+    """
+    hamiltonian = setup.hamiltonian()
+    method = setup.plan.numerics.ground
+    tolerance = setup.accuracy.residual
+    if method == "imaginary time":
+        tolerance = max(tolerance, IMAGINARY_RESIDUAL)
+    relaxed = relax(hamiltonian, setup.first_guess(hamiltonian), method=method, tolerance=tolerance)
+    if relaxed.collapsed:
+        raise PhysicsRefused.at(
+            "ground state", f"N a = {1e9 * setup.plan.atoms.number * setup.plan.atoms.scattering_length:.4g} nm",
+            "the attraction is too strong for this trap: the cloud collapses (in a round trap from N |a| / a_ho = 0.575)",
+            "take fewer atoms, a weaker attraction or a weaker trap",
+        )  # fmt: skip
+    if relaxed.signed:
+        raise PhysicsRefused.at(
+            "ground state", "a wave function that changes sign", "a ground state is positive",
+            "take numerics.accuracy = \"fine\" or give more numerics.points",
+        )  # fmt: skip
+    if not relaxed.converged:
+        raise PhysicsRefused.at(
+            "ground state", f"a residual of {relaxed.residual:.1e} after {relaxed.pairs:.0f} transform pairs",
+            f"it must fall below {tolerance:.0e}",
+            "try the other numerics.ground, or look at numerics.extent and numerics.points",
+        )  # fmt: skip
+    return relaxed

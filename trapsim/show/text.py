@@ -1,0 +1,201 @@
+"""The summary as plain text: what the terminal shows at the end of a run, and what can be read aloud."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Sequence
+from textwrap import wrap
+
+from trapsim.record.summary import Ground, Law, Moment, Numerics, StageEnd, Summary
+from trapsim.show.numbers import MISSING, brief, figures, four, percent, with_error
+
+SAFETY = (
+    "This is a calculation, not a permit. Before you use a pulse, power, current or field from it, check it against "
+    "the limits and interlocks of your equipment and the safety rules of your laboratory (lasers, coils, high "
+    "voltage, vacuum). trapsim controls no hardware and does not know your limits."
+)
+CONVENTIONS = (
+    "Half-width: root mean square, along one direction. Velocity: of the centre of mass. Positions count from the "
+    "origin, where the cloud's centre rested at the start. Energies are per atom. Expansion energy: "
+    "m (velocity spread)^2 / k_B of one direction, the centre's motion taken out."
+)
+_LINE = 100
+_NAME = 26
+_CELL = 22
+_STATUS = {
+    "complete": "complete",
+    "interrupted": "interrupted: the state is saved, the same command goes on from there",
+    "stopped": "stopped before the end of the sequence",
+}
+
+
+def summary_text(summary: Summary) -> str:
+    """The whole summary, four significant figures, errors where they are known.
+
+    Parameters
+    ----------
+    summary : Summary
+
+    Returns
+    -------
+    str
+        Lines of at most about a hundred characters, ending with a newline.
+    """
+    head = summary.title or "Untitled plan"
+    lines = [head, "=" * len(head), f"{_STATUS.get(summary.status, summary.status)}", ""]
+    lines += _ground(summary.ground)
+    if summary.stages:
+        lines += ["", *_stages(summary.stages)]
+    if summary.end is not None:
+        lines += ["", *_end(summary)]
+    lines += ["", *_numerics(summary.numerics)]
+    if summary.warnings:
+        lines += ["", "Warnings"]
+        for notice in summary.warnings:
+            lines += wrap(notice.text, _LINE, initial_indent="  ! ", subsequent_indent="    ")
+    lines += ["", f"trapsim {summary.version}, key {summary.key}, march {summary.march_key}"]
+    lines += ["", *wrap(CONVENTIONS, _LINE), "", *wrap(SAFETY, _LINE), ""]
+    return "\n".join(lines)
+
+
+def _row(name: str, cells: Iterable[str]) -> str:
+    return f"  {name:<{_NAME}}" + "".join(f"{cell:<{_CELL}}" for cell in cells).rstrip()
+
+
+def _ground(ground: Ground) -> list[str]:
+    """The cloud at rest."""
+    shares = (("kinetic", ground.kinetic_hz), ("trap", ground.trap_hz), ("interaction", ground.interaction_hz))
+    energy = f"{four(ground.energy_hz)} Hz: " + ", ".join(f"{name} {four(value)}" for name, value in shares)
+    lines = ["The cloud at rest", _row("origin (um)", _along(ground.origin_um))]
+    if any(width is not None for width in ground.width_um):
+        lines.append(_row("half-width (um)", _along(ground.width_um)))
+    if any(radius is not None for radius in ground.thomas_fermi_radius_um):
+        lines.append(_row("Thomas-Fermi radius (um)", _along(ground.thomas_fermi_radius_um)))
+    lines += [
+        _row("chemical potential / h", [f"{four(ground.chemical_potential_hz)} Hz"]),
+        _row("energy / h", [energy]),
+        _row("peak density", [f"{four(ground.peak_density_per_um3)} atoms per um^3"]),
+    ]
+    if ground.healing_length_um is not None:
+        lines.append(_row("healing length", [f"{four(ground.healing_length_um)} um"]))
+    if ground.gas_parameter is not None:
+        lines.append(_row("gas parameter n a^3", [four(ground.gas_parameter)]))
+    lines.append(_row("residual", [figures(ground.residual, 2)]))
+    lines.append(_row("virial residual", [figures(ground.virial, 2)]))
+    return lines
+
+
+def _along(values: Sequence[float | None]) -> list[str]:
+    return [f"{name} {_small(value)}" for name, value in zip("xyz", values, strict=True)]
+
+
+def _small(value: float | None, *, nothing: float = 1e-6) -> str:
+    """Four figures; rounding noise is written as 0."""
+    return "0" if value is not None and abs(value) < nothing else four(value)
+
+
+def _stages(stages: Sequence[StageEnd]) -> list[str]:
+    """Each stage with the cloud's half-widths and centre at its end."""
+    lines = ["The sequence, each stage with the cloud at its end"]
+    for number, one in enumerate(stages, start=1):
+        stop = one.start_ms + one.duration_ms
+        span = f"{brief(one.start_ms)} to {brief(stop)} ms" if one.duration_ms else f"at {brief(one.start_ms)} ms"
+        kind = "" if one.kind == one.name else f" ({one.kind})"
+        lines.append(f"  {number}. {one.name}{kind}, {span}")
+        if one.end is None:
+            lines.append("     not reached")
+            continue
+        lines.append(_row("   half-width (um)", _along(one.end.width_um)))
+        lines.append(_row("   centre (um)", _along(one.end.centre_um)))
+        lines.append(_row("   velocity (mm/s)", _along(one.end.velocity_mm_per_s)))
+    return lines
+
+
+def _end(summary: Summary) -> list[str]:
+    """The cloud at the end, a column per direction, with errors and the law beside it."""
+    end, error = summary.end, summary.numerics.error
+    assert end is not None
+    flight = f", {brief(end.flight_ms)} ms of flight" if end.flight_ms is not None else ""
+    lines = [
+        f"The cloud at the end: {brief(end.time_ms)} ms after the start{flight}",
+        _row("", ["along x", "along y", "along z"]),
+        _row("half-width (um)", _with_errors(end.width_um, relative=error.width_relative)),
+        *_beside(end.law, "width_um", end.width_um),
+        _row("expansion rate (mm/s)", _with_errors(end.expansion_rate_mm_per_s, relative=error.rate_relative)),
+        *_beside(end.law, "expansion_rate_mm_per_s", end.expansion_rate_mm_per_s),
+        _row("centre (um)", _with_errors(end.centre_um, absolute=error.centre_um)),
+        _row("velocity (mm/s)", [_small(one) for one in end.velocity_mm_per_s]),
+        _row("velocity spread (mm/s)", [four(one) for one in end.velocity_spread_mm_per_s]),
+        _row("expansion energy (nK)", [four(one) for one in end.expansion_energy_nk]),
+    ]
+    return lines + _totals(end)
+
+
+def _totals(end: Moment) -> list[str]:
+    ratio = end.aspect_ratio
+    ratios = ", ".join(f"{a}:{b} {four(ratio[a + b])}" for a, b in ("xy", "xz", "yz") if ratio[a + b] is not None)
+    energies = (
+        ("internal kinetic", end.internal_kinetic_nk),
+        ("trap", end.trap_nk),
+        ("interaction", end.interaction_nk),
+        ("centre of mass", end.centre_kinetic_nk),
+    )
+    lines = [_row("atoms", [brief(end.atoms)])]
+    if ratios:
+        lines.append(_row("aspect ratios", [ratios]))
+    parts = ", ".join(f"{name} {_small(value)}" for name, value in energies if value is not None)
+    lines.append(_row("energy / k_B (nK)", [parts or MISSING]))
+    return lines
+
+
+def _with_errors(
+    values: Sequence[float | None], *, relative: float | None = None, absolute: float | None = None
+) -> list[str]:
+    cells = []
+    for value in values:
+        error = absolute if relative is None or value is None else abs(value) * relative
+        cells.append("0" if value is not None and abs(value) < 1e-6 and not error else with_error(value, error))
+    return cells
+
+
+def _beside(law: Law | None, name: str, full: Sequence[float | None]) -> list[str]:
+    """What the instant model says, and how far that is from the full calculation."""
+    if law is None:
+        return []
+    cells = []
+    for said, value in zip(getattr(law, name), full, strict=True):
+        gap = f" ({percent(said / value - 1)})" if said is not None and value else ""
+        cells.append(four(said) + gap)
+    return [_row(f"   {law.model}", cells)]
+
+
+def _numerics(numerics: Numerics) -> list[str]:
+    """Grid, effort and the books that were kept."""
+    error = numerics.error
+    lines = ["How it was computed"]
+    grid = (f"{d} {kind} {n}" for d, kind, n in zip("xyz", numerics.axes, numerics.points, strict=True))
+    lines.append(_row("axes and points", [", ".join(grid)]))
+    if len(numerics.legs) > 1:
+        for leg in numerics.legs:
+            grid = ", ".join(f"{d} {kind} {n}" for d, kind, n in zip("xyz", leg.axes, leg.points, strict=True))
+            why = f" ({leg.reason})" if leg.reason else ""
+            lines.append(_row(f"   {leg.name}, {brief(leg.start_ms)} to {brief(leg.stop_ms)} ms", [grid + why]))
+    ground, march = numerics.ground, numerics.march
+    lines.append(_row("ground state", [f"{brief(ground.pairs)} transform pairs, {_seconds(ground.seconds)}"]))
+    if march is not None:
+        cost = f"{march.steps} steps, {brief(march.pairs)} transform pairs, {_seconds(march.seconds)}"
+        lines.append(_row("march", [cost]))
+    lines.append(_row("whole run", [_seconds(numerics.seconds)]))
+    books = (
+        ("norm drift", numerics.norm_drift), ("energy drift", numerics.energy_drift),
+        ("continuity residual", numerics.continuity),
+        ("relative error of widths", error.width_relative), ("relative error of rates", error.rate_relative),
+        ("error of the centre (um)", error.centre_um),
+    )  # fmt: skip
+    lines += [_row(name, [figures(value, 2)]) for name, value in books if value is not None]
+    if march is not None and error.width_relative is None:
+        lines.append(_row("error of widths", ["not estimated"]))
+    return lines
+
+
+def _seconds(value: float | None) -> str:
+    return f"{figures(value, 2)} s"
