@@ -35,6 +35,8 @@ def test_a_key_is_twelve_hex_digits():
     {"atoms.number": 100000},
     {"atoms.number": "1.0(3)e5"},
     {"atoms.species": "87Rb"},
+    {"atoms.species": None, "atoms.mass": "86.90918053 u"},
+    {"atoms.scattering_length": None},
     {"trap.dipole.frequency": ["0.02 kHz", "120000 mHz", "0.12 kHz"]},
     {"sequence.hold.duration": "2000 us"},
     {"sequence.release.pictures": ["5 ms", "0.01 s", "20000 us", "5 ms"]},
@@ -202,6 +204,10 @@ def test_the_schema_accepts_a_good_plan(text):
 def test_the_schema_refuses_a_broken_plan(old, new):
     assert FULL.count(old) == 1
     assert not fits(tomllib.loads(FULL.replace(old, new)), schema())
+
+
+def test_the_schema_wants_atoms():
+    assert not fits({"title": "nothing else"}, schema())
 
 
 def test_every_entry_of_every_class_stands_in_the_schema():

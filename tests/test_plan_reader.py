@@ -52,7 +52,7 @@ def test_parts_hold_si_numbers_and_know_the_mass(plan):
     dipole, lens, levitation = plan.trap.values()
     assert list(plan.trap) == ["dipole", "lens", "levitation"]
     assert isinstance(dipole, Harmonic) and isinstance(levitation, Gradient)
-    assert dipole.frequency == pytest.approx((TWO_PI * 20, TWO_PI * 120, TWO_PI * 120), rel=4e-16)
+    assert dipole.frequency == pytest.approx((TWO_PI * 20, TWO_PI * 120, TWO_PI * 120), rel=4e-16, abs=0)
     assert (dipole.centre, dipole.at, lens.at, lens.strength) == ("held", "centre", "cloud", 0.0)
     assert levitation.acceleration == (0.0, 0.0, 9.80665)
     assert {part.mass for part in plan.trap.values()} == {plan.atoms.mass}
@@ -62,7 +62,7 @@ def test_parts_hold_si_numbers_and_know_the_mass(plan):
 def test_the_sequence_is_what_was_written(plan):
     assert [type(s) for s in plan.sequence] == [Hold, Ramp, Kick, Release, Pulse, Hold]
     assert [s.duration for s in plan.sequence] == [0.002, 0.005, 0.0, 0.02, 0.003, 0.02]
-    assert plan.duration == pytest.approx(0.05, rel=1e-15)
+    assert plan.duration == pytest.approx(0.05, rel=1e-15, abs=0)
     assert plan.sequence[2].velocity == (0.0, 0.0, 0.0032)
 
 
@@ -73,11 +73,11 @@ def test_stages_without_a_name_are_called_by_their_kind(plan):
 def test_changes_take_what_they_do_not_say_from_their_stage(plan):
     to = plan.sequence[1].to
     slow, short, late = to["dipole.frequency"], to["levitation.strength"], to["atoms.scattering_length"]
-    assert slow.value == pytest.approx((TWO_PI * 10, TWO_PI * 120, TWO_PI * 120), rel=4e-16)
+    assert slow.value == pytest.approx((TWO_PI * 10, TWO_PI * 120, TWO_PI * 120), rel=4e-16, abs=0)
     assert (slow.delay, slow.duration, slow.shape) == (0.0, 0.005, "smooth")
     assert (short.value, short.delay, short.duration, short.shape) == (0.5, 0.001, 0.002, "linear")
-    assert late.value == pytest.approx(50 * 5.29177210544e-11, rel=4e-16)
-    assert (late.delay, late.duration, late.shape) == (0.002, pytest.approx(0.003, rel=1e-14), "smooth")
+    assert late.value == pytest.approx(50 * 5.29177210544e-11, rel=4e-16, abs=0)
+    assert (late.delay, late.duration, late.shape) == (0.002, pytest.approx(0.003, rel=1e-14, abs=0), "smooth")
 
 
 def test_exponential_changes_inherit_the_time_constant():
@@ -104,6 +104,13 @@ def test_a_pulse_switches_on_no_part_that_is_told_otherwise_or_is_on_already():
     assert list(on.to) == ["dipole.frequency"]
 
 
+def test_a_pulse_after_the_release_switches_the_trap_on_again():
+    release = SHORT + '[[sequence]]\nstage = "release"\nduration = "1 ms"\n'
+    pulse = stage('stage = "pulse"\nduration = "1 ms"\nto = { "dipole.frequency" = ["2 Hz", "2 Hz", "2 Hz"] }',
+                  before=release)
+    assert pulse.to["dipole.strength"].value == 1.0
+
+
 def test_a_late_pulse_switches_its_part_on_late():
     lens = SHORT + '[trap.lens]\nkind = "harmonic"\nfrequency = ["1 Hz", "1 Hz", "1 Hz"]\nstrength = 0\n'
     late = stage('stage = "pulse"\nduration = "3 ms"\nto."lens.frequency" = { value = ["2 Hz", "2 Hz", "2 Hz"], '
@@ -121,6 +128,7 @@ def test_an_exponential_switch_off_ends_when_nothing_is_left(plan):
     off = plan.sequence[3].switch_off
     assert (off.shape, off.time_constant) == ("exponential", 3e-5)
     assert math.exp(-off.duration / off.time_constant) < 1e-16  # below the rounding of a double
+    assert off.duration < 0.02  # and long before the end of the flight
     slow = stage('stage = "release"\nduration = "1 ms"\nswitch_off = { shape = "exponential", time_constant = "1 ms" }')
     assert slow.switch_off.duration == 0.001
 
@@ -143,7 +151,7 @@ def test_uncertainties_stand_beside_the_values_by_path(plan):
         "trap.dipole.frequency[1]": TWO_PI * 2,
         "sequence.ramp.to.levitation.strength.value": 0.1,
         "sequence.kick.velocity[2]": 1e-4,
-    }, rel=1e-15)
+    }, rel=1e-15, abs=0)
 
 
 def test_a_short_change_keeps_a_short_path_for_its_uncertainty():

@@ -8,7 +8,7 @@ import re
 import pytest
 
 import invented_run
-from trapsim.record.summary import ErrorEstimate, StageEnd, Summary
+from trapsim.record.summary import ErrorEstimate, LegSpace, StageEnd, Summary
 from trapsim.show.numbers import brief, figures, four, nice_length, percent, with_error
 from trapsim.show.text import summary_text
 
@@ -27,7 +27,7 @@ def row(text: str, name: str, *, after: str = "") -> str:
     ("value", "said"),
     [
         (25.0612, "25.06"), (0.0123456, "0.01235"), (137249.0, "137200"), (1e5, "100000"), (-1961.33, "-1961"),
-        (9.9996, "10.00"), (0.0, "0"), (None, "-"), (float("nan"), "-"), (2e-5, "0.00002000"), (3.14159e-9, "3.142e-9"),
+        (9.9996, "10.00"), (0.0, "0"), (None, "-"), (float("nan"), "-"), (2e-4, "0.0002000"), (3.14159e-9, "3.142e-9"),
         (6.02214e23, "6.022e23"), (99999.6, "100000"),
     ],
 )  # fmt: skip
@@ -37,7 +37,7 @@ def test_four_significant_figures(value: float | None, said: str) -> None:
 
 def test_a_setting_has_no_needless_zeros() -> None:
     assert [brief(one) for one in (20.0, 2.008, 100000.0, 0.05, None)] == ["20", "2.008", "100000", "0.05", "-"]
-    assert figures(4e-5, 2) == "0.000040"
+    assert figures(4e-5, 2) == "4e-5"
 
 
 @pytest.mark.parametrize(
@@ -45,7 +45,7 @@ def test_a_setting_has_no_needless_zeros() -> None:
     [
         (25.0612, 0.02, "25.06 +- 0.02"), (25.0612, 0.0004, "25.0612 +- 0.0004"), (25.0612, 3.0, "25.06 +- 3"),
         (-1961.33, 1e-4, "-1961.3300 +- 0.0001"), (25.0612, None, "25.06"), (25.0612, 0.0, "25.06"), (None, 0.1, "-"),
-        (0.0, 0.01, "0 +- 0.01"),
+        (0.0, 0.01, "0 +- 0.01"), (0.278108, 7e-6, "0.278108 +- 0.000007"), (80.0, 9e-13, "80.00"),
     ],
 )  # fmt: skip
 def test_a_number_has_the_digits_its_error_deserves(value: float | None, error: float | None, said: str) -> None:
@@ -94,6 +94,23 @@ def test_warnings_safety_and_conventions_are_always_said(summary: Summary) -> No
         assert said in flat
     assert "march 4b1e77a210" in flat and "1 of" not in flat
     assert max(len(line) for line in text.splitlines()) <= 110
+
+
+def test_the_grid_is_told_again_only_where_it_changes(summary: Summary) -> None:
+    first = LegSpace("hold", 0.0, 2.0, summary.numerics.axes, summary.numerics.points, "round about x")
+    same = dataclasses.replace(first, name="pulse", start_ms=2.0)
+    other = LegSpace("release", 3.0, 22.0, ("wave", "wave", "wave"), (64, 48, 48), "nothing is round")
+    numerics = dataclasses.replace(summary.numerics, legs=(first, same, other))
+    text = summary_text(dataclasses.replace(summary, numerics=numerics))
+    assert text.count("round about x") == 1 and "from 2 ms" not in text and text.count("y radial 48") == 1
+    assert re.search(r"from 3 ms, release +x wave 64, y wave 48, z wave 48\n", text)
+    assert "nothing is round" in text
+
+
+def test_a_long_name_of_a_law_keeps_its_distance(summary: Summary) -> None:
+    law = dataclasses.replace(summary.end.law, model="Thomas-Fermi scaling law")
+    text = summary_text(dataclasses.replace(summary, end=dataclasses.replace(summary.end, law=law)))
+    assert "Thomas-Fermi scaling law   4.705 (+2 %)" in text
 
 
 def test_a_cloud_at_rest_has_no_end(summary: Summary) -> None:

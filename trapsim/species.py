@@ -7,6 +7,7 @@ import difflib
 import re
 from collections.abc import Mapping
 from dataclasses import dataclass
+from fractions import Fraction
 from types import MappingProxyType
 
 from trapsim.constants import ATOMIC_MASS, BOHR_RADIUS
@@ -45,8 +46,13 @@ class Species:
 
 
 def _row(name: str, mass_u: float, length_a0: float | None, line_nm: float, *source: str) -> Species:
-    length = None if length_a0 is None else length_a0 * BOHR_RADIUS
-    return Species(name, mass_u * ATOMIC_MASS, length, line_nm * 1e-9, "; ".join((*source, _LINE)))
+    length = None if length_a0 is None else _times(length_a0, BOHR_RADIUS)
+    return Species(name, _times(mass_u, ATOMIC_MASS), length, _times(line_nm, 1e-9), "; ".join((*source, _LINE)))
+
+
+def _times(number: float, unit: float) -> float:
+    """The product as text with a unit would give it: the exact decimals, rounded once."""
+    return float(Fraction(repr(number)) * Fraction(repr(unit)))
 
 
 _TABLE = (

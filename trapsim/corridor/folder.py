@@ -40,7 +40,7 @@ def locked(folder: Path) -> Iterator[None]:
     FileTrouble
         When another run works in the folder, or it cannot be made.
     """
-    made = not folder.exists()
+    made = [p for p in (folder, *folder.parents) if not p.exists()]
     try:
         folder.mkdir(parents=True, exist_ok=True)
         handle = os.open(folder / ".lock", os.O_RDWR | os.O_CREAT, 0o644)
@@ -50,49 +50,66 @@ def locked(folder: Path) -> Iterator[None]:
             "choose another place with --out",
         ) from error  # fmt: skip
     try:
-        try:
-            fcntl.flock(handle, fcntl.LOCK_EX | fcntl.LOCK_NB)
-        except OSError as error:
-            raise FileTrouble.at(
-                str(folder), "another run is at work in it", "one run at a time per folder",
-                "wait for it, or choose another place with --out",
-            ) from error  # fmt: skip
+        fcntl.flock(handle, fcntl.LOCK_EX | fcntl.LOCK_NB)
+    except OSError as error:
+        os.close(handle)
+        raise FileTrouble.at(
+            str(folder), "another run is at work in it", "one run at a time per folder",
+            "wait for it, or choose another place with --out",
+        ) from error  # fmt: skip
+    try:
         yield
     finally:
-        os.close(handle)
         if {p.name for p in folder.iterdir()} <= {".lock"}:
             (folder / ".lock").unlink(missing_ok=True)
-            if made:
-                folder.rmdir()
+            for empty in made:
+                empty.rmdir()
+        os.close(handle)
 
 
 def claim(folder: Path, plan: Plan) -> None:
-    """Write whose folder it is, or make sure that it is this plan's.
+    """Make sure that a folder is empty or this plan's.
 
     Raises
     ------
     PlanError
         When it holds another plan's result; says what differs.
     """
-    path = folder / PLAN
-    if path.exists():
-        try:
-            other = json.loads(path.read_text())
-        except (OSError, ValueError) as error:
-            raise FileTrouble.at(str(path), str(error), "the file is damaged", "choose another place with --out, or --force") from error
-        lines = differences(other, plan.resolved())
-        if lines:
-            shown = "\n      ".join(lines[:12]) + ("\n      ..." if len(lines) > 12 else "")
-            raise PlanError.at(
-                str(folder), "a result of another plan; there / now:\n      " + shown, "one folder holds one plan's result",
-                "choose another place with --out, or --force to overwrite it",
-            )  # fmt: skip
-    elif any(p.name not in (".lock",) for p in folder.iterdir()):
+    lines = _differences(folder, plan)
+    if lines:
+        shown = "\n      ".join(lines[:12]) + ("\n      ..." if len(lines) > 12 else "")
+        raise PlanError.at(
+            str(folder), "a result of another plan; there / now:\n      " + shown, "one folder holds one plan's result",
+            "choose another place with --out, or --force to overwrite it",
+        )  # fmt: skip
+    if lines is None and any(p.name != ".lock" for p in folder.iterdir()):
         raise PlanError.at(
             str(folder), "a folder with other things in it", "results go into a folder of their own",
             "choose another place with --out",
         )  # fmt: skip
-    write_atomic(path, (json.dumps(plan.resolved(), indent=1) + "\n").encode())
+
+
+def belongs_to(folder: Path, plan: Plan) -> bool:
+    """Whether a folder is marked as this plan's."""
+    return _differences(folder, plan) == []
+
+
+def _differences(folder: Path, plan: Plan) -> list[str] | None:
+    """How the plan a folder is marked with differs from this one; None when it is not marked."""
+    path = folder / PLAN
+    if not path.exists():
+        return None
+    try:
+        return differences(json.loads(path.read_text()), plan.resolved())
+    except (OSError, ValueError) as error:
+        raise FileTrouble.at(
+            str(path), str(error), "the file is damaged", "choose another place with --out, or --force"
+        ) from error
+
+
+def mark(folder: Path, plan: Plan) -> None:
+    """Write whose folder it is."""
+    write_atomic(folder / PLAN, (json.dumps(plan.resolved(), indent=1) + "\n").encode())
 
 
 def clear(folder: Path) -> None:

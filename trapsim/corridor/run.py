@@ -107,9 +107,15 @@ def run(
         if force:
             place.clear(folder)
         place.claim(folder, plan)
-        if (folder / RUN_FILE).exists() and not (folder / place.CHECKPOINT).exists():
+        if is_finished(folder, plan):
             return open_run(folder, plan=plan)
         return _Corridor(setup, folder, progress or Silent(), stop).walk()
+
+
+def is_finished(folder: Path, plan: Plan) -> bool:
+    """Whether a folder holds the finished result of this very plan."""
+    done = (folder / RUN_FILE).exists() and not (folder / place.CHECKPOINT).exists()
+    return done and place.belongs_to(folder, plan)
 
 
 def open_run(folder: str | Path, *, plan: Plan | None = None) -> Run:
@@ -250,6 +256,7 @@ class _Corridor:
             return
         began = time.perf_counter()
         ground = {**ground, "march_seconds": self.march_seconds}
+        place.mark(self.folder, self.setup.plan)
         place.save(self.folder, state, self.recorder.arrays(), ground, self.clock.seconds())
         took = time.perf_counter() - began
         self.next_save = time.perf_counter() + max(FIRST, PATIENCE * took)

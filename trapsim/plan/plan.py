@@ -192,8 +192,7 @@ def _value(value: Any, about: Entry, target: Any) -> Any:
                 for path, change in value.items()}
     if about.kind == "target" or about.kind not in KINDS or isinstance(value, str):
         return list(value) if isinstance(value, tuple) else value
-    # adding zero turns -0.0 into 0.0: the same number must give the same key
-    plain = [v + 0.0 for v in value] if isinstance(value, tuple) else value + 0.0
+    plain = list(value) if isinstance(value, tuple) else value
     unit = KINDS[about.kind].si
     return {"value": plain, "unit": unit} if unit else plain
 

@@ -121,7 +121,7 @@ def _read(text: str, name: str, changes: Mapping[str, Any] | None, source: str) 
 
 def _tree(text: str, source: str) -> Tree:
     try:
-        tree = tomllib.loads(text.replace("\r\n", "\n"))
+        tree = tomllib.loads(text)
     except ValueError as trouble:  # also numbers with thousands of digits
         hint = "texts and quantities are quoted: \"20 Hz\"; a name stands once"
         raise PlanError.at(source, "", f"this is not TOML: {trouble}", hint) from None

@@ -12,7 +12,7 @@ from matplotlib.figure import Figure
 from trapsim.record.series import ColumnSeries
 from trapsim.record.summary import Summary
 from trapsim.show.look import DENSITY, INK, QUIET, RULE, SMALL, TYPE, WIDTH, dress, new_figure
-from trapsim.show.numbers import brief, figures, four, nice_length, signed
+from trapsim.show.numbers import brief, drawn, nice_length
 
 Array = np.ndarray
 #: The window shows all that is denser than this share of the peak of the side profile.
@@ -109,7 +109,7 @@ def draw_scale_bar(ax: Axes, window: Window) -> None:
 
 def _round(length: float) -> str:
     """A round length in plain digits."""
-    return brief(length)
+    return drawn(length, 1)
 
 
 def _edges(centres: Array) -> tuple[float, float]:
@@ -185,7 +185,7 @@ def _draw_profiles(above: Axes, beside: Axes, series: ColumnSeries, index: int) 
     beside.set_xlim(0, _peak(up) * 1.05)
     for ax, profile, spot, side in ((above, right, (0.99, 0.95), "right"), (beside, up, (0.5, -0.02), "center")):
         ax.axis("off")
-        text = f"{figures(float(profile.max()), 3)}/µm"
+        text = f"{drawn(float(profile.max()), 3)}/µm"
         ax.text(*spot, text, transform=ax.transAxes, ha=side, va="top", size=SMALL - 1, color=QUIET)
 
 
@@ -197,7 +197,7 @@ def _draw_density_scale(bar: Axes, peak: float) -> None:
     """A strip from nothing to the peak density."""
     bar.imshow(np.linspace(0, 1, 256)[None, :], cmap=DENSITY, aspect="auto", extent=(0, peak, 0, 1))
     bar.set(yticks=[], xticks=[0.0, 0.5 * peak, peak])
-    bar.set_xticklabels(["0", figures(0.5 * peak, 3), f"{figures(peak, 3)} atoms/µm²"])
+    bar.set_xticklabels(["0", drawn(0.5 * peak, 3), f"{drawn(peak, 3)} atoms/µm²"])
     bar.tick_params(labelsize=SMALL, colors=QUIET, labelcolor=INK)
     for side in bar.spines.values():
         side.set_color(RULE)
@@ -215,12 +215,12 @@ def _write_facts(
         lines += [("atoms", brief(end.atoms))]
     if end is None or index == -1:
         widths = zip("xyz", (end or summary.ground).width_um, strict=True)
-        lines += [(f"half-width {d}", f"{four(w)} µm") for d, w in widths if w]
+        lines += [(f"half-width {d}", f"{drawn(w)} µm") for d, w in widths if w]
     if end is not None and index == -1:
         centres = zip("xyz", end.centre_um, strict=True)
-        lines += [(f"centre {d}", f"{signed(_rounded(c))} µm") for d, c in centres if c is not None]
+        lines += [(f"centre {d}", f"{_rounded(c)} µm") for d, c in centres if c is not None]
     peaks = [(view, series.values[index].max() * 1e-12) for view, series in columns.items() if len(series)]
-    lines += [(f"densest along {view}", f"{figures(float(peak), 4)} /µm²") for view, peak in peaks]
+    lines += [(f"densest along {view}", f"{drawn(float(peak))} /µm²") for view, peak in peaks]
     y = 0.98
     for name, value in lines:
         ax.text(0.0, y, name, size=TYPE, color=QUIET, va="top")
@@ -235,7 +235,7 @@ def _write_facts(
 
 def _rounded(value: float) -> str:
     """A centre in um; less than a nanometre is written as nothing."""
-    return four(value) if abs(value) >= 1e-3 else "0"
+    return drawn(value) if abs(value) >= 1e-3 else "0"
 
 
 def strip_figure(
@@ -267,7 +267,7 @@ def strip_figure(
             ax = figure.add_axes((corner[0] / WIDTH, corner[1] / height, side / WIDTH, side / height))
             draw_column(ax, series, index, window)
             ax.set(xticks=[], yticks=[])
-            peak = figures(float(series.values[index].max()) * 1e-12, 3)
+            peak = drawn(float(series.values[index].max()) * 1e-12, 3)
             ax.text(
                 0.97, 0.97, f"{peak} /µm²", transform=ax.transAxes, ha="right", va="top", size=SMALL - 0.5, color=QUIET
             )

@@ -14,7 +14,7 @@ from trapsim.record.series import DIRECTIONS, Track
 from trapsim.record.summary import StageEnd, Summary
 from trapsim.show.curves import alike, apart, smooth
 from trapsim.show.look import BAND, INK, LOOKS, QUIET, SMALL, TYPE, dress, new_figure
-from trapsim.show.numbers import brief, four, percent, signed
+from trapsim.show.numbers import brief, drawn, percent, signed
 
 Array = np.ndarray
 MARKS = 9
@@ -218,7 +218,7 @@ def _write_ends(ax: Axes, ends: Sequence[_End], unit: str, *, nothing: float = 0
     gap = line * (2 if any(one.beside for one in ends) else 1)
     places = apart(np.array([(one.value - low) / (high - low) for one in ends]), gap, low=0.02, high=0.96)
     for one, place in zip(ends, places, strict=True):
-        number = signed(four(one.value)) if abs(one.value) > nothing else "0"
+        number = drawn(one.value) if abs(one.value) > nothing else "0"
         ax.text(
             1.012, place, f"{one.names}  {number} {unit}", transform=ax.transAxes, color=one.colour, size=TYPE,
             weight="bold", va="center",

@@ -14,14 +14,14 @@ def four(value: float | None) -> str:
 
 
 def figures(value: float | None, digits: int) -> str:
-    """So many significant figures in plain digits; below 0.00001, and from ten million on, a power of ten."""
+    """So many significant figures in plain digits; below 0.0001, and from ten million on, a power of ten."""
     if value is None or not math.isfinite(value):
         return MISSING
     if value == 0:
         return "0"
     rounded = Decimal(f"{value:.{digits - 1}e}")
     power = rounded.adjusted()
-    if -6 < power < 7:
+    if -5 < power < 7:
         return f"{rounded.quantize(Decimal(1).scaleb(power - digits + 1)):f}" if power < digits else f"{rounded:.0f}"
     mantissa = rounded.scaleb(-power).normalize()
     return f"{mantissa:f}e{power}"
@@ -36,13 +36,15 @@ def brief(value: float | None) -> str:
 def with_error(value: float | None, error: float | None) -> str:
     """A number and its error, "25.06 +- 0.01"; the number alone where the error is unknown.
 
-    The number has the digits its error deserves: at least two significant figures and at most nine.
+    The number has the digits its error deserves; an error beyond its ninth figure is not worth writing.
     """
     if value is None or error is None or not math.isfinite(value) or not (math.isfinite(error) and error > 0):
         return four(value)
     size = math.floor(math.log10(abs(value))) if value else math.floor(math.log10(error))
-    digits = min(9, max(2, 1 + size - math.floor(math.log10(error))))
-    return f"{figures(value, max(digits, 4))} +- {figures(error, 1)}"
+    digits = 1 + size - math.floor(math.log10(error))
+    if digits > 99:
+        return four(value)
+    return f"{figures(value, max(digits, 4))} +- {Decimal(f'{error:.0e}'):f}"
 
 
 def percent(part: float) -> str:
@@ -50,6 +52,12 @@ def percent(part: float) -> str:
     if round(part * 1e4) == 0:
         return "0 %"
     return f"{part * 100:+.0f} %" if abs(part) >= 0.0995 else f"{round(part * 100, 2):+.2g} %"
+
+
+def drawn(value: float | None, digits: int = 4) -> str:
+    """So many significant figures for a drawing: plain digits whatever the size, and the minus sign of print."""
+    text = figures(value, digits)
+    return signed(f"{Decimal(text):f}" if "e" in text else text)
 
 
 def signed(text: str) -> str:

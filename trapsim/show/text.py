@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Iterable, Sequence
 from textwrap import wrap
 
-from trapsim.record.summary import Ground, Law, Moment, Numerics, StageEnd, Summary
+from trapsim.record.summary import Ground, Law, LegSpace, Moment, Numerics, StageEnd, Summary
 from trapsim.show.numbers import MISSING, brief, figures, four, percent, with_error
 
 SAFETY = (
@@ -19,8 +19,10 @@ CONVENTIONS = (
     "m (velocity spread)^2 / k_B of one direction, the centre's motion taken out."
 )
 _LINE = 100
-_NAME = 26
+_NAME = 30
 _CELL = 22
+#: In lab units: less than this is rounding noise.
+_NOTHING = 1e-6
 _STATUS = {
     "complete": "complete",
     "interrupted": "interrupted: the state is saved, the same command goes on from there",
@@ -58,7 +60,7 @@ def summary_text(summary: Summary) -> str:
 
 
 def _row(name: str, cells: Iterable[str]) -> str:
-    return f"  {name:<{_NAME}}" + "".join(f"{cell:<{_CELL}}" for cell in cells).rstrip()
+    return f"  {name:<{_NAME - 1}} " + "".join(f"{cell:<{_CELL}}" for cell in cells).rstrip()
 
 
 def _ground(ground: Ground) -> list[str]:
@@ -88,9 +90,9 @@ def _along(values: Sequence[float | None]) -> list[str]:
     return [f"{name} {_small(value)}" for name, value in zip("xyz", values, strict=True)]
 
 
-def _small(value: float | None, *, nothing: float = 1e-6) -> str:
+def _small(value: float | None) -> str:
     """Four figures; rounding noise is written as 0."""
-    return "0" if value is not None and abs(value) < nothing else four(value)
+    return "0" if value is not None and abs(value) < _NOTHING else four(value)
 
 
 def _stages(stages: Sequence[StageEnd]) -> list[str]:
@@ -153,7 +155,8 @@ def _with_errors(
     cells = []
     for value in values:
         error = absolute if relative is None or value is None else abs(value) * relative
-        cells.append("0" if value is not None and abs(value) < 1e-6 and not error else with_error(value, error))
+        nothing = value is not None and abs(value) < _NOTHING and (error or 0.0) < _NOTHING
+        cells.append("0" if nothing else with_error(value, error))
     return cells
 
 
@@ -172,13 +175,15 @@ def _numerics(numerics: Numerics) -> list[str]:
     """Grid, effort and the books that were kept."""
     error = numerics.error
     lines = ["How it was computed"]
-    grid = (f"{d} {kind} {n}" for d, kind, n in zip("xyz", numerics.axes, numerics.points, strict=True))
-    lines.append(_row("axes and points", [", ".join(grid)]))
-    if len(numerics.legs) > 1:
-        for leg in numerics.legs:
-            grid = ", ".join(f"{d} {kind} {n}" for d, kind, n in zip("xyz", leg.axes, leg.points, strict=True))
-            why = f" ({leg.reason})" if leg.reason else ""
-            lines.append(_row(f"   {leg.name}, {brief(leg.start_ms)} to {brief(leg.stop_ms)} ms", [grid + why]))
+    lines.append(_row("axes and points", [_grid(numerics)]))
+    told: tuple[str, str] = (_grid(numerics), "")
+    for leg in numerics.legs:  # only what changes from leg to leg
+        grid, told_grid, told_why = _grid(leg), *told
+        if grid != told_grid:
+            lines.append(_row(f"   from {brief(leg.start_ms)} ms, {leg.name}", [grid]))
+        if leg.reason and leg.reason != told_why:
+            lines.append(_row("", [leg.reason]))
+        told = (grid, leg.reason)
     ground, march = numerics.ground, numerics.march
     lines.append(_row("ground state", [f"{brief(ground.pairs)} transform pairs, {_seconds(ground.seconds)}"]))
     if march is not None:
@@ -195,6 +200,10 @@ def _numerics(numerics: Numerics) -> list[str]:
     if march is not None and error.width_relative is None:
         lines.append(_row("error of widths", ["not estimated"]))
     return lines
+
+
+def _grid(space: Numerics | LegSpace) -> str:
+    return ", ".join(f"{d} {kind} {n}" for d, kind, n in zip("xyz", space.axes, space.points, strict=True))
 
 
 def _seconds(value: float | None) -> str:

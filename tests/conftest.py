@@ -1,0 +1,31 @@
+"""Shared by all tests: one thread for the mathematics, and one computation per plan."""
+
+from __future__ import annotations
+
+import os
+
+for _name in ("OMP_NUM_THREADS", "OPENBLAS_NUM_THREADS"):
+    os.environ[_name] = "1"
+
+from collections.abc import Callable  # noqa: E402
+
+import pytest  # noqa: E402
+
+import trapsim  # noqa: E402
+
+
+@pytest.fixture(scope="session")
+def solved() -> Callable[[trapsim.Plan], trapsim.Run]:
+    """The run of a plan; plans that lead to the same march are computed once in a session.
+
+    Give `numerics.threads = 1` in the plan: transforms of other tests may be running beside it. What comes back is
+    shared, so it is to be read and not changed.
+    """
+    runs: dict[str, trapsim.Run] = {}
+
+    def solve(plan: trapsim.Plan) -> trapsim.Run:
+        if plan.march_key not in runs:
+            runs[plan.march_key] = trapsim.run(plan)
+        return runs[plan.march_key]
+
+    return solve

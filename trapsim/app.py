@@ -1,0 +1,209 @@
+"""The command line: the only place that prints, draws bars and chooses exit codes."""
+
+from __future__ import annotations
+
+import argparse
+import json
+import logging
+import os
+import signal
+import sys
+from collections.abc import Callable, Sequence
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+from trapsim import __version__
+from trapsim.errors import FileTrouble, Interrupted, PlanError, TrapsimError
+
+if TYPE_CHECKING:
+    from trapsim.plan.plan import Plan
+    from trapsim.record.summary import Run
+
+DESCRIPTION = "What trapped cold atoms do when the trap changes: releases, kicks, ramps and lens pulses, from lab settings."
+
+
+def entry_point() -> None:
+    """What the installed command calls."""
+    sys.exit(main(sys.argv[1:]))
+
+
+def main(argv: Sequence[str]) -> int:
+    """Run one command; returns the exit code.
+
+    0 done, 2 plan or command line wrong, 3 physics refused, 4 a file could not be read or written, 130 interrupted.
+    """
+    # matrix products here are small: more than one thread makes them slower
+    for name in ("OPENBLAS_NUM_THREADS", "OMP_NUM_THREADS", "MKL_NUM_THREADS"):
+        os.environ.setdefault(name, "1")
+    options = _parser().parse_args(argv)
+    if options.debug:
+        logging.basicConfig(level=logging.DEBUG, stream=sys.stderr)
+    try:
+        return options.command(options)
+    except BrokenPipeError:
+        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+        return 0
+    except TrapsimError as error:
+        if options.debug:
+            raise
+        print(f"trapsim: {error}", file=sys.stderr)
+        return error.exit_code
+    except KeyboardInterrupt:
+        print("trapsim: interrupted", file=sys.stderr)
+        return Interrupted.exit_code
+    except MemoryError:
+        print("trapsim: not enough memory; take fewer numerics.points or numerics.accuracy = \"draft\"", file=sys.stderr)
+        return 3
+
+
+def _parser() -> argparse.ArgumentParser:
+    parser = argparse.ArgumentParser(prog="trapsim", description=DESCRIPTION)
+    parser.add_argument("--version", action="version", version=f"trapsim {__version__}")
+    commands = parser.add_subparsers(metavar="COMMAND", required=True)
+
+    def command(name: str, about: str, does: Callable[[argparse.Namespace], int]) -> argparse.ArgumentParser:
+        sub = commands.add_parser(name, help=about, description=about)
+        sub.set_defaults(command=does)
+        sub.add_argument("--debug", action="store_true", help="show a traceback and the log")
+        return sub
+
+    check = command("check", "look a plan over: derived quantities, instant prediction, validity, cost", _check)
+    run = command("run", "play a plan and write the result folder", _run)
+    show = command("show", "print a result and draw its figures again", _show)
+    keys = command("keys", "the plan file's reference", _keys)
+    for sub in (check, run):
+        sub.add_argument("plan", metavar="PLAN", help="a plan file (TOML)")
+        sub.add_argument("--set", metavar="PATH=VALUE", action="append", default=[], dest="changes",
+                         help="replace a value of the plan, such as --set \"atoms.number=2e5\"; may be repeated")
+        sub.add_argument("--threads", type=int, metavar="N", help="for the transforms")
+    run.add_argument("--out", metavar="DIR", help="the result folder (default: results/<plan name>-<key>)")
+    run.add_argument("--quiet", action="store_true", help="no progress, no summary")
+    run.add_argument("--force", action="store_true", help="throw away what is in the result folder")
+    show.add_argument("result", metavar="RESULT", help="a result folder")
+    for sub in (run, show):
+        sub.add_argument("--json", action="store_true", help="the summary as JSON on standard output, nothing else there")
+        sub.add_argument("--no-figures", action="store_true", help="draw no figures")
+    keys.add_argument("path", metavar="PATH", nargs="?", help="a table or an entry, such as trap or sequence.ramp")
+    keys.add_argument("--schema", action="store_true", help="the JSON schema, for editors")
+    return parser
+
+
+def _plan(options: argparse.Namespace) -> Plan:
+    from trapsim.plan.reader import read_plan, settings
+
+    changes = settings(options.changes)
+    if options.threads is not None:
+        if options.threads < 1:
+            raise PlanError.at("--threads", str(options.threads), "a whole number from 1 on", "such as --threads 2")
+        changes["numerics.threads"] = options.threads
+    return read_plan(options.plan, changes)
+
+
+def _check(options: argparse.Namespace) -> int:
+    from trapsim.estimate.law import scaling_law
+    from trapsim.estimate.validity import validity
+    from trapsim.prepare.cost import predict
+    from trapsim.prepare.setup import prepare
+    from trapsim.show.card import check_text
+
+    setup = prepare(_plan(options))
+    law = scaling_law(setup)
+    print(check_text(setup, law, validity(setup, law), predict(setup)), end="")
+    return 0
+
+
+def _run(options: argparse.Namespace) -> int:
+    from trapsim.corridor.folder import default_folder
+    from trapsim.corridor.run import Silent, is_finished, run
+
+    plan = _plan(options)
+    folder = Path(options.out) if options.out else default_folder(plan)
+    again = not options.force and is_finished(folder, plan)
+    quiet = options.quiet or options.json
+    progress = Silent() if quiet else _Bar()
+    with _Stopper() as stopper:
+        finished = run(plan, folder, progress=progress, stop=stopper.asked, force=options.force)
+    if not quiet:
+        print(f"{folder} already holds this plan's result:\n" if again else "")
+    return _present(finished, options)
+
+
+def _show(options: argparse.Namespace) -> int:
+    from trapsim.corridor.run import open_run
+
+    options.quiet = False
+    return _present(open_run(options.result), options)
+
+
+def _present(run: Run, options: argparse.Namespace) -> int:
+    """Print the summary, draw the figures, say where everything is."""
+    if options.json:
+        json.dump(run.summary.as_dict(), sys.stdout, indent=2, ensure_ascii=False)
+        print()
+    elif not options.quiet:
+        from trapsim.show.text import summary_text
+
+        print(summary_text(run.summary), end="")
+    where = [str(run.folder)]
+    if not options.no_figures:
+        from trapsim.show.figures import figures_of, write_figures
+
+        where += [str(p) for p in write_figures(run.folder, figures_of(run.summary, run.track, run.columns))]
+    if not options.quiet:
+        print("\nResults are in\n  " + "\n  ".join(where), file=sys.stderr if options.json else sys.stdout)
+    return 0
+
+
+def _keys(options: argparse.Namespace) -> int:
+    from trapsim.plan.keys import reference, schema
+
+    print(json.dumps(schema(), indent=2) if options.schema else reference(options.path))
+    return 0
+
+
+class _Bar:
+    """A progress bar with the stage and the time left."""
+
+    def begin(self, total: float) -> None:
+        from tqdm import tqdm
+
+        self._bar = tqdm(
+            total=round(1e3 * total, 9), unit="ms", file=sys.stderr, disable=not sys.stderr.isatty(), leave=False,
+            bar_format="{desc:<14} {percentage:3.0f} % |{bar:30}| {n:.2f} of {total:.2f} ms, {remaining} left",
+        )  # fmt: skip
+
+    def at(self, time: float, stage: str) -> None:
+        self._bar.set_description_str(stage, refresh=False)
+        self._bar.update(1e3 * time - self._bar.n)
+
+    def end(self) -> None:
+        self._bar.close()
+
+
+class _Stopper:
+    """Turns the first Ctrl-C or termination signal into a polite question; a second Ctrl-C is not polite."""
+
+    def __init__(self) -> None:
+        self._asked = False
+        self._before: dict[int, Any] = {}
+
+    def asked(self) -> bool:
+        return self._asked
+
+    def __enter__(self) -> _Stopper:
+        for number in (signal.SIGINT, signal.SIGTERM):
+            self._before[number] = signal.signal(number, self._hear)
+        return self
+
+    def __exit__(self, *exception: object) -> None:
+        for number, handler in self._before.items():
+            signal.signal(number, handler)
+
+    def _hear(self, number: int, frame: object) -> None:
+        if self._asked and number == signal.SIGINT:
+            raise KeyboardInterrupt
+        self._asked = True
+
+
+if __name__ == "__main__":
+    entry_point()
