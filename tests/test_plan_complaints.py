@@ -226,7 +226,7 @@ def test_a_broken_plan_names_the_path_and_the_way_out(old, new, path, way_out):
     blocks = complaints(GOOD.replace(old, new))
     about = [block for block in blocks if block[0] == path or block[0].startswith(f"{path}: got ")]
     assert about, f"nobody complains about {path}: {blocks}"
-    place, rule, hint = about[0]
+    _, rule, hint = about[0]
     assert rule and hint.startswith("-> ")
     assert way_out in hint
 

@@ -37,7 +37,7 @@ _DEFINITIONS = (
 )
 
 
-class UnreadableQuantity(ValueError):
+class QuantityError(ValueError):
     """A text that is not a number with a suitable unit; says the rule and the way out."""
 
     def __init__(self, rule: str, way_out: str = "") -> None:
@@ -134,7 +134,7 @@ def _unit(text: str) -> tuple[Fraction, frozenset[tuple[str, Fraction]]] | None:
         unit = registry.parse_units(text.translate(_UNIT_SPELLINGS))
         size, _ = registry.get_base_units(unit)
         dimension = frozenset(registry.get_dimensionality(unit).items())
-    except Exception:  # noqa: BLE001  whatever pint makes of a stranger's text, it is not a unit of ours
+    except Exception:  # whatever pint makes of a stranger's text, it is not a unit of ours
         return None
     return Fraction(size), dimension
 
@@ -145,20 +145,20 @@ def _size(unit: str, kind: Kind, context: Mapping[str, float]) -> Fraction:
         return Fraction(context[unit])
     found = _unit(unit)
     if found is None:
-        raise UnreadableQuantity(f'"{unit}" is not a unit', _nearest_unit(unit, kind, context))
+        raise QuantityError(f'"{unit}" is not a unit', _nearest_unit(unit, kind, context))
     for si, size in ((kind.si, Fraction(1)), *kind.also):
         reference, dimension = _unit(si)
         if found[1] == dimension:
             return found[0] / reference * size
     if kind.plain:
-        raise UnreadableQuantity(f'a plain number, without the unit "{unit}"', "leave the unit out")
+        raise QuantityError(f'a plain number, without the unit "{unit}"', "leave the unit out")
     if not unit:
-        raise UnreadableQuantity("a number with its unit", f"write the unit: {_offer(kind, context)}")
+        raise QuantityError("a number with its unit", f"write the unit: {_offer(kind, context)}")
     if kind is KINDS["frequency"] and found[1] == _unit("1/s")[1]:
-        raise UnreadableQuantity(
+        raise QuantityError(
             f'"{unit}" does not say whether cycles or radians are counted', f"write one of {kind.named}"
         )
-    raise UnreadableQuantity(f'"{unit}" is the wrong sort of unit here', f"use one of {_offer(kind, context)}")
+    raise QuantityError(f'"{unit}" is the wrong sort of unit here', f"use one of {_offer(kind, context)}")
 
 
 def _offer(kind: Kind, context: Mapping[str, float]) -> str:
@@ -180,7 +180,7 @@ def _number(match: re.Match[str]) -> tuple[Fraction, Fraction]:
     mantissa, last = match["mantissa"].replace("_", ""), match["last"]
     exponent = int(match["exponent"] or 0)
     if abs(exponent) > 400 or len(mantissa) > 100 or len(last or "") > 100:
-        raise UnreadableQuantity("a number of ordinary size", "write it with fewer digits")
+        raise QuantityError("a number of ordinary size", "write it with fewer digits")
     scale = Fraction(10) ** exponent
     decimals = len(mantissa.partition(".")[2])
     sigma = Fraction(0)
@@ -195,7 +195,7 @@ def _split(text: str) -> tuple[re.Match[str], str]:
     if not match:
         comma = re.match(r"[+-]?\d+,\d", text)
         way_out = "write a decimal point, not a comma" if comma else 'write it like "20 Hz", "150(2) Hz" or "1.0e5"'
-        raise UnreadableQuantity("a finite number, then its unit", way_out)
+        raise QuantityError("a finite number, then its unit", way_out)
     return match, text[match.end():].strip()
 
 
@@ -219,18 +219,18 @@ def parse(text: object, kind: str, context: Mapping[str, float] = NO_UNITS) -> Q
 
     Raises
     ------
-    UnreadableQuantity
+    QuantityError
         With the rule that was broken and the way out.
     """
     sort = KINDS[kind]
     if isinstance(text, bool) or not isinstance(text, str | int | float):
         example = "1.0e5" if sort.plain else f'"20 {sort.units[0]}"'
-        raise UnreadableQuantity("a number" + ("" if sort.plain else " with its unit, in quotes"), f"such as {example}")
+        raise QuantityError("a number" + ("" if sort.plain else " with its unit, in quotes"), f"such as {example}")
     if not isinstance(text, str):
         return _bare(text, sort, context)
     parts = _PLUS_MINUS.split(text.strip().replace("−", "-"))
     if len(parts) > 2:
-        raise UnreadableQuantity("one uncertainty at most", 'write it like "20 +/- 0.5 Hz"')
+        raise QuantityError("one uncertainty at most", 'write it like "20 +/- 0.5 Hz"')
     if len(parts) == 2 and parts[0].startswith("(") and ")" in parts[1]:
         parts = [parts[0][1:].strip(), parts[1].replace(")", "", 1)]
     (value, sigma), unit = _part(parts[0])
@@ -251,9 +251,9 @@ def _part(text: str) -> tuple[tuple[Fraction, Fraction], str]:
 
 def _bare(number: float, kind: Kind, context: Mapping[str, float]) -> Quantity:
     if isinstance(number, float) and not math.isfinite(number):
-        raise UnreadableQuantity("a finite number", "write a number")
+        raise QuantityError("a finite number", "write a number")
     if not kind.plain:
-        raise UnreadableQuantity(
+        raise QuantityError(
             "a number with its unit, in quotes", f'write "{number} {kind.units[0]}"; units: {_offer(kind, context)}'
         )
     return Quantity(_round(Fraction(number)), 0.0)
@@ -263,7 +263,7 @@ def _round(exact: Fraction) -> float:
     try:
         return float(exact)
     except OverflowError:
-        raise UnreadableQuantity("a number of ordinary size", "check the exponent and the unit") from None
+        raise QuantityError("a number of ordinary size", "check the exponent and the unit") from None
 
 
 def in_unit(value: float, unit: str, kind: str | None = None) -> float:
@@ -272,7 +272,7 @@ def in_unit(value: float, unit: str, kind: str | None = None) -> float:
         return float(Fraction(value) / _size(unit, KINDS[kind], NO_UNITS))
     found = _unit(unit)
     if found is None:
-        raise UnreadableQuantity(f'"{unit}" is not a unit')
+        raise QuantityError(f'"{unit}" is not a unit')
     return float(Fraction(value) / found[0])
 
 

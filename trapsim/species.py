@@ -72,7 +72,7 @@ _TABLE = (
          "about 123 a0: Stein et al., Eur. Phys. J. D 57, 171 (2010), value from memory"),
     _row("Sr-88", 87.905612, -1.4, 460.862, _AME,
          "-1.4(6) a0: Martinez de Escobar et al., PRA 78, 062708 (2008)"),
-    _row("Cr-52", 51.940506, None, 425.553, _AME, "published values differ (96 to 112 a0), and dipoles matter"),
+    _row("Cr-52", 51.9405047, None, 425.553, _AME, "published values differ (96 to 112 a0), and dipoles matter"),
     _row("Er-166", 165.930301, None, 400.912, _AME, "scattering length strongly field dependent"),
     _row("Er-168", 167.932378, None, 400.912, _AME, "scattering length strongly field dependent"),
     _row("Yb-174", 173.938868, 104.9, 398.911, _AME, "5.55(8) nm = 104.9 a0: Kitagawa et al., PRA 77, 012719 (2008)"),

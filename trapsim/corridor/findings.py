@@ -15,7 +15,7 @@ from trapsim.estimate.law import ScalingLaw
 from trapsim.estimate.trust import trust
 from trapsim.evolve.march import Leg, State
 from trapsim.evolve.relax import Relaxed
-from trapsim.measure.observables import Moments
+from trapsim.measure.observables import Moments, peak_density
 from trapsim.prepare.setup import Setup
 from trapsim.record.series import AxisRecord, Track, WaveFunction
 from trapsim.record.summary import (
@@ -55,14 +55,6 @@ def ground_figures(setup: Setup, relaxed: Relaxed, cloud: Cloud, seen: Moments, 
         residual=relaxed.residual,
         virial=virial(setup, seen),
     )
-
-
-def peak_density(cloud: Cloud) -> float:
-    """Highest density, 1/m^3: on the points, or at the frame's centre between them."""
-    centre = cloud.phi
-    for axis in cloud.space.axes:
-        centre = np.tensordot(axis.basis(np.zeros(1))[0], centre, axes=(0, 0))
-    return max(float(np.abs(centre) ** 2), float(cloud.density().max())) / cloud.frame.B
 
 
 def virial(setup: Setup, seen: Moments) -> float | None:

@@ -14,6 +14,9 @@ import numpy as np
 
 from trapsim.space.space import Array, Space
 
+#: an attractive cloud with more than this share of its spectrum beyond 0.8 of the highest wave number is not resolved
+LOCKED = 1e-4
+
 
 @dataclass(frozen=True)
 class Relaxed:
@@ -68,6 +71,8 @@ class Hamiltonian:
         self.lowest = float(potential.min())
         self.V = np.broadcast_to(potential - self.lowest, space.shape)
         self.c = coupling
+        #: number of directions in which the cloud can draw together
+        self.extended = sum(len(axis.covers) for axis in space.axes if not axis.uniform)
         self.K = sum(space.along(d, v) for d, v in enumerate(space.per_axis([q / 2] * 3, "k2")))
         self.pairs = 0
         self._work = space.empty()
@@ -88,13 +93,23 @@ class Hamiltonian:
         return self.spectral(u, self.K)
 
     def rms_too_small(self, u: Array) -> bool:
-        """Whether the cloud is hardly wider than the grid along some axis."""
+        """Whether the cloud is narrower than one grid spacing along some axis, as a collapsed one is."""
         marginals = self.space.marginals(u**2)
         for d, axis in enumerate(self.space.axes):
             if not axis.uniform:
                 weighted = marginals[d] * axis.weights
-                if any(weighted @ axis.x2(j) < (3 * axis.spacing) ** 2 for j in axis.covers):
+                if any(weighted @ axis.x2(j) < axis.spacing**2 for j in axis.covers):
                     return True
+        return False
+
+    def held_by_grid(self, u: Array) -> bool:
+        """Whether wave numbers near the highest are populated: a collapsed cloud can come to rest on a few points."""
+        spectrum = self.space.forward(self.space.array(u))
+        marginals = self.space.spectral_marginals(spectrum.real**2 + spectrum.imag**2)
+        for d, axis in enumerate(self.space.axes):
+            population = marginals[d] * axis.spectral_weights
+            if not axis.uniform and population[np.abs(axis.k) > 0.8 * axis.k_max].sum() > LOCKED:
+                return True
         return False
 
 
@@ -142,7 +157,7 @@ def _result(h: Hamiltonian, u: Array, tolerance: float, collapsed: bool) -> Rela
     residual = np.sqrt(h.dot(r, r)) / max(abs(mu), 1e-3 * _scale(kin, pot, inter))
     signed = bool(u.min() < -1e-4 * u.max())
     if h.c < 0 and not collapsed:
-        collapsed = h.rms_too_small(u)
+        collapsed = h.rms_too_small(u) or h.held_by_grid(u)
     return Relaxed(
         u=u, mu=mu + h.lowest, energy=kin + pot + inter + h.lowest, kinetic=kin, potential=pot + h.lowest,
         interaction=inter, residual=float(residual), pairs=pairs,
@@ -156,11 +171,16 @@ def _scale(kin: float, pot: float, inter: float) -> float:
 
 
 def _falling_in(h: Hamiltonian, u: Array, kin: float, pot: float, inter: float) -> bool:
-    """Whether an attractive cloud is past the point where anything holds it up."""
+    """Whether an attractive cloud is past the point where anything holds it up.
+
+    Drawn together by a factor s in d directions its energy is s^2 kin + pot/s^2 + s^d inter: it falls in when that
+    goes down, and ever faster.
+    """
     if h.c >= 0:
         return False
-    radial_force = 2 * kin - 2 * pot + 3 * inter
-    curvature = 2 * kin + 6 * pot + 6 * inter
+    d = h.extended
+    radial_force = 2 * kin - 2 * pot + d * inter
+    curvature = 2 * kin + 6 * pot + d * (d - 1) * inter
     return (radial_force < 0 and curvature < 0) or h.rms_too_small(u)
 
 
@@ -253,8 +273,8 @@ def _first_minimum(h: Hamiltonian, u: Array, Ku: Array, p: Array, Kp: Array) -> 
 def _imaginary_time(h: Hamiltonian, u: Array, tolerance: float, most_pairs: int) -> tuple[Array, bool]:
     """Strang steps with the density of the step's start (an error of second order in dt), dt annealed."""
     Ku = h.kinetic(u)
-    mu = sum(np.array(_energies(h, u, Ku)) * (1, 1, 2))
-    dt = 0.5 / max(abs(mu), 1e-3 * _scale(*_energies(h, u, Ku)))
+    # near collapse the error of a long step is enough to push an attractive cloud over the edge
+    dt = (0.5 if h.c >= 0 else 0.05) / _scale(*_energies(h, u, Ku))
     check = 10
     while h.pairs < most_pairs:
         damp = np.exp(-h.K * dt)
@@ -264,6 +284,8 @@ def _imaginary_time(h: Hamiltonian, u: Array, tolerance: float, most_pairs: int)
             new /= np.sqrt(h.dot(new, new))
             change = np.sqrt(h.dot(new - u, new - u))
             u = new
+            if h.c < 0 and h.rms_too_small(u):
+                return u, True
         Ku = h.kinetic(u)
         kin, pot, inter = _energies(h, u, Ku)
         if _falling_in(h, u, kin, pot, inter):

@@ -12,7 +12,11 @@ import numpy as np
 
 from trapsim.cloud.cloud import Cloud
 from trapsim.constants import HBAR
+from trapsim.space.axes import Axis, Radial
 from trapsim.terms.part import Array
+
+#: points on either side of the centre from which the density at the centre is found
+NEAR = 4
 
 
 @dataclass(frozen=True)
@@ -156,3 +160,30 @@ def moments(cloud: Cloud, seen: Profile, *, coupling: float, curvature: Array, r
         interaction=0.5 * HBAR * coupling * seen.quartic / (frame.B * seen.norm),
         scale=b.copy(),
     )
+
+
+def peak_density(cloud: Cloud) -> float:
+    """Highest density in the lab, 1/m^3: on the points, or at the frame's centre between them.
+
+    At the centre the field's own series is at its worst, because what the cloud's edge leaves beyond the highest wave
+    number is focused there. The logarithm of the density is smooth in the middle of any cloud, so that is interpolated
+    from the nearest points.
+    """
+    density = cloud.density()
+    middle = np.log(np.maximum(density, np.finfo(float).tiny))
+    for axis in cloud.space.axes:
+        nearest, weights = _towards_centre(axis)
+        middle = np.tensordot(weights, middle[nearest], axes=(0, 0))
+    return max(float(np.exp(middle)), float(density.max())) / cloud.frame.B
+
+
+def _towards_centre(axis: Axis) -> tuple[Array, Array]:
+    """Points nearest the centre, and Lagrange's weights of their values there (in r^2 on a radial axis)."""
+    if isinstance(axis, Radial):
+        nearest = np.arange(min(NEAR, axis.n))
+        x = axis.points[nearest] ** 2
+    else:
+        nearest = np.argsort(np.abs(axis.points), kind="stable")[: 2 * NEAR]
+        x = axis.points[nearest]
+    others = [np.delete(x, i) for i in range(len(x))]
+    return nearest, np.array([np.prod(o / (o - one)) for one, o in zip(x, others, strict=True)])

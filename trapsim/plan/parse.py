@@ -11,7 +11,7 @@ from typing import Any
 from trapsim import quantities
 from trapsim.errors import Complaint
 from trapsim.fields import REQUIRED, Entry, entries
-from trapsim.quantities import KINDS, UnreadableQuantity
+from trapsim.quantities import KINDS, QuantityError
 
 
 @dataclass(frozen=True)
@@ -149,7 +149,7 @@ def _one(raw: Any, about: Entry, path: str, context: Context) -> Reading:
         return _within(raw, 0.0, raw, about, path)
     try:
         value, sigma = quantities.parse(raw, about.kind, context.units)
-    except UnreadableQuantity as trouble:
+    except QuantityError as trouble:
         words = [f'"{word}"' for word in (*about.words, *about.each)]
         return _wrong(path, raw, " or ".join([trouble.rule, *words]), trouble.way_out)
     return _within(value, sigma, raw, about, path)

@@ -243,7 +243,7 @@ def _sequence(tree: Tree, trap: Mapping[str, Part], keep: Any, complaints: list[
             stages.append(None)
             continue
         if not name:
-            complaints.append(_bad_name(table["name"] if "name" in table else cls.kind, f"sequence[{i}].name"))
+            complaints.append(_bad_name(table.get("name", cls.kind), f"sequence[{i}].name"))
         stages.append(keep(parse(cls, table, place, context, also=("stage",))))
     parts = tree.get("trap", {})
     known = [name for name, part in parts.items() if isinstance(part, Mapping)] if isinstance(parts, Mapping) else []

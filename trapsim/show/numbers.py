@@ -42,7 +42,7 @@ def with_error(value: float | None, error: float | None) -> str:
         return four(value)
     size = math.floor(math.log10(abs(value))) if value else math.floor(math.log10(error))
     digits = 1 + size - math.floor(math.log10(error))
-    if digits > 99:
+    if digits > 9:
         return four(value)
     return f"{figures(value, max(digits, 4))} +- {Decimal(f'{error:.0e}'):f}"
 
