@@ -13,6 +13,8 @@ import pytest  # noqa: E402
 
 import trapsim  # noqa: E402
 
+pytest.register_assert_rewrite("proofs")
+
 
 @pytest.fixture(scope="session")
 def solved() -> Callable[[trapsim.Plan], trapsim.Run]:

@@ -13,7 +13,7 @@ def gaussian_widths(omega: Array, q: float, scattering_number: float) -> Array:
 
     Source: V. M. Perez-Garcia et al., Phys. Rev. Lett. 77, 5320 (1996): the energy per atom over hbar of a Gaussian
     with rms widths s_j is sum_j [ q/(8 s_j^2) + w_j^2 s_j^2/(2 q) ] + q N a/(4 sqrt(pi) s_x s_y s_z).
-    For attraction strong enough to have no minimum the widths of the ideal gas are given.
+    For attraction the widths of the ideal gas are given: wider than the cloud, and outside any collapsed state.
 
     Parameters
     ----------

@@ -17,7 +17,7 @@ from typing import Any, Protocol
 from trapsim.cloud.cloud import Cloud
 from trapsim.corridor import folder as place
 from trapsim.corridor.findings import Spent, ground_figures, summarise, wave_function
-from trapsim.errors import Interrupted, Notice, PhysicsRefused
+from trapsim.errors import FileTrouble, Interrupted, Notice, PhysicsRefused
 from trapsim.estimate.law import ScalingLaw, scaling_law
 from trapsim.estimate.validity import FINE, validity
 from trapsim.evolve.continuity import continuity
@@ -26,7 +26,6 @@ from trapsim.evolve.relax import Relaxed, relax
 from trapsim.plan.plan import Plan
 from trapsim.prepare.setup import Setup, prepare
 from trapsim.record.recorder import Recorder
-from trapsim.record.series import WaveFunction
 from trapsim.record.store import RUN_FILE, Contents, read_run, write_results
 from trapsim.record.summary import Ground, Run
 
@@ -82,7 +81,7 @@ def run(
     stop : callable, optional
         Asked after every step; when it says True the state is saved and the run stops.
     force : bool
-        Throw away what is in the folder first.
+        Begin anew, and throw away the result that is in the folder as soon as there is a new ground state.
 
     Returns
     -------
@@ -104,18 +103,20 @@ def run(
         return _Corridor(setup, None, progress or Silent(), stop).walk()
     folder = Path(out)
     with place.locked(folder):
-        if force:
-            place.clear(folder)
-        place.claim(folder, plan)
-        if is_finished(folder, plan):
-            return open_run(folder, plan=plan)
-        return _Corridor(setup, folder, progress or Silent(), stop).walk()
+        place.claim(folder, plan, force=force)
+        if not force and place.is_finished(folder, plan):
+            return _opened_again(folder, plan)
+        return _Corridor(setup, folder, progress or Silent(), stop, force=force).walk()
 
 
-def is_finished(folder: Path, plan: Plan) -> bool:
-    """Whether a folder holds the finished result of this very plan."""
-    done = (folder / RUN_FILE).exists() and not (folder / place.CHECKPOINT).exists()
-    return done and place.belongs_to(folder, plan)
+def _opened_again(folder: Path, plan: Plan) -> Run:
+    try:
+        return open_run(folder, plan=plan)
+    except FileTrouble as error:
+        raise FileTrouble.at(
+            str(folder / RUN_FILE), "", "the finished result cannot be read: it is damaged",
+            "run again with --force to compute it anew",
+        ) from error  # fmt: skip
 
 
 def open_run(folder: str | Path, *, plan: Plan | None = None) -> Run:
@@ -148,9 +149,12 @@ class _Clock:
 class _Corridor:
     """One walk through the corridor, with or without a folder."""
 
-    def __init__(self, setup: Setup, folder: Path | None, progress: Progress, stop: Callable[[], bool]) -> None:
+    def __init__(
+        self, setup: Setup, folder: Path | None, progress: Progress, stop: Callable[[], bool], *, force: bool = False
+    ) -> None:
         self.setup = setup
         self.folder = folder
+        self.force = force
         self.progress = progress
         self.stop = stop
         self.clock = _Clock()
@@ -173,23 +177,28 @@ class _Corridor:
                 state = self._march(state)
             except PhysicsRefused as refused:
                 self._finish(self._last, "stopped", extra=(Notice("stopped", str(refused)),))
-                raise
+                if self.folder is None:
+                    raise
+                raise PhysicsRefused(f"{refused}\n    what was seen until then is in {self.folder}") from refused
         return self._finish(state, "complete")
 
     # the ground state
 
     def _begin(self) -> tuple[State, dict[str, Any]]:
         spaces = [self.setup.space, *(leg.space for leg in self.setup.legs)]
-        kept = place.load(self.folder, spaces) if self.folder else None
-        if kept is not None:
-            state, heard, ground, seconds = kept
+        kept = place.load(self.folder, self.setup.plan, spaces) if self.folder and not self.force else None
+        if kept is None:
+            return self._relax()
+        state, heard, ground, seconds = kept
+        with place.whole(self.folder / place.CHECKPOINT):
             self.recorder.restore(heard)
-            self.clock.before = seconds
             self.march_seconds = ground["march_seconds"]
-            self._probed = state.leg
-            self._last = state
-            return state, ground
-        return self._relax()
+            Ground(**ground["figures"])
+        self.clock.before = seconds
+        # a leg that was entered has been probed at its first step
+        self._probed = state.leg if state.law is not None else state.leg - 1
+        self._last = state
+        return state, ground
 
     def _relax(self) -> tuple[State, dict[str, Any]]:
         setup = self.setup
@@ -203,6 +212,10 @@ class _Corridor:
         state = State(cloud, notices=self._notices())
         self._last = state
         self._save(state, ground)
+        if self.folder:
+            place.mark(self.folder, setup.plan)
+            if self.force:
+                place.clear(self.folder)
         return state, ground
 
     def _notices(self) -> tuple[Notice, ...]:
@@ -256,8 +269,9 @@ class _Corridor:
             return
         began = time.perf_counter()
         ground = {**ground, "march_seconds": self.march_seconds}
-        place.mark(self.folder, self.setup.plan)
-        place.save(self.folder, state, self.recorder.arrays(), ground, self.clock.seconds())
+        place.save(
+            self.folder, self.setup.plan, state, heard=self.recorder.arrays(), ground=ground, seconds=self.clock.seconds()
+        )
         took = time.perf_counter() - began
         self.next_save = time.perf_counter() + max(FIRST, PATIENCE * took)
         log.debug("checkpoint at %.6g s took %.3g s", state.cloud.time, took)
@@ -275,7 +289,8 @@ class _Corridor:
             setup, status=status, ground=Ground(**self.ground["figures"]), state=state, track=track, law=self.law,
             spent=spent, continuity=self.ground["continuity"], notices=(*state.notices, *extra),
         )  # fmt: skip
-        final: WaveFunction = wave_function(state.cloud, setup.timeline.origin)
+        # samples are borrowed from the march: after a refused step they are no longer those of the last good state
+        final = wave_function(state.cloud, setup.timeline.origin) if status == "complete" else None
         columns = self.recorder.columns()
         if self.folder:
             contents = Contents(plan.source, plan.resolved(), summary, track, columns, final)

@@ -137,9 +137,11 @@ class MovingLaw:
         change = self._at(t1) - self._at(t0)
         return change[12:15], float(change[15])
 
-    def quadratic(self, dK: Array, dJ: float) -> Array:
-        """Coefficients of xi_j^2/(2 q) in the potential flow."""
-        return self.start.A * dK + self.start.i * dJ
+    def turn(self, dK: Array) -> tuple[Array, Array]:
+        """Lens (1/s) and drift (s) that turn phase space by sqrt(A) dK: sqrt(A) tan(theta/2), sin(theta)/sqrt(A)."""
+        root = np.sqrt(self.start.A)
+        theta = root * dK
+        return root * np.tan(theta / 2), np.where(root > 0, np.sin(theta) / np.where(root > 0, root, 1.0), dK)
 
 
 class StandingLaw:
@@ -155,8 +157,8 @@ class StandingLaw:
     def integrals(self, t0: float, t1: float) -> tuple[Array, float]:
         return np.full(3, t1 - t0), (t1 - t0) * float(np.mean([self.interval.coupling(t) for t in gauss(t0, t1)]))
 
-    def quadratic(self, dK: Array, dJ: float) -> Array:
-        return np.zeros(3)
+    def turn(self, dK: Array) -> tuple[Array, Array]:
+        return np.zeros(3), dK
 
 
 def gauss(t0: float, t1: float) -> tuple[float, float]:

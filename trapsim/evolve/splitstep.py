@@ -1,8 +1,14 @@
 """One step: half a potential flow, a kinetic flow, half a potential flow (Strang).
 
-In the frame, i phi_t = [ sum_j -(q/2 b_j^2) d_j^2 + U/hbar + c/B |phi|^2 ] phi. Both flows are exact: the kinetic one is
-exp(-i q/2 sum_j k_j^2 dK_j), the potential one exp(-i [ sum_j (A_j dK_j + i_j dJ) xi_j^2/(2 q) + dJ |phi|^2 + int V_rest dt/hbar ]),
-with the integrals of the frame law over the very interval of the flow, so that nothing is ever evaluated at a jump.
+In the frame, i phi_t = [ sum_j -(q/2 b_j^2) d_j^2 + U/hbar + c/B |phi|^2 ] phi. The kinetic energy and the share A_j of the
+parabola turn the cloud in phase space by theta_j = sqrt(A_j) dK_j, and that turn is done without error:
+
+    turn by theta = exp(-i a tan(theta/2) xi^2/2q) exp(-i q k^2 sin(theta)/2a) exp(-i a tan(theta/2) xi^2/2q),  a = sqrt(A)
+
+(S. A. Chin and E. Krotscheck, Phys. Rev. E 72, 036705 (2005), give it for the rotating trap). What is left is exact too,
+exp(-i [ dJ ( |phi|^2 + sum_j i_j xi_j^2/(2 q) ) + int V_rest dt/hbar ]); only the two together are split. So an ideal gas
+in any harmonic trap, or in flight, moves without error at any step. All integrals are those of the frame law over the very
+interval of the flow, so that nothing is ever evaluated at a jump.
 """
 
 from __future__ import annotations
@@ -46,19 +52,21 @@ class SplitStep:
     def strang(self, phi: Array, t: float, h: float) -> Array:
         """Overwrite phi(t) with phi(t + h); returns it. One pair."""
         middle = t + h / 2
-        self.potential(phi, t, middle)
-        self.kinetic(phi, t, t + h)
-        self.potential(phi, middle, t + h)
+        dK, _ = self.law.integrals(t, t + h)
+        lens, drift = self.law.turn(dK)
+        self.potential(phi, t, middle, lens)
+        self.kinetic(phi, drift)
+        self.potential(phi, middle, t + h, lens)
         return phi
 
-    def potential(self, phi: Array, t0: float, t1: float) -> None:
-        """Overwrite phi with its potential flow from t0 to t1."""
-        dK, dJ = self.law.integrals(t0, t1)
+    def potential(self, phi: Array, t0: float, t1: float, lens: Array) -> None:
+        """Overwrite phi with its potential flow from t0 to t1, and with lenses (3,) 1/s: exp(-i lens xi^2/(2 q))."""
+        _, dJ = self.law.integrals(t0, t1)
         theta = self._theta
         np.multiply(phi.real, phi.real, out=theta)
         theta += phi.imag**2
         theta *= dJ
-        coefficients = self.law.quadratic(dK, dJ) / (2 * self.q)
+        coefficients = (lens + self.law.start.i * dJ) / (2 * self.q)
         for d, values in enumerate(self.space.per_axis(coefficients, "x2")):
             theta += self.space.along(d, values)
         first, second = (self.rest(t) for t in gauss(t0, t1))
@@ -69,13 +77,12 @@ class SplitStep:
         np.conjugate(self._phase, out=self._phase)
         phi *= self._phase
 
-    def kinetic(self, phi: Array, t0: float, t1: float) -> None:
-        """Overwrite phi with its kinetic flow from t0 to t1; one pair."""
-        dK, _ = self.law.integrals(t0, t1)
+    def kinetic(self, phi: Array, drift: Array) -> None:
+        """Overwrite phi with exp(-i q/2 sum_j k_j^2 drift_j) phi, drift (3,) in s; one pair."""
         self.space.forward(phi)
         factors = [
             self.space.along(d, np.exp(-0.5j * self.q * values) / axis.round_trip)
-            for d, (axis, values) in enumerate(zip(self.space.axes, self.space.per_axis(dK, "k2"), strict=True))
+            for d, (axis, values) in enumerate(zip(self.space.axes, self.space.per_axis(drift, "k2"), strict=True))
         ]
         if len(factors) > 1:
             phi *= reduce(np.multiply, factors[:-1])

@@ -65,7 +65,7 @@ class ColumnViews:
         self.space = space
         self.raster = raster
         self.finer = [a.finer() if isinstance(a, Radial) else a for a in space.axes]
-        self._onto = [f.basis(f.points) if f is a else a.basis(f.points) for f, a in zip(self.finer, space.axes, strict=True)]
+        self._onto_finer = space.axes[0].basis(self.finer[0].points) if isinstance(space.axes[0], Radial) else None
         self._lines = [self._line(a.half_extent) for a in self.finer]
 
     def _line(self, half: float) -> Array:
@@ -74,8 +74,8 @@ class ColumnViews:
     def density(self, cloud: Cloud) -> Array:
         """|phi|^2 on the finer points."""
         phi = cloud.phi
-        if isinstance(self.space.axes[0], Radial):
-            phi = np.tensordot(self._onto[0], phi, axes=(1, 0))
+        if self._onto_finer is not None:
+            phi = np.tensordot(self._onto_finer, phi, axes=(1, 0))
         return phi.real**2 + phi.imag**2
 
     def see(self, cloud: Cloud, views: tuple[str, ...] = tuple(VIEWS)) -> dict[str, Column]:
@@ -94,9 +94,8 @@ class ColumnViews:
         else:
             values = self._side(density, up, right, along)
         lines = [self._lines[space.dim(j)] for j in (right, up)]
-        return Column(
-            frame.lab(lines[0], right), frame.lab(lines[1], up), values / (frame.b[right] * frame.b[up]), view, cloud.time
-        )
+        values = values / (frame.b[right] * frame.b[up])
+        return Column(frame.lab(lines[0], right), frame.lab(lines[1], up), values, view, cloud.time)
 
     def _flat(self, rest: Array, gone: int, up: int, right: int) -> Array:
         """Two axes of their own are left: their own series evaluated on the raster."""

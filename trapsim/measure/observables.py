@@ -16,7 +16,7 @@ from trapsim.space.axes import Axis, Radial
 from trapsim.terms.part import Array
 
 #: points on either side of the centre from which the density at the centre is found
-NEAR = 4
+NEAR = 7
 
 
 @dataclass(frozen=True)

@@ -1,0 +1,88 @@
+"""The box: a flat bottom between soft walls."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import ClassVar
+
+import numpy as np
+from scipy import special
+
+from trapsim.errors import Complaint
+from trapsim.fields import ORIGIN, Triple, entry
+from trapsim.terms.part import About, Array, Part, Symmetry
+
+#: 10-90 % width of an error-function edge, in its standard deviations
+EDGE = 2 * np.sqrt(2) * special.erfinv(0.8)
+
+
+@dataclass(frozen=True, kw_only=True)
+class Box(Part):
+    """Walls of finite height around a flat bottom; their profile is an error function."""
+
+    kind: ClassVar[str] = "box"
+
+    shape: str = entry(
+        "choice", "a cuboid, or a cylinder along `axis`", default="cuboid", choices=("cuboid", "cylinder")
+    )
+    axis: str = entry("choice", "of the cylinder", default="x", choices=("x", "y", "z"))
+    size: Triple = entry(
+        "length", "full size along x, y, z where the wall has half its height; across a cylinder, its diameter twice",
+        count=3, above=0.0, ramp=True,
+    )
+    height: float = entry("energy", "of the walls", above=0.0, ramp=True)
+    edge: float = entry("length", "from 10 to 90 % of the wall's height", above=0.0, ramp=True)
+    centre: Triple = entry("length", "the middle of the box", default=ORIGIN, count=3, ramp=True)
+
+    @property
+    def along(self) -> int:
+        return "xyz".index(self.axis)
+
+    @property
+    def across(self) -> tuple[int, ...]:
+        return tuple(j for j in range(3) if j != self.along)
+
+    def complaints(self, place: str) -> list[Complaint]:
+        first, second = self.across
+        out = []
+        if self.shape == "cylinder" and self.size[first] != self.size[second]:
+            out.append(Complaint(
+                f"{place}.size", f"{1e6 * self.size[first]:g} um and {1e6 * self.size[second]:g} um across",
+                "a cylinder has one diameter", "write it twice, or shape = \"cuboid\"",
+            ))  # fmt: skip
+        if self.edge > min(self.size) / 2:
+            out.append(Complaint(
+                f"{place}.edge", f"{1e6 * self.edge:g} um", "walls softer than half the box leave no flat bottom",
+                "write a smaller edge",
+            ))  # fmt: skip
+        return out
+
+    def _inside(self, distance: Array, half: float) -> Array:
+        """1 inside, 0 outside, 1/2 at `half`, for a distance from the middle that may have either sign."""
+        width = np.sqrt(2) * self.edge / EDGE
+        return 0.5 * (special.erf((distance + half) / width) - special.erf((distance - half) / width))
+
+    def energy(self, x: Array, y: Array, z: Array) -> Array:
+        u = [v - c for v, c in zip((x, y, z), self.centre, strict=True)]
+        if self.shape == "cuboid":
+            inside = np.prod([1.0])
+            for distance, size in zip(u, self.size, strict=True):
+                inside = inside * self._inside(distance, size / 2)
+        else:
+            first, second = self.across
+            radius = np.sqrt(u[first] ** 2 + u[second] ** 2)
+            width = np.sqrt(2) * self.edge / EDGE
+            tube = 0.5 * special.erfc((radius - self.size[first] / 2) / width)
+            inside = self._inside(u[self.along], self.size[self.along] / 2) * tube
+        return self.strength * self.height * (1 - inside)
+
+    @property
+    def grips(self) -> frozenset[int]:
+        return frozenset({0, 1, 2})
+
+    def symmetry(self) -> Symmetry:
+        even = tuple(About(c) for c in self.centre)
+        return Symmetry(even, frozenset({self.along}) if self.shape == "cylinder" else frozenset())
+
+    def finest(self) -> float:
+        return self.edge
