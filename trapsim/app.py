@@ -13,7 +13,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from trapsim import __version__
-from trapsim.errors import FileTrouble, Interrupted, PlanError, TrapsimError
+from trapsim.errors import Interrupted, PlanError, TrapsimError
 
 if TYPE_CHECKING:
     from trapsim.plan.plan import Plan

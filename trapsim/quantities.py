@@ -19,7 +19,7 @@ from fractions import Fraction
 from types import MappingProxyType
 from typing import Any, NamedTuple
 
-from trapsim.constants import ATOMIC_MASS, BOHR_RADIUS, K_B, H
+from trapsim.constants import ATOMIC_MASS, BOHR_RADIUS, K_B, POLARISABILITY, H
 
 NO_UNITS: Mapping[str, float] = MappingProxyType({})
 
@@ -34,6 +34,7 @@ _DEFINITIONS = (
     "minute = 60 s = min", "newton = kg*m/s**2 = N", "joule = N*m = J", "watt = J/s = W",
     "tesla = N/A/m = T", "gauss = 1e-4 T = G", "percent = 0.01 = %",
     f"dalton = {ATOMIC_MASS!r} kg = u", f"bohr = {BOHR_RADIUS!r} m = a0",
+    f"polarisability_au = {POLARISABILITY!r} A**2*s**4/kg = au",
 )
 
 
@@ -98,6 +99,8 @@ KINDS: Mapping[str, Kind] = MappingProxyType({
     "energy": Kind("J", ("nK", "uK", "Hz", "kHz", "J"), ("pK", "nK", "uK", "mK", "K"), _ENERGIES),
     "temperature": Kind("K", ("nK", "uK", "mK", "pK", "K"), ("pK", "nK", "uK", "mK", "K")),
     "angle": Kind("rad", ("rad", "mrad", "deg"), ("urad", "mrad", "rad")),
+    "power": Kind("W", ("mW", "W", "uW"), ("uW", "mW", "W")),
+    "polarisability": Kind("A^2*s^4/kg", ("au",), ("au",)),
     "memory": Kind("B", ("GB", "MB", "GiB", "MiB"), ("B", "kB", "MB", "GB")),
 })
 

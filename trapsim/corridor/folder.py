@@ -180,7 +180,7 @@ def save(
     books = {k: v for k, v in asdict(state.books).items() if k not in ("edge", "spectrum")}
     attributes = {
         "layout": LAYOUT, "march_key": plan.march_key, "time": cloud.time, "q": cloud.q, "leg": state.leg, "space": cloud.space.describe(), "books": books,
-        "law_time": None if law is None else law.time, "stride": None if stride is None else asdict(stride),
+        "law_time": None if law is None else law.time, "law_edge": None if law is None else law.edge, "stride": None if stride is None else asdict(stride),
         "notices": [asdict(n) for n in state.notices], "ground": dict(ground), "seconds": seconds,
     }  # fmt: skip
     write_checkpoint(folder / CHECKPOINT, arrays, attributes)
@@ -228,7 +228,7 @@ def _state(arrays: Mapping[str, Any], told: Mapping[str, Any], spaces: list[Spac
     law = None
     if told["law_time"] is not None:
         law_frame = Frame(*(arrays[f"law_frame_{n}"] for n in _FRAME))
-        law = LawStart(told["law_time"], law_frame, arrays["law_A"], arrays["law_i"], arrays["law_var"])
+        law = LawStart(told["law_time"], law_frame, arrays["law_A"], arrays["law_i"], arrays["law_var"], told["law_edge"])
     return State(
         cloud=Cloud(space, space.array(arrays["phi"]), frame, told["time"], told["q"]), leg=told["leg"],
         stride=None if told["stride"] is None else Stride(**told["stride"]), law=law,

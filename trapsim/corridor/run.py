@@ -18,7 +18,7 @@ from trapsim.cloud.cloud import Cloud
 from trapsim.corridor import folder as place
 from trapsim.corridor.findings import Spent, ground_figures, summarise, wave_function
 from trapsim.errors import FileTrouble, Interrupted, Notice, PhysicsRefused
-from trapsim.estimate.law import ScalingLaw, scaling_law
+from trapsim.estimate.law import scaling_law
 from trapsim.estimate.validity import FINE, validity
 from trapsim.evolve.continuity import continuity
 from trapsim.evolve.march import Leg, State, Tick, march

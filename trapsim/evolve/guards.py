@@ -22,11 +22,15 @@ UPPER = 0.8
 
 @dataclass(frozen=True)
 class Guards:
-    """The highest populations allowed at the edge of any axis and of its spectrum, and of norm drift."""
+    """The highest populations allowed at the edge of any axis and of its spectrum, and of norm drift.
+
+    Directions that the plan itself makes periodic have no edge; they are not `watched` there.
+    """
 
     edge: float
     spectrum: float
     norm: float
+    watched: tuple[bool, bool, bool] = (True, True, True)
 
     def check(self, *, time: float, norm: float, edge: Array, spectrum: Array, place: str) -> Alarm | None:
         """What is wrong, if anything is.
@@ -47,6 +51,7 @@ class Guards:
                 place, f"norm off by {norm - 1:.1e} {when}", f"the norm may drift by {self.norm:.0e}",
                 "take a finer accuracy (numerics.accuracy), which shortens the steps",
             )  # fmt: skip
+        edge = np.where(self.watched, edge, 0.0)
         if edge.max() > self.edge:
             return Alarm("edge", int(edge.argmax()), float(edge.max()), self.edge)
         if spectrum.max() > self.spectrum:

@@ -6,25 +6,32 @@ Recording, checkpoints and progress are consumers of what it yields.
 
 from __future__ import annotations
 
-from collections.abc import Generator, Iterator, Sequence
+from collections.abc import Callable, Generator, Iterator, Sequence
 from dataclasses import dataclass, field, replace
 
 import numpy as np
 
-from trapsim.cloud.cloud import Cloud
+from trapsim.cloud.cloud import Cloud, regauge
 from trapsim.errors import Notice
 from trapsim.evolve.guards import Guards, edge_population, spectrum_population
 from trapsim.evolve.pace import Buffers, Flight, Stride, Trapped
-from trapsim.evolve.scaling import Interval, LawStart, MovingLaw, StandingLaw, measure_law, standing_start
+from trapsim.evolve.scaling import Interval, LawStart, MovingLaw, StandingLaw, measure_law, reach
 from trapsim.evolve.splitstep import Rest, SplitStep
 from trapsim.fields import ORIGIN, Triple
 from trapsim.measure.observables import Profile, profile
 from trapsim.space.resample import resample
 from trapsim.space.space import Array, Space
-from trapsim.terms.part import remainder
+from trapsim.terms.part import ALL, remainder
 
 #: the frame law is measured again when a width in the frame has moved by this share
 MOVED = 0.15
+#: the frame takes up a mean wave number beyond this share of the spread
+FOLLOW = 1e-3
+#: a spectrum is full when all but FULL_TAIL of it reaches this share of its axis; then the frame takes up a correlation
+#: of xi and k beyond CHIRPED
+FULL, FULL_TAIL, CHIRPED = 0.5, 1e-4, 0.1
+#: in flight the frame grows so that less than this share of what the guards allow comes near the edge
+HELD_BACK = 0.1
 #: transform pairs a full profile costs: half a pair, and one derivative per direction
 PROFILE_PAIRS = 1.5
 
@@ -46,8 +53,13 @@ class Leg:
         What acts, smooth on [start, stop].
     trapped : bool
         Whether a part that confines is on.
-    moving : bool
-        Whether the frame follows the cloud.
+    moving : three bools
+        Directions in which the frame follows the cloud; in the others it stands, and forces and kicks act on the wave
+        function itself.
+    brief : bool
+        Whether it is a pulse: its steps are always those of a flight.
+    unwalled : bool
+        Whether a box held the cloud before and no longer does.
     landings : tuple of float
         Times to hit exactly.
     kick : (3,)
@@ -64,7 +76,9 @@ class Leg:
     space: Space
     interval: Interval
     trapped: bool
-    moving: bool = True
+    moving: tuple[bool, bool, bool] = ALL
+    brief: bool = False
+    unwalled: bool = False
     landings: tuple[float, ...] = ()
     kick: Triple = ORIGIN
     last: bool = True
@@ -154,7 +168,8 @@ class Pace:
 
     def of(self, leg: Leg) -> Flight | Trapped:
         # in a trap the errors of plain steps do not add up, so that one step may be that much worse
-        return Trapped(30 * self.tolerance, self.cap) if leg.trapped else Flight(self.tolerance)
+        plain = leg.trapped and not leg.brief
+        return Trapped(30 * self.tolerance, self.cap) if plain else Flight(self.tolerance)
 
 
 def march(
@@ -182,46 +197,84 @@ def march(
 
 
 def _enter(state: State, leg: Leg, guards: Guards) -> State:
-    """Put the cloud on the leg's space, kick it, and measure the frame law on it."""
+    """Put the cloud on the leg's space, kick it, settle the frame, and measure the frame law on it."""
     cloud = replace(state.cloud, time=leg.start)
     if cloud.space is not leg.space and cloud.space.describe() != leg.space.describe():
         cloud = replace(cloud, phi=resample(cloud.phi, cloud.space, leg.space), space=leg.space)
-    if any(leg.kick):
-        cloud = kicked(cloud, leg.kick, moving=leg.moving)
+    cloud = settled(kicked(cloud, leg.kick, moving=leg.moving), leg.moving)
     seen = profile(cloud)
+    cloud, seen = _followed(cloud, seen, leg)
     spectrum = spectrum_population(cloud.space, seen.spectrum)
     books = state.books.spent(PROFILE_PAIRS, flight=not leg.trapped)
     books = replace(books, spectrum=np.maximum(books.spectrum, spectrum))
-    law = _law_start(cloud, seen, leg)
     alarm = guards.check(
         time=cloud.time, norm=seen.norm, edge=np.zeros(3), spectrum=spectrum, place=f"stage {leg.name}"
     )
     if alarm:
         raise alarm.refuse(time=cloud.time, place=f"stage {leg.name}", space=cloud.space)
-    return replace(state, cloud=cloud, law=law, stride=None, books=books)
+    return replace(state, cloud=cloud, law=_law_start(cloud, seen, leg, guards), stride=None, books=books)
 
 
-def _law_start(cloud: Cloud, seen: Profile, leg: Leg) -> LawStart:
-    return measure_law(cloud, seen, floor=not leg.trapped) if leg.moving else standing_start(cloud, seen)
+def _law_start(cloud: Cloud, seen: Profile, leg: Leg, guards: Guards) -> LawStart:
+    front = 0.0
+    if leg.unwalled:
+        # a flat cloud let go runs ahead of its own scaling at up to twice the speed of sound
+        sound = np.sqrt(cloud.q * max(leg.interval.coupling(cloud.time), 0.0) * cloud.density().max() / cloud.frame.B)
+        front = 2 * float(sound)
+    tail = None if leg.trapped else HELD_BACK * guards.edge
+    law = measure_law(cloud, seen, tail=tail, moving=leg.moving, front=front)
+    return replace(law, edge=float(np.where(guards.watched, edge_population(cloud.space, seen.density), 0.0).max()))
 
 
-def kicked(cloud: Cloud, velocity: Triple, *, moving: bool) -> Cloud:
-    """The cloud after an instantaneous velocity kick (m/s): the frame takes it, or the wave function does."""
-    if moving:
-        return replace(cloud, frame=replace(cloud.frame, Xdot=cloud.frame.Xdot + np.asarray(velocity)))
-    angle = 0.0
-    for j, (v, x) in enumerate(zip(velocity, cloud.space.coordinates(), strict=True)):
-        if v:
-            if len(cloud.space.axis(j).covers) > 1:
-                raise ValueError("a round axis can carry no velocity of its own")
-            angle = angle + (v / cloud.q) * cloud.frame.b[j] * x
-    return replace(cloud, phi=cloud.space.array(cloud.phi * np.exp(1j * angle)))
+def settled(cloud: Cloud, moving: Sequence[bool]) -> Cloud:
+    """The same cloud in a frame at rest in the directions in which it does not move; exact."""
+    frame = cloud.frame
+    bdot = np.where(moving, frame.bdot, 0.0)
+    Xdot = np.where(moving, frame.Xdot, 0.0)
+    if (bdot == frame.bdot).all() and (Xdot == frame.Xdot).all():
+        return cloud
+    return regauge(cloud, bdot=bdot, Xdot=Xdot)
+
+
+def _followed(cloud: Cloud, seen: Profile, leg: Leg) -> tuple[Cloud, Profile]:
+    """The same cloud in a frame that suits it better, where that is needed; exact.
+
+    A mean of k of its own goes into the frame's velocity. When the spectrum fills its axis, the correlation of k and xi
+    goes into the rate of scale, which leaves the wave function as narrow in k as it can be.
+    """
+    moving = np.asarray(leg.moving)
+    drift = np.where(moving, seen.k_mean, 0.0)
+    drift[np.abs(drift) <= FOLLOW * np.sqrt(seen.k_var)] = 0.0
+    chirp = np.zeros(3)
+    for j in np.nonzero(moving & (seen.var > 0))[0]:
+        axis = cloud.space.axis(j)
+        width = reach(axis.k, seen.spectrum[cloud.space.dim(j)] * axis.spectral_weights, FULL_TAIL)
+        if width > FULL * axis.k_max and seen.cov[j] ** 2 > CHIRPED**2 * seen.var[j] * seen.k_var[j]:
+            chirp[j] = seen.cov[j] / seen.var[j]
+    if not (drift.any() or chirp.any()):
+        return cloud, seen
+    frame, q = cloud.frame, cloud.q
+    bdot = frame.bdot + q * chirp / frame.b
+    # the rate of scale acts about the frame's centre, so that it gives the mean of xi a velocity too
+    Xdot = frame.Xdot + (q / frame.b) * (drift - chirp * seen.mean)
+    cloud = regauge(cloud, bdot=bdot, Xdot=Xdot)
+    return cloud, profile(cloud)
+
+
+def kicked(cloud: Cloud, velocity: Triple, *, moving: Sequence[bool]) -> Cloud:
+    """The cloud after an instantaneous kick (m/s): the frame takes it where it moves, else the wave function."""
+    if not any(velocity):
+        return cloud
+    pushed = replace(cloud, frame=replace(cloud.frame, Xdot=cloud.frame.Xdot + np.asarray(velocity)))
+    return settled(pushed, moving)
 
 
 def stepper(law_start: LawStart, leg: Leg, q: float) -> SplitStep:
     """Steps on a leg under the frame law that starts from `law_start`."""
-    law = (MovingLaw if leg.moving else StandingLaw)(law_start, leg.interval, q=q)
-    return SplitStep(leg.space, law, q=q, rest=_rest(law, leg))
+    law = MovingLaw(law_start, leg.interval, q=q, moving=leg.moving) if any(leg.moving) else StandingLaw(
+        law_start, leg.interval
+    )
+    return SplitStep(leg.space, law, q=q, rest=_rest(law, leg), rate=_rate(law, leg))
 
 
 def _rest(law: MovingLaw | StandingLaw, leg: Leg) -> Rest:
@@ -231,16 +284,30 @@ def _rest(law: MovingLaw | StandingLaw, leg: Leg) -> Rest:
     def left(t: float) -> Array | float:
         frame = law.frame(t)
         lab = tuple(frame.lab(x, j) for j, x in enumerate(coordinates))
-        parts = leg.interval.parts_at(t)
-        if leg.moving:
-            return remainder(parts, tuple(frame.X), *lab)
-        origin = tuple(np.asarray(c) for c in frame.X)
-        return sum(p.energy(*lab) - p.energy(*origin) for p in parts if p.strength)
+        return remainder(leg.interval.parts_at(t), tuple(frame.X), *lab, steered_along=leg.moving)
 
-    if leg.interval.steady and not leg.moving:
+    parts = leg.interval.parts_at(leg.start)
+    if all(leg.moving) and all(p.quadratic for p in parts):
+        return lambda t: 0.0
+    if leg.interval.steady and not any(leg.moving):
         always = left(0.5 * (leg.start + leg.stop))
         return lambda t: always
     return left
+
+
+def _rate(law: MovingLaw | StandingLaw, leg: Leg) -> Callable[[float], float]:
+    """How fast (rad/s) the potential changes at the points of the grid, which move past it with the frame."""
+    half = np.array([leg.space.axis(j).half_extent for j in range(3)])
+
+    def rate(t: float) -> float:
+        frame = law.frame(t)
+        speed = np.abs(frame.Xdot) + np.abs(frame.bdot) * half
+        parts = (p for p in leg.interval.parts_at(t) if not p.quadratic and p.strength > 0)
+        return max((p.rate(speed) for p in parts), default=0.0)
+
+    if all(p.quadratic for p in leg.interval.parts_at(leg.start)):
+        return lambda t: 0.0
+    return rate
 
 
 def _play(state: State, leg: Leg, *, pace: Pace, guards: Guards) -> Generator[Tick, None, State]:
@@ -271,9 +338,15 @@ def _play(state: State, leg: Leg, *, pace: Pace, guards: Guards) -> Generator[Ti
                 local=max(books.local, taken.local),
             )  # fmt: skip
             marginals = cloud.space.marginals(cloud.density())
-            books = _watch(cloud, marginals, books, leg, guards)
-            if leg.moving and now < leg.stop and _has_moved(cloud, marginals, law_start):
-                law_start = _law_start(cloud, profile(cloud), leg)
+            edge = np.where(guards.watched, edge_population(cloud.space, marginals), 0.0)
+            books = replace(books, edge=np.maximum(books.edge, edge))
+            crowded = not leg.trapped and edge.max() > max(HELD_BACK * guards.edge, 2 * law_start.edge)
+            moved = _has_moved(cloud, marginals, law_start, leg.moving)
+            _stop_at(cloud, marginals, edge, leg, guards)
+            if any(leg.moving) and now < leg.stop and (moved or crowded):
+                cloud, seen = _followed(cloud, profile(cloud), leg)
+                phi = cloud.phi
+                law_start = _law_start(cloud, seen, leg, guards)
                 books = books.spent(PROFILE_PAIRS, flight=not leg.trapped)
                 step = stepper(law_start, leg, q)
             state = replace(state, cloud=cloud, stride=stride, law=law_start, books=books)
@@ -287,20 +360,19 @@ def _play(state: State, leg: Leg, *, pace: Pace, guards: Guards) -> Generator[Ti
     return state
 
 
-def _watch(cloud: Cloud, marginals: list[Array], books: Books, leg: Leg, guards: Guards) -> Books:
-    edge = edge_population(cloud.space, marginals)
+def _stop_at(cloud: Cloud, marginals: list[Array], edge: Array, leg: Leg, guards: Guards) -> None:
+    """Let the guards look, and stop where they say so."""
     norm = float(np.dot(marginals[0], cloud.space.axes[0].weights))
     place = f"stage {leg.name}"
     alarm = guards.check(time=cloud.time, norm=norm, edge=edge, spectrum=np.zeros(3), place=place)
     if alarm:
         raise alarm.refuse(time=cloud.time, place=place, space=cloud.space)
-    return replace(books, edge=np.maximum(books.edge, edge))
 
 
-def _has_moved(cloud: Cloud, marginals: list[Array], law: LawStart) -> bool:
+def _has_moved(cloud: Cloud, marginals: list[Array], law: LawStart, moving: Sequence[bool]) -> bool:
     for j in range(3):
         axis = cloud.space.axis(j)
-        if not axis.uniform:
+        if not axis.uniform and moving[j]:
             weighted = marginals[cloud.space.dim(j)] * axis.weights
             mean = weighted @ axis.x1(j)
             ratio = np.sqrt((weighted @ axis.x2(j) - mean**2) / law.var[j])

@@ -2,8 +2,8 @@
 
 In flight each step is taken once whole (C) and once in two halves (F); (4 F - C)/3 is of fourth order and |F - C|/3 its
 error estimate, for three pairs. In a trap a plain Strang step under the cap on the fastest kinetic phase is cheaper and
-keeps norm and energy; it is compared with its two halves only now and then, as the estimate. Beyond the cap the splitting
-can be wrong with a perfect norm (J. A. C. Weideman and B. M. Herbst, SIAM J. Numer. Anal. 23, 485 (1986)).
+keeps norm and energy; it is compared with its two halves only now and then, as the estimate. Beyond the cap the
+splitting can be wrong with a perfect norm (J. A. C. Weideman and B. M. Herbst, SIAM J. Numer. Anal. 23, 485 (1986)).
 """
 
 from __future__ import annotations
@@ -15,6 +15,8 @@ import numpy as np
 from trapsim.evolve.splitstep import SplitStep
 from trapsim.space.space import Array
 
+#: highest turn of phase space per step, rad; the lens that makes half of it diverges at pi
+TURN = 1.6
 #: plain steps between two comparisons
 BETWEEN = 16
 
@@ -76,8 +78,9 @@ class Flight:
     tolerance: float
 
     def first(self, step: SplitStep, t: float, peak: float) -> Stride:
-        """The first stride, given the highest density in the frame, 1/m^3: 0.7 rad of its mean field."""
+        """The first stride: 0.7 rad of the mean field at the highest density in the frame (1/m^3), and of what acts."""
         h = step.law.interval.stop - t
+        h = min(h, 0.7 / max(step.rest_phase_rate(t + h / 2), 1e-300))
         while step.mean_field_phase(t, t + h, peak) > 0.7:
             h *= 0.8
         return Stride(h)
@@ -85,8 +88,10 @@ class Flight:
     def take(self, step: SplitStep, phi: Array, t: float, stride: Stride, limit: float, work: Buffers) -> Taken:
         """Overwrite phi(t) with phi(t + h), h <= limit."""
         h, rejected = stride.h, 0
+        h = min(h, limit, step.longest(t))
+        while step.turned(t, t + h) > TURN:
+            h /= 2
         while True:
-            h = min(h, limit)
             error = _compare(step, phi, t, h, work)
             wish = h * float(np.clip(0.85 * (self.tolerance / max(error, 1e-30)) ** (1 / 3), 0.3, 4.0))
             if error < 1.5 * self.tolerance or not np.isfinite(error):
@@ -96,7 +101,7 @@ class Flight:
         work.coarse *= 1 / 3
         phi -= work.coarse
         # a step cut short by a landing says little about the next one
-        keep = max(wish, stride.h) if h < 0.5 * stride.h else wish
+        keep = max(wish, stride.h) if h < 0.5 * stride.h and not rejected else wish
         return Taken(h, Stride(keep), rejected, error=error)
 
 
@@ -131,7 +136,7 @@ class Trapped:
 
     def take(self, step: SplitStep, phi: Array, t: float, stride: Stride, limit: float, work: Buffers) -> Taken:
         """Overwrite phi(t) with phi(t + h), h <= limit."""
-        h, rejected = self._capped(step, t, min(stride.h, limit), stride.peak), 0
+        h, rejected = self._capped(step, t, min(stride.h, limit, step.longest(t)), stride.peak), 0
         if stride.since < BETWEEN:
             step.strang(phi, t, h)
             grown = max(stride.h, min(1.25 * h, 1.02 * stride.h)) if stride.local < self.tolerance else stride.h

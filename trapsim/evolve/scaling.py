@@ -3,16 +3,16 @@
     m X'' = F(X, t)                                      (the classical centre)
     b_j'' = -w_j(t)^2 b_j + A_j/b_j^3 + i_j c(t)/(b_j B)
 
-One family: A = 0 with i_j c = w0^2 is the scaling law of Y. Castin and R. Dum, Phys. Rev. Lett. 77, 5315 (1996); A = w0^2
-with i = 0 that of the ideal gas. A and i are measured on the cloud and frozen until it is measured again. The choice
-only decides whether the cloud stays well inside its box of coordinates and wave numbers; the equation of motion in the
-frame is exact for any of them.
+One family: A = 0 with i_j c = w0^2 is the scaling law of Y. Castin and R. Dum, Phys. Rev. Lett. 77, 5315 (1996);
+A = w0^2 with i = 0 that of the ideal gas. A and i are measured on the cloud and frozen until it is measured again. The
+choice only decides whether the cloud stays well inside its box of coordinates and wave numbers; the equation of motion
+in the frame is exact for any of them.
 """
 
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 from typing import Protocol
 
 import numpy as np
@@ -22,10 +22,10 @@ from trapsim.cloud.cloud import Cloud
 from trapsim.constants import HBAR
 from trapsim.measure.observables import Profile
 from trapsim.space.frame import Frame
-from trapsim.terms.part import Array, Part, steered
+from trapsim.terms.part import ALL, Array, Part, steered
 
-#: population of the spectral tail whose wave number counts as the fastest in the cloud
-TAIL = 1e-6
+#: the share of the box that those may fill
+INSIDE = 0.9
 
 
 class Interval(Protocol):
@@ -54,6 +54,8 @@ class LawStart:
         1/s^2 per unit of coupling, from the mean field.
     var : (3,)
         Variance of xi when measured, m^2.
+    edge : float
+        Highest population near the edges of the axes when measured.
     """
 
     time: float
@@ -61,47 +63,75 @@ class LawStart:
     A: Array
     i: Array
     var: Array
+    edge: float = 0.0
 
 
-def measure_law(cloud: Cloud, seen: Profile, *, floor: bool) -> LawStart:
+def measure_law(
+    cloud: Cloud, seen: Profile, *, tail: float | None, moving: Sequence[bool] = ALL, front: float = 0.0
+) -> LawStart:
     """Measure the constants of the frame law on a cloud.
 
     Parameters
     ----------
-    floor : bool
-        Whether A must also hold the fastest atoms in the box (in flight, not in a trap).
+    tail : float or None
+        A also holds the fastest and furthest atoms in the box, all but this share; None does not ask for it (in a trap).
+    moving : three flags
+        Directions in which the frame moves; in the others A and i are zero.
+    front : float
+        Velocity of atoms that run ahead of the rest, m/s, which A must hold as well.
     """
     A, i = np.zeros(3), np.zeros(3)
     for j in range(3):
         axis = cloud.space.axis(j)
-        if axis.uniform:
+        if axis.uniform or not moving[j]:
             continue
-        A[j] = cloud.q**2 * seen.k_var[j] / seen.var[j]
+        # the part of the spread of k that is not mere expansion against the frame
+        own = seen.k_var[j] - seen.cov[j] ** 2 / seen.var[j]
+        A[j] = cloud.q**2 * own / seen.var[j]
         i[j] = cloud.q * seen.quartic / (2 * seen.norm * seen.var[j])
-        if floor:
-            fastest = tail_k(axis.k, seen.spectrum[cloud.space.dim(j)] * axis.spectral_weights)
-            A[j] = max(A[j], (cloud.q * fastest / axis.half_extent) ** 2)
+        if tail is not None:
+            A[j] = max(A[j], _holding(cloud, seen, j, tail, front))
     return LawStart(cloud.time, cloud.frame, A, i, seen.var)
 
 
-def tail_k(k: Array, population: Array) -> float:
-    """The |k| beyond which the share `TAIL` of a spectrum lies, 1/m."""
-    order = np.argsort(np.abs(k))
+def _holding(cloud: Cloud, seen: Profile, j: int, tail: float, front: float) -> float:
+    """The A that keeps the fastest atoms inside the part of the box that is not watched, 1/s^2.
+
+    In the end b' = sqrt(bdot^2 + A/b^2), and atoms of velocity v sit at xi = v/b'. Their velocity is that of the flow at
+    its fastest, with the spread of k that is not part of the flow on top.
+    """
+    axis, d = cloud.space.axis(j), cloud.space.dim(j)
+    b, bdot, q = cloud.frame.b[j], cloud.frame.bdot[j], cloud.q
+    fastest = reach(axis.k, seen.spectrum[d] * axis.spectral_weights, tail)
+    furthest = reach(axis.points, seen.density[d] * axis.weights, tail)
+    inside = np.abs(axis.points) <= furthest
+    places, flow = axis.points[inside], seen.flow[d][inside]
+    outward = np.max(bdot * np.abs(places) + (q / b) * np.sign(places) * flow)
+    spread = np.sqrt(max(fastest**2 - np.max(np.abs(flow)) ** 2, 0.0))
+    velocity = max(outward, 0.0) + q * spread / b + front
+    return float(b**2 * max((velocity / (INSIDE * axis.half_extent)) ** 2 - bdot**2, 0.0))
+
+
+def reach(places: Array, population: Array, tail: float) -> float:
+    """The |place| beyond which only the share `tail` of a population lies."""
+    order = np.argsort(np.abs(places))
     beyond = population[order][::-1].cumsum()[::-1] / population.sum()
-    inside = np.nonzero(beyond > TAIL)[0]
-    return float(np.abs(k)[order][inside[-1]])
+    inside = np.nonzero(beyond > tail)[0]
+    return float(np.abs(places)[order][inside[-1]])
 
 
 class MovingLaw:
     """The frame moves and scales with the cloud, from a `LawStart` to the end of an interval.
 
-    Integrated once with dense output (DOP853) for b, b', X, X', K_j = int dt/b_j^2, J = int c dt/B.
+    In directions that do not move, b and X stand still (their rates are zero at the start). Integrated once with dense
+    output (DOP853) for b, b', X, X', K_j = int dt/b_j^2, J = int c dt/B.
     """
 
-    def __init__(self, start: LawStart, interval: Interval, *, q: float) -> None:
+    def __init__(self, start: LawStart, interval: Interval, *, q: float, moving: Sequence[bool] = ALL) -> None:
         self.start = start
         self.interval = interval
         mass = HBAR / q
+        free = np.asarray(moving, dtype=float)
         length = interval.stop - start.time
 
         def slope(t: float, y: Array) -> Array:
@@ -110,8 +140,8 @@ class MovingLaw:
             coupling = interval.coupling(t)
             inverse = 1 / b
             B = b[0] * b[1] * b[2]
-            acceleration = -curvature / mass * b + start.A * inverse**3 + start.i * coupling / B * inverse
-            return np.concatenate([bdot, acceleration, Xdot, force / mass, inverse**2, [coupling / B]])
+            acceleration = free * (-curvature / mass * b + start.A * inverse**3 + start.i * coupling / B * inverse)
+            return np.concatenate([bdot, acceleration, Xdot, free * force / mass, inverse**2, [coupling / B]])
 
         f = start.frame
         y0 = np.concatenate([f.b, f.bdot, f.X, f.Xdot, np.zeros(4)])
@@ -147,7 +177,7 @@ class MovingLaw:
 class StandingLaw:
     """The frame stands still in the lab; everything acts on the wave function itself."""
 
-    def __init__(self, start: LawStart, interval: Interval, *, q: float) -> None:
+    def __init__(self, start: LawStart, interval: Interval) -> None:
         self.start = start
         self.interval = interval
 
@@ -155,7 +185,9 @@ class StandingLaw:
         return self.start.frame
 
     def integrals(self, t0: float, t1: float) -> tuple[Array, float]:
-        return np.full(3, t1 - t0), (t1 - t0) * float(np.mean([self.interval.coupling(t) for t in gauss(t0, t1)]))
+        frame = self.start.frame
+        coupling = float(np.mean([self.interval.coupling(t) for t in gauss(t0, t1)]))
+        return (t1 - t0) / frame.b**2, (t1 - t0) * coupling / frame.B
 
     def turn(self, dK: Array) -> tuple[Array, Array]:
         return np.zeros(3), dK
@@ -165,8 +197,3 @@ def gauss(t0: float, t1: float) -> tuple[float, float]:
     """The two points of Gauss's rule, inside the interval."""
     middle, half = (t0 + t1) / 2, (t1 - t0) / (2 * np.sqrt(3))
     return middle - half, middle + half
-
-
-def standing_start(cloud: Cloud, seen: Profile) -> LawStart:
-    """A `LawStart` for a frame that stands."""
-    return LawStart(cloud.time, replace(cloud.frame, bdot=np.zeros(3), Xdot=np.zeros(3)), np.zeros(3), np.zeros(3), seen.var)

@@ -1,14 +1,15 @@
 """One step: half a potential flow, a kinetic flow, half a potential flow (Strang).
 
-In the frame, i phi_t = [ sum_j -(q/2 b_j^2) d_j^2 + U/hbar + c/B |phi|^2 ] phi. The kinetic energy and the share A_j of the
-parabola turn the cloud in phase space by theta_j = sqrt(A_j) dK_j, and that turn is done without error:
+In the frame, i phi_t = [ sum_j -(q/2 b_j^2) d_j^2 + U/hbar + c/B |phi|^2 ] phi. The kinetic energy and the share A_j of
+the parabola turn the cloud in phase space by theta_j = sqrt(A_j) dK_j, and that turn is done without error: with
+a = sqrt(A), a turn by theta is
 
-    turn by theta = exp(-i a tan(theta/2) xi^2/2q) exp(-i q k^2 sin(theta)/2a) exp(-i a tan(theta/2) xi^2/2q),  a = sqrt(A)
+    exp(-i a tan(theta/2) xi^2/2q) exp(-i q k^2 sin(theta)/2a) exp(-i a tan(theta/2) xi^2/2q)
 
-(S. A. Chin and E. Krotscheck, Phys. Rev. E 72, 036705 (2005), give it for the rotating trap). What is left is exact too,
-exp(-i [ dJ ( |phi|^2 + sum_j i_j xi_j^2/(2 q) ) + int V_rest dt/hbar ]); only the two together are split. So an ideal gas
-in any harmonic trap, or in flight, moves without error at any step. All integrals are those of the frame law over the very
-interval of the flow, so that nothing is ever evaluated at a jump.
+(S. A. Chin and E. Krotscheck, Phys. Rev. E 72, 036705 (2005), give it for the rotating trap). What is left is exact
+too, exp(-i [ dJ ( |phi|^2 + sum_j i_j xi_j^2/(2 q) ) + int V_rest dt/hbar ]); only the two together are split. So an
+ideal gas in any harmonic trap, or in flight, moves without error at any step. All integrals are those of the frame law
+over the very interval of the flow, so that nothing is ever evaluated at a jump.
 """
 
 from __future__ import annotations
@@ -22,6 +23,8 @@ from trapsim.constants import HBAR
 from trapsim.evolve.scaling import MovingLaw, StandingLaw, gauss
 from trapsim.space.space import Array, Space
 
+#: rad of the fastest change of the potential per half step, for Gauss's rule of two points to be good to 1e-5
+SAMPLED = 0.6
 Rest = Callable[[float], Array | float]
 
 
@@ -36,13 +39,18 @@ class SplitStep:
         hbar/m.
     rest : callable
         t -> potential energy not steered, J on the points, or 0.0.
+    rate : callable
+        t -> how fast that energy changes at the points, rad/s.
     """
 
-    def __init__(self, space: Space, law: MovingLaw | StandingLaw, *, q: float, rest: Rest) -> None:
+    def __init__(
+        self, space: Space, law: MovingLaw | StandingLaw, *, q: float, rest: Rest, rate: Callable[[float], float]
+    ) -> None:
         self.space = space
         self.law = law
         self.q = q
         self.rest = rest
+        self.rate = rate
         self.pairs = 0.0
         self._x2 = [[a.x2(j) for j in a.covers] for a in space.axes]
         self._theta = np.empty(space.shape)
@@ -97,6 +105,19 @@ class SplitStep:
         """
         dK, dJ = self.law.integrals(t0, t1)
         return float(0.5 * self.q * self._fastest @ dK) + abs(dJ) * peak
+
+    def turned(self, t0: float, t1: float) -> float:
+        """By how much phase space turns over an interval, rad."""
+        return float(np.max(np.sqrt(self.law.start.A) * self.law.integrals(t0, t1)[0]))
+
+    def longest(self, t: float) -> float:
+        """The longest step, s, that still samples what is not steered well at two points."""
+        return SAMPLED / max(self.rate(t), 1e-300)
+
+    def rest_phase_rate(self, t: float) -> float:
+        """Range of the potential energy that is not steered, over hbar, rad/s."""
+        rest = self.rest(t)
+        return 0.0 if np.isscalar(rest) else float(np.ptp(rest)) / HBAR
 
     def mean_field_phase(self, t0: float, t1: float, peak: float) -> float:
         """Phase of the mean field over an interval where the density in the frame is `peak`."""

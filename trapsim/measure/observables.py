@@ -18,6 +18,9 @@ from trapsim.terms.part import Array
 #: points on either side of the centre from which the density at the centre is found
 NEAR = 7
 
+#: a density below this share of its peak has no flow worth asking for
+FAINT = 1e-10
+
 
 @dataclass(frozen=True)
 class Profile:
@@ -37,6 +40,8 @@ class Profile:
         Symmetrised covariance of xi and k.
     quartic : float
         Integral of |phi|^4.
+    flow : list of (n,) arrays
+        Per array dimension, the mean of k at each place; 0 where there is next to nothing.
     """
 
     norm: float
@@ -48,6 +53,7 @@ class Profile:
     k_var: Array
     cov: Array
     quartic: float
+    flow: list[Array]
 
 
 def profile(cloud: Cloud) -> Profile:
@@ -60,11 +66,14 @@ def profile(cloud: Cloud) -> Profile:
     spectrum = space.spectral_marginals(spectrum_samples.real**2 + spectrum_samples.imag**2)
     norm = float(np.dot(density[0], space.axes[0].weights))
     mean, var, k_mean, k_var, cov = (np.zeros(3) for _ in range(5))
+    flow = [np.zeros(a.n) for a in space.axes]
     for d, axis in enumerate(space.axes):
         if axis.uniform:
             continue
         twist = np.conj(cloud.phi) * space.gradient(cloud.phi, d)
-        lever = float(np.dot(space.marginals(twist.imag)[d], axis.weights * axis.lever)) / norm
+        twists = space.marginals(twist.imag)[d]
+        lever = float(np.dot(twists, axis.weights * axis.lever)) / norm
+        flow[d] = np.divide(twists, density[d], out=np.zeros(axis.n), where=density[d] > FAINT * density[d].max())
         for j in axis.covers:
             weighted = density[d] * axis.weights / norm
             spectral = spectrum[d] * axis.spectral_weights / norm
@@ -73,7 +82,7 @@ def profile(cloud: Cloud) -> Profile:
             k_mean[j] = spectral @ axis.k1(j)
             k_var[j] = spectral @ axis.k2(j) - k_mean[j] ** 2
             cov[j] = lever - mean[j] * k_mean[j]
-    return Profile(norm, density, spectrum, mean, var, k_mean, k_var, cov, quartic)
+    return Profile(norm, density, spectrum, mean, var, k_mean, k_var, cov, quartic, flow)
 
 
 @dataclass(frozen=True)

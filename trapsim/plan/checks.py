@@ -12,6 +12,8 @@ from trapsim.fields import ORIGIN
 from trapsim.plan.plan import Numerics, Track, with_mass
 from trapsim.plan.stages import Stage, Switches
 from trapsim.quantities import human
+from trapsim.terms.beam import Beam
+from trapsim.terms.box import Box
 from trapsim.terms.field import Gravity
 from trapsim.terms.part import Part
 
@@ -81,6 +83,9 @@ def check_hold(trap: Mapping[str, Part], gravity: Gravity | None, numerics: Nume
     for part in trap.values():
         pull, curvature = _of_unit_mass(part).steer(ORIGIN)
         holds |= part.confines & (np.asarray(curvature) > 0)
+        if isinstance(part, Box | Beam) and part.strength > 0:
+            # a box holds the atoms without a curvature, a beam where they come to rest, which is looked for later
+            holds |= True
         fall = fall + (np.zeros(3) if part.confines else np.asarray(pull))
     loose = [j for j in range(3) if not holds[j] and not numerics.extent[j]]
     falling = [j for j in range(3) if not holds[j] and numerics.extent[j] and abs(fall[j]) > _NO_FALL]

@@ -28,12 +28,15 @@ class Context:
         Parts whose kind could not be read, so that nobody knows what may be changed in them.
     target : Entry or None
         What the change being read is a change of.
+    units_of : mapping of str to mapping
+        Units that mean something only for the part of that name.
     """
 
     units: Mapping[str, float] = field(default_factory=dict)
     targets: Mapping[str, Entry] = field(default_factory=dict)
     unsure: frozenset[str] = frozenset()
     target: Entry | None = None
+    units_of: Mapping[str, Mapping[str, float]] = field(default_factory=dict)
 
 
 NOWHERE = Context()
@@ -184,7 +187,8 @@ def _changes(raw: Any, about: Entry, path: str, context: Context) -> Reading:
         if target not in context.targets:
             complaints += [] if target.partition(".")[0] in context.unsure else [_no_target(spot, target, context)]
             continue
-        inner = dataclasses.replace(context, target=context.targets[target])
+        own = context.units_of.get(target.partition(".")[0], {})
+        inner = dataclasses.replace(context, target=context.targets[target], units=own)
         if isinstance(given, Mapping):
             reading = parse(about.of, given, spot, inner)
         else:

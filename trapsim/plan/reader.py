@@ -22,6 +22,9 @@ from trapsim.species import Atoms
 from trapsim.terms.field import Gravity
 from trapsim.terms.part import Part
 
+#: kg; stands in for the mass of atoms that could not be read, so that the rest of the plan still can
+UNKNOWN_MASS = 1e-25
+
 
 def read_plan(path: str | os.PathLike[str], changes: Mapping[str, Any] | None = None) -> Plan:
     """Read a plan file, with some values replaced by path if wanted.
@@ -144,11 +147,12 @@ def assemble(tree: Tree, *, name: str, source: str = "") -> tuple[Plan | None, l
 
     title = keep(read(tree["title"], entries(Plan)["title"], "title")) if "title" in tree else ""
     atoms = _atoms(tree, keep, complaints)
-    trap = _trap(tree.get("trap", {}), keep, complaints)
+    mass = atoms.mass if atoms is not None else UNKNOWN_MASS
+    trap = _trap(tree.get("trap", {}), keep, complaints, mass)
     gravity = keep(parse(Gravity, tree["gravity"], "gravity")) if "gravity" in tree else None
     numerics = keep(parse(Numerics, tree.get("numerics", {}), "numerics"))
     track = keep(parse(Track, tree.get("track", {}), "track"))
-    sequence = _sequence(tree, trap, keep, complaints)
+    sequence = _sequence(tree, trap, keep, complaints, mass)
 
     complaints += checks.check_parts(trap)
     if numerics is not None:
@@ -160,7 +164,6 @@ def assemble(tree: Tree, *, name: str, source: str = "") -> tuple[Plan | None, l
         complaints += checks.check_hold(trap, gravity, numerics)
     if complaints:
         return None, complaints
-    trap = {part_name: with_mass(part, atoms.mass) for part_name, part in trap.items()}
     return Plan(title=title, name=name, atoms=atoms, trap=trap, gravity=gravity, sequence=sequence, numerics=numerics,
                 track=track, sigma=sigma, source=source), []
 
@@ -190,7 +193,7 @@ def _kind(raw: Mapping[str, Any], place: str, key: str, kinds: Mapping[str, type
     return Complaint(spot, shown(given), f"trapsim does not know this {key}", f"{hint}known here: {listed(kinds)}")
 
 
-def _trap(raw: Any, keep: Any, complaints: list[Complaint]) -> dict[str, Part]:
+def _trap(raw: Any, keep: Any, complaints: list[Complaint], mass: float) -> dict[str, Part]:
     if not isinstance(raw, Mapping):
         complaints.append(Complaint("trap", shown(raw), "the trap is made of named parts", "write [trap.dipole]"))
         return {}
@@ -209,32 +212,37 @@ def _trap(raw: Any, keep: Any, complaints: list[Complaint]) -> dict[str, Part]:
         if isinstance(cls, Complaint):
             complaints.append(cls)
             continue
-        part = keep(parse(cls, table, place, also=("kind",)))
+        part = keep(parse(cls, table, place, Context(units=cls.units(table, mass)), also=("kind",)))
         if part is not None:
-            trap[name] = part
+            complaints.extend(part.complaints(place))
+            trap[name] = with_mass(part, mass)
     return trap
 
 
-def _changeable(trap: Any) -> Context:
+def _changeable(trap: Any, mass: float) -> Context:
     """What a stage may change, also in parts that are not written well."""
     targets: dict[str, Entry] = {}
+    units: dict[str, Mapping[str, float]] = {}
     unsure = set()
     for name, table in trap.items() if isinstance(trap, Mapping) else ():
         kind = table.get("kind") if isinstance(table, Mapping) else None
         if isinstance(kind, str) and kind in PARTS:
             targets |= rampable(name, PARTS[kind])
+            units[name] = PARTS[kind].units(table, mass)
         else:
             unsure.add(name)
-    return Context(targets={**targets, **ATOMS_TARGETS}, unsure=frozenset(unsure))
+    return Context(targets={**targets, **ATOMS_TARGETS}, unsure=frozenset(unsure), units_of=units)
 
 
-def _sequence(tree: Tree, trap: Mapping[str, Part], keep: Any, complaints: list[Complaint]) -> tuple[Any, ...]:
+def _sequence(
+    tree: Tree, trap: Mapping[str, Part], keep: Any, complaints: list[Complaint], mass: float
+) -> tuple[Any, ...]:
     raw = tree.get("sequence", [])
     if not isinstance(raw, list) or not all(isinstance(stage, Mapping) for stage in raw):
         got = "" if isinstance(raw, Mapping) else shown(raw)
         complaints.append(Complaint("sequence", got, "the sequence is a list of stages", "write [[sequence]] for each"))
         return ()
-    context = _changeable(tree.get("trap", {}))
+    context = _changeable(tree.get("trap", {}), mass)
     paths, stages = stage_paths(raw), []
     for i, (table, place, name) in enumerate(zip(raw, paths, stage_names(raw), strict=True)):
         cls = _kind(table, place, "stage", STAGES)

@@ -10,6 +10,7 @@ from typing import Any, ClassVar
 from trapsim.errors import Complaint
 from trapsim.fields import Triple, entry
 from trapsim.quantities import human
+from trapsim.terms.lattice import Lattice
 from trapsim.terms.part import Part
 
 SHAPES = ("linear", "smooth", "exponential")
@@ -192,7 +193,35 @@ class Kick(Stage):
     kind: ClassVar[str] = "kick"
     duration: ClassVar[float] = 0.0
 
-    velocity: Triple = entry("velocity", "velocity added along x, y, z", count=3)
+    velocity: Triple | None = entry("velocity", "velocity added along x, y, z", count=3, default=None)
+    recoils: float | None = entry(
+        "number", "in place of the velocity: that many photon recoils of a lattice, along its axis", default=None
+    )
+    of: str | None = entry("text", "the lattice whose recoils are meant", default=None)
+
+    def settled(self, place: str, parts: Mapping[str, Part], switches: Switches) -> tuple[Kick, list[Complaint]]:
+        stage, complaints = super().settled(place, parts, switches)
+        if (self.velocity is None) == (self.recoils is None):
+            complaints.append(Complaint(
+                f"{place}.velocity", "neither" if self.velocity is None else "recoils as well",
+                "a kick is given as a velocity or in recoils",
+                'write velocity = ["0 mm/s", "0 mm/s", "3 mm/s"], or recoils = 2, of = "light"',
+            ))
+            return stage, complaints
+        if self.recoils is None:
+            if self.of is not None:
+                complaints.append(Complaint(f"{place}.of", f'"{self.of}"', "this goes with recoils", "leave it out"))
+            return stage, complaints
+        lattices = {name: part for name, part in parts.items() if isinstance(part, Lattice)}
+        if self.of not in lattices:
+            known = ", ".join(lattices) or "none"
+            complaints.append(Complaint(f"{place}.of", f'"{self.of}"' if self.of else "", "the name of a lattice",
+                                        f"lattices of this plan: {known}"))
+            return stage, complaints
+        lattice = lattices[self.of]
+        velocity = [0.0, 0.0, 0.0]
+        velocity[lattice.direction] = self.recoils * lattice.recoil_velocity
+        return dataclasses.replace(stage, velocity=tuple(velocity)), complaints
 
 
 @dataclass(frozen=True, kw_only=True)

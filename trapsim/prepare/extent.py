@@ -3,15 +3,19 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 from scipy import fft, optimize
 
 from trapsim.cloud.shapes import chemical_potential_guess
+from trapsim.constants import HBAR
+from trapsim.errors import PlanError
 from trapsim.evolve.guards import OUTER
+from trapsim.quantities import human
 from trapsim.space.axes import Array, Axis, Radial, Wave
 from trapsim.space.space import Space
+from trapsim.terms.box import Box
 
 
 @dataclass(frozen=True)
@@ -48,20 +52,50 @@ class Accuracy:
     norm: float
 
 
+#: room around a box, in half lengths of it
+HEAD_START = 1.8
+
 ACCURACY = {
     "draft": Accuracy(2.2, 3e-4, 2.4, 4.0, 3.5, 0.5, 1e-6, 1e-3, 1e-3, 1e-2),
     "normal": Accuracy(1.4, 1e-4, 2.4, 5.5, 5.0, 1.5, 1e-7, 1e-4, 1e-4, 1e-3),
-    "fine": Accuracy(1.1, 1e-5, 0.8, 7.0, 6.0, 3.0, 1e-9, 1e-6, 1e-6, 1e-4),
+    "fine": Accuracy(1.1, 1e-5, 0.8, 7.0, 6.0, 4.0, 1e-9, 1e-6, 1e-6, 1e-4),
 }
 
 
 @dataclass(frozen=True)
 class Lengths:
-    """What a trapped cloud needs per direction: half the room, and its finest length, m (infinite where untrapped)."""
+    """What a trapped cloud needs per direction.
+
+    Parameters
+    ----------
+    half : (3,)
+        Half the room, m; infinite where nothing says.
+    finest : (3,)
+        Its finest length, m; infinite where nothing varies.
+    mu : float
+        About the chemical potential over hbar, rad/s.
+    spacing : (3,)
+        The widest spacing allowed for other reasons, m (fast orders of a lattice); infinite where there are none.
+    period : (3,)
+        Period that the grid must be commensurate with, m; 0 where there is none.
+    per_period : (3,)
+        Points per period that are enough.
+    periodic : (3,)
+        Whether the plan makes the direction periodic: it has a length, and nothing that confines.
+    """
 
     half: Array
     finest: Array
     mu: float
+    spacing: Array = field(default_factory=lambda: np.full(3, np.inf))
+    period: Array = field(default_factory=lambda: np.zeros(3))
+    per_period: Array = field(default_factory=lambda: np.zeros(3, dtype=int))
+    periodic: Array = field(default_factory=lambda: np.zeros(3, dtype=bool))
+
+    @property
+    def uniform(self) -> Array:
+        """Directions (3,) along which nothing varies."""
+        return np.isinf(self.finest) & np.isinf(self.spacing) & (self.period == 0)
 
 
 def cloud_lengths(omega: Array, q: float, scattering_number: float, accuracy: Accuracy) -> Lengths:
@@ -82,7 +116,7 @@ def cloud_lengths(omega: Array, q: float, scattering_number: float, accuracy: Ac
     accuracy : Accuracy
     """
     omega = np.asarray(omega, dtype=float)
-    mu = chemical_potential_guess(omega, q, scattering_number) if omega.any() else 0.0
+    mu = chemical_potential_guess(omega, q, scattering_number) if omega.any() else 4 * np.pi * q * scattering_number
     half, finest = np.full(3, np.inf), np.full(3, np.inf)
     for j in np.nonzero(omega)[0]:
         w = omega[j]
@@ -97,7 +131,7 @@ def cloud_lengths(omega: Array, q: float, scattering_number: float, accuracy: Ac
             (radius + accuracy.inner * edge) / OUTER,
         )
         finest[j] = min(edge, 0.42 * oscillator)
-    if scattering_number < 0:
+    if scattering_number < 0 and omega.any():
         finest *= _drawn_together(omega, q, abs(scattering_number))
     return Lengths(half, finest, mu)
 
@@ -125,6 +159,31 @@ def _tail_end(radius: float, tail: float) -> float:
     return float(optimize.brentq(missing, radius, radius + 2 * tail + 2))
 
 
+def box_lengths(lengths: Lengths, box: Box, q: float, accuracy: Accuracy, free: Array) -> Lengths:
+    """The lengths of a cloud that a box holds along the directions `free` of other traps.
+
+    Into the wall it falls off over sqrt(q hbar/2 (height - mu)).
+    """
+    mu = max(lengths.mu, q * np.sum((np.pi / np.asarray(box.size)) ** 2) / 2)
+    height = box.strength * box.height / HBAR
+    if height < 1.2 * mu:
+        raise PlanError.at(
+            "trap", f"walls of {human(box.height, 'energy')}",
+            f"the cloud needs {human(HBAR * mu, 'energy')} and would spill over them",
+            "make the walls higher, the box larger, or take fewer atoms",
+        )  # fmt: skip
+    # at the foot of the wall, where it is as high as mu, the cloud ends within (q hbar/2 slope)^(1/3)
+    foot = (q * box.edge / (0.6 * height)) ** (1 / 3)
+    decay = np.sqrt(q / (2 * (height - mu)))
+    half, finest = lengths.half.copy(), lengths.finest.copy()
+    for j in np.nonzero(free)[0]:
+        wall = box.size[j] / 2
+        # when it is let go, its rim runs off at twice the speed of sound before the frame has gathered speed
+        half[j] = max(wall + 1.2 * box.edge + accuracy.tail * decay, HEAD_START * wall)
+        finest[j] = min(1.1 * foot, box.size[j] / 8)
+    return replace(lengths, half=half, finest=finest, mu=mu)
+
+
 def choose_space(
     words: Sequence[str],
     lengths: Lengths,
@@ -150,17 +209,52 @@ def choose_space(
     groups = ([pair] if pair else []) + [(j,) for j in range(3) if words[j] == "wave"]
     for group in groups:
         half = max(extent[j] / 2 if extent[j] else lengths.half[j] for j in group)
-        finest = min(lengths.finest[j] for j in group)
+        spacing = min(min(accuracy.spacing * lengths.finest[j], lengths.spacing[j]) for j in group)
         asked = max(points[j] for j in group)
         if group == pair:
-            n = asked or max(8, int(np.ceil(half / (accuracy.spacing * finest))) + 2)
+            n = asked or max(8, int(np.ceil(half / spacing)) + 2)
             axes.append(Radial(group, n, half))
-        elif np.isinf(finest):
+        elif lengths.period[group[0]]:
+            axes.append(_commensurate(group[0], half, spacing, lengths, asked, fixed=bool(extent[group[0]])))
+        elif np.isinf(spacing):
             axes.append(Wave(group, asked or 1, half))
         else:
-            n = asked or _fast_even(max(12, 2 * half / (accuracy.spacing * finest)))
+            n = asked or _fast_even(max(12, 2 * half / spacing))
             axes.append(Wave(group, n, half))
     return Space(axes, threads=threads)
+
+
+def _commensurate(j: int, half: float, spacing: float, lengths: Lengths, asked: int, *, fixed: bool) -> Wave:
+    """A wave axis with a whole number of points per lattice period, and a whole number of periods.
+
+    A grid that is not commensurate with a lattice that holds the cloud gives another lattice at every site.
+    """
+    period, place = lengths.period[j], f"numerics.extent[{j}]"
+    periods = 2 * half / period
+    if fixed:
+        if abs(periods - round(periods)) > 1e-6 or round(periods) < 1:
+            raise PlanError.at(
+                place, human(2 * half, "length"), f"a whole number of lattice periods of {human(period, 'length')}",
+                f"write {human(max(round(periods), 1) * period, 'length', figures=9)}",
+            )  # fmt: skip
+        periods = round(periods)
+    per = max(int(lengths.per_period[j]), int(np.ceil(period / spacing)) if np.isfinite(spacing) else 1)
+    if asked:
+        per = asked / (periods if fixed else round(asked * 2 * half / (asked * period)))
+        if per != int(per):
+            raise PlanError.at(
+                f"numerics.points[{j}]", str(asked), "a whole number of points per lattice period",
+                f"write a multiple of the number of periods, {round(periods)}",
+            )  # fmt: skip
+        per = int(per)
+    if not fixed:
+        # a number of periods that makes the number of points transform well
+        periods = next(m for m in range(int(np.ceil(periods)), 10**7) if _fast(m * per))
+    return Wave((j,), int(periods * per), periods * period / 2)
+
+
+def _fast(n: int) -> bool:
+    return n % 2 == 0 and fft.next_fast_len(n) == n
 
 
 def _fast_even(n: float) -> int:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import os
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 
 import numpy as np
 
@@ -14,11 +14,14 @@ from trapsim.evolve.guards import Guards
 from trapsim.evolve.march import Leg, Pace
 from trapsim.evolve.relax import Hamiltonian
 from trapsim.plan.plan import Plan
-from trapsim.prepare.extent import ACCURACY, Accuracy, Lengths, choose_space, cloud_lengths
+from trapsim.prepare.extent import ACCURACY, Accuracy, Lengths, choose_space
+from trapsim.prepare.needs import hold_orders, measure_up
+from trapsim.prepare.stretch import Stretch
 from trapsim.prepare.symmetry import choose_words, round_directions
 from trapsim.prepare.timeline import Step, Timeline, build_timeline
 from trapsim.space.frame import Frame
 from trapsim.space.space import Array, Space
+from trapsim.terms.box import Box
 from trapsim.terms.part import remainder, steered
 
 AXES = "xyz"
@@ -79,21 +82,29 @@ class Setup:
 
     def hamiltonian(self) -> Hamiltonian:
         """What the ground state minimises."""
-        parts, origin, frame = self.timeline.initial.parts_at(0.0), self.timeline.origin, self.frame()
+        initial, origin, frame = self.timeline.initial, self.timeline.origin, self.frame()
+        parts = initial.parts_at(0.0)
+        along = [j not in initial.gripped() for j in range(3)]
         _, curvature = steered(parts, origin)
         lab = tuple(frame.lab(x, j) for j, x in enumerate(self.space.coordinates()))
-        energy = self.space.quadratic(0.5 * curvature) + remainder(parts, origin, *lab)
+        taken = self.space.quadratic(0.5 * curvature * along)
+        energy = taken + remainder(parts, origin, *lab, steered_along=along)
         return Hamiltonian(self.space, energy / HBAR, coupling=self.coupling, q=self.q)
 
     def first_guess(self, hamiltonian: Hamiltonian) -> Array:
         """Thomas-Fermi where the mean field rules, the best Gaussian otherwise."""
-        if self.coupling > 0 and self.lengths.mu > 3 * self.omega.sum() / 2:
-            return shapes.thomas_fermi(self.space, hamiltonian.V, self.coupling, soft=0.3 * self.omega.max())
-        return shapes.gaussian(self.space, shapes.gaussian_widths(self.omega, self.q, self.scattering_number))
+        number = self.scattering_number
+        widths = shapes.gaussian_widths(self.omega, self.q, number) if self.omega.any() else np.full(3, np.inf)
+        flat = self.omega.sum() == 0 or bool(self.timeline.initial.gripped())
+        if self.coupling > 0 and (flat or self.lengths.mu > 3 * self.omega.sum() / 2):
+            soft = 0.3 * max(self.omega.max(), 0.3 * self.lengths.mu)
+            return shapes.thomas_fermi(self.space, hamiltonian.V, self.coupling, soft=soft)
+        held = np.isinf(widths) & np.isfinite(self.lengths.finest)
+        return shapes.gaussian(self.space, np.where(held, self.lengths.half / 3, widths))
 
 
 def scattering_number(coupling: float, q: float, half: Array, omega: Array) -> float:
-    """N a in m over the full lengths of the directions that nothing traps."""
+    """N a in m over the full lengths of the directions that nothing traps harmonically."""
     free = np.asarray(omega) == 0
     return coupling / (4 * np.pi * q) / float(np.prod(2 * np.asarray(half)[free]))
 
@@ -104,32 +115,30 @@ def prepare(plan: Plan) -> Setup:
     Raises
     ------
     PlanError
-        When axes are forced that the plan does not allow, or memory is too small.
+        When axes are forced that the plan does not allow, memory is too small, or nothing holds the cloud.
     """
     timeline = build_timeline(plan)
     accuracy = ACCURACY[plan.numerics.accuracy]
     q = HBAR / plan.atoms.mass
     coupling = timeline.initial.coupling(0.0)
     _, curvature = steered(timeline.initial.parts_at(0.0), timeline.origin)
-    omega = np.sqrt(curvature / plan.atoms.mass)
-    extent = np.asarray(plan.numerics.extent, dtype=float)
-    number = scattering_number(coupling, q, extent / 2, omega)
-    lengths = cloud_lengths(omega, q, number, accuracy)
-    half = np.where(extent > 0, extent / 2, lengths.half)
-    lengths = replace(lengths, half=half)
+    omega = np.sqrt(np.maximum(curvature, 0.0) / plan.atoms.mass)
+    needs = measure_up(plan, timeline, omega, q, coupling, accuracy)
     standing = plan.numerics.frame == "lab"
+    moving = [tuple(not standing and not needs.periodic[j] and j not in s.stands for j in range(3)) for s in timeline.steps]
+    lengths = hold_orders(needs, timeline, omega, q, coupling, moving)
     round_about = round_directions(timeline, standing=standing)
-    uniform = omega == 0
-    words = [_words(plan, r, uniform) for r in round_about]
+    words = [_words(plan, r, lengths.uniform) for r in round_about]
     spaces: dict[tuple[str, ...], Space] = {}
     for w in words:
         if w not in spaces:
             spaces[w] = _space(plan, w, lengths, accuracy)
-    legs = _legs(plan, timeline, [spaces[w] for w in words[1:]], moving=not standing)
+    legs = _legs(plan, timeline, [spaces[w] for w in words[1:]], moving)
+    watched = tuple(not p for p in lengths.periodic)
     return Setup(
         plan=plan, timeline=timeline, q=q, coupling=coupling, omega=omega, lengths=lengths, accuracy=accuracy,
         space=spaces[words[0]], legs=legs, pace=Pace(accuracy.tolerance, accuracy.cap),
-        guards=Guards(accuracy.edge, accuracy.spectrum, accuracy.norm), why=_why(plan, round_about, words),
+        guards=Guards(accuracy.edge, accuracy.spectrum, accuracy.norm, watched), why=_why(plan, round_about, words),
         notices=timeline.notices,
     )  # fmt: skip
 
@@ -170,19 +179,28 @@ def memory_needed(space: Space) -> float:
     return 12 * 16.0 * space.size
 
 
-def _legs(plan: Plan, timeline: Timeline, spaces: list[Space], *, moving: bool) -> tuple[Leg, ...]:
+def _legs(
+    plan: Plan, timeline: Timeline, spaces: list[Space], moving: list[tuple[bool, bool, bool]]
+) -> tuple[Leg, ...]:
     legs = []
-    for step, space in zip(timeline.steps, spaces, strict=True):
+    walled = _walls(timeline.initial)
+    for step, space, flags in zip(timeline.steps, spaces, moving, strict=True):
         stage, stretch = plan.sequence[step.stage], step.stretch
         begin, _ = timeline.stage_times[step.stage]
         wanted = [begin + t for t in stage.pictures] + list(plan.track.at)
         legs.append(Leg(
             name=stage.name, kind=stage.kind, stage=step.stage, start=stretch.start, stop=stretch.stop, space=space,
-            interval=stretch, trapped=_held(step), moving=moving,
+            interval=stretch, trapped=_held(step), moving=flags, brief=stage.kind == "pulse",
             landings=tuple(sorted({t for t in wanted if stretch.start < t < stretch.stop})), kick=step.kick,
-            last=step.last,
+            last=step.last, unwalled=walled and not _walls(stretch),
         ))  # fmt: skip
+        walled = walled or _walls(stretch)
     return tuple(legs)
+
+
+def _walls(stretch: Stretch) -> bool:
+    """Whether a box is on all through a stretch."""
+    return any(isinstance(p, Box) and p.strength > DYING for p in stretch.parts_at(stretch.stop))
 
 
 def _held(step: Step) -> bool:

@@ -6,10 +6,15 @@ from collections.abc import Sequence
 
 import numpy as np
 
-from trapsim.prepare.timeline import Stretch, Timeline
+from trapsim.fields import Triple
+from trapsim.prepare.stretch import Stretch
+from trapsim.prepare.timeline import Timeline
+from trapsim.terms.part import About, Array, steered
 
 #: a classical centre that is off by less (m, m/s) has not moved
 NOTHING = 1e-15
+#: m; a cloud this close to a part's own centre sits on it
+NEAR = 1e-12
 
 
 def round_directions(timeline: Timeline, *, standing: bool) -> list[frozenset[int]]:
@@ -17,16 +22,28 @@ def round_directions(timeline: Timeline, *, standing: bool) -> list[frozenset[in
 
     A cloud stays round about a direction as long as everything that has acted on it so far was; once lost, it does
     not come back. A moving frame takes up forces and kicks; a standing one sees them, so there they break roundness.
+
+    Parameters
+    ----------
+    timeline : Timeline
+    standing : bool
+        Whether the frame stands in the lab all the time.
     """
-    still_round = _round_about(timeline.initial)
+    origin = np.concatenate([timeline.origin, np.zeros(3)])
+    everywhere = frozenset({0, 1, 2})
+    pushed = _pushed(timeline.initial, timeline.origin, everywhere if standing else timeline.initial.gripped())
+    still_round = _round_about(timeline.initial, origin, pushed)
     out = [still_round]
-    for step, centre in zip(timeline.steps, timeline.path, strict=True):
-        still_round = still_round & _round_about(step.stretch)
+    before = origin
+    for step, after in zip(timeline.steps, timeline.path, strict=True):
+        pushed = _pushed(step.stretch, tuple(before[:3]), everywhere if standing else step.stands)
         if standing:
-            away = np.abs(centre - np.concatenate([timeline.origin, np.zeros(3)])) > NOTHING
-            moved = away[:3] | away[3:]
-            still_round = still_round - {a for a in range(3) if moved[(a + 1) % 3] or moved[(a + 2) % 3]}
+            away = np.abs(after - origin) > NOTHING
+            pushed |= frozenset(np.nonzero(away[:3] | away[3:])[0])
+        for place in (before, after):
+            still_round = still_round & _round_about(step.stretch, place, pushed)
         out.append(still_round)
+        before = after
     return out
 
 
@@ -36,11 +53,21 @@ def _samples(stretch: Stretch) -> Sequence[float]:
     return tuple(np.linspace(stretch.start, stretch.stop, 7))
 
 
-def _round_about(stretch: Stretch) -> frozenset[int]:
-    out = frozenset({0, 1, 2})
+def _pushed(stretch: Stretch, place: Triple, held: frozenset[int]) -> frozenset[int]:
+    """Those of the directions in which the frame stands along which a steerable force acts at a place."""
+    force, curvature = steered(stretch.parts_at(stretch.start), place)
+    weak = NOTHING * np.abs(curvature).max()
+    return frozenset(j for j in held if abs(force[j]) > weak)
+
+
+def _round_about(stretch: Stretch, place: Array, moved: frozenset[int]) -> frozenset[int]:
+    """Directions about which everything in a stretch is round, seen from a place, for a cloud pushed along `moved`."""
+    out = frozenset(a for a in range(3) if not moved - {a})
     for t in _samples(stretch):
         for part in stretch.parts_at(t):
-            out &= part.symmetry().round_about
+            symmetry = part.symmetry()
+            centred = [not isinstance(e, About) or abs(place[j] - e.x) < NEAR for j, e in enumerate(symmetry.even)]
+            out &= frozenset(a for a in symmetry.round_about if all(centred[j] for j in range(3) if j != a))
     return out
 
 

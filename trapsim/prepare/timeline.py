@@ -8,107 +8,40 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass, field, replace
-from functools import cached_property
 
 import numpy as np
 from scipy import integrate
 
 from trapsim.constants import HBAR
 from trapsim.errors import Notice, PlanError
-from trapsim.fields import Triple
+from trapsim.fields import ORIGIN, Triple
 from trapsim.plan.plan import Plan
 from trapsim.plan.stages import Change, Kick, Pulse, Ramp, Release, Stage
+from trapsim.prepare.rest import equilibrium
+from trapsim.prepare.stretch import HELD, SCATTERING, Stretch
+from trapsim.terms.lattice import Lattice
 from trapsim.terms.part import Array, Part, steered
 from trapsim.terms.ramps import Course, Value
 
-HELD = "held"
-SCATTERING = "atoms.scattering_length"
-
-
-@dataclass(frozen=True)
-class Stretch:
-    """The plan between two edges: an `Interval` for the engine.
-
-    Parameters
-    ----------
-    start, stop : float
-        s.
-    parts : mapping of str to Part
-        As they are at the start.
-    gravity : Part or None
-    courses : mapping of str to Course
-        "dipole.frequency" -> how it changes meanwhile.
-    equilibrium : (3,)
-        Where parts with a held centre keep the cloud.
-    scattering : float
-        m, unless it has a course.
-    factor : float
-        Coupling (m^3/s) per metre of scattering length.
-    """
-
-    start: float
-    stop: float
-    parts: Mapping[str, Part]
-    gravity: Part | None
-    courses: Mapping[str, Course]
-    equilibrium: Triple
-    scattering: float
-    factor: float
-
-    @cached_property
-    def steady(self) -> bool:
-        """Whether nothing changes in it."""
-        return not self.courses
-
-    @cached_property
-    def _fixed(self) -> tuple[Part, ...]:
-        return self._parts(self.start)
-
-    def parts_at(self, t: float) -> tuple[Part, ...]:
-        """The parts that are on (and gravity) with their values at a time inside."""
-        return self._fixed if self.steady else self._parts(t)
-
-    def _parts(self, t: float) -> tuple[Part, ...]:
-        now = dict(self.parts)
-        for path, course in self.courses.items():
-            name, _, key = path.partition(".")
-            if name in now:
-                now[name] = replace(now[name], **{key: course.at(t)})
-        on = [p for p in now.values() if p.strength > 0 and getattr(p, "centre", None) != HELD]
-        held = [p for p in now.values() if p.strength > 0 and getattr(p, "centre", None) == HELD]
-        if self.gravity is not None:
-            on.append(self.gravity)
-        return (*on, *self._held(held, on))
-
-    def _held(self, held: list[Part], others: list[Part]) -> list[Part]:
-        """Parts with a held centre, put where the others' force is balanced at the equilibrium."""
-        if not held:
-            return []
-        force, _ = steered(others, self.equilibrium)
-        stiffness = sum(p.stiffness() for p in held)
-        shift = np.divide(force, stiffness, out=np.zeros(3), where=stiffness > 0)
-        centre = tuple(np.asarray(self.equilibrium) - shift)
-        return [replace(p, centre=centre) for p in held]
-
-    def coupling(self, t: float) -> float:
-        """4 pi q a N at a time inside, m^3/s."""
-        course = self.courses.get(SCATTERING)
-        return self.factor * (course.at(t) if course else self.scattering)
-
-    def confined(self, t: float) -> bool:
-        """Whether a part that confines is on at a time inside."""
-        return any(p.confines and p.strength > 0 for p in self.parts_at(t))
+#: kinds of stage in which a box or a lattice that is on holds the cloud; a pulse only passes over it
+STANDING = ("hold", "ramp")
 
 
 @dataclass(frozen=True)
 class Step:
-    """A stretch together with the stage it belongs to and the kick at its start."""
+    """A stretch together with the stage it belongs to and the kick at its start.
+
+    `stands` are the directions in which a box or a lattice holds the cloud where it is; `fallen` the velocities (3,)
+    that uniform forces have given since each lattice first acted, at the end of the step.
+    """
 
     stretch: Stretch
     stage: int
     first: bool
     last: bool
     kick: Triple
+    stands: frozenset[int]
+    fallen: Mapping[str, Array]
 
 
 @dataclass(frozen=True)
@@ -141,12 +74,6 @@ class Timeline:
     notices: tuple[Notice, ...] = ()
 
 
-def equilibrium(parts: tuple[Part, ...]) -> Array:
-    """Where the steerable forces balance, m; zero along directions that nothing holds."""
-    force, curvature = steered(parts, (0.0, 0.0, 0.0))
-    return np.divide(force, curvature, out=np.zeros(3), where=curvature > 0)
-
-
 def build_timeline(plan: Plan) -> Timeline:
     """Cut a plan's sequence into smooth stretches, and follow the classical centre through them."""
     return _Builder(plan).build()
@@ -173,6 +100,8 @@ class _Builder:
         self.q = HBAR / plan.atoms.mass
         self.gravity = plan.gravity.part(plan.atoms.mass) if plan.gravity is not None else None
         self.still = (0.0, 0.0, 0.0)
+        self.travel: dict[str, float] = {}
+        self.fallen: dict[str, Array] = {}
         at_rest = {n: replace(p, centre=(0.0, 0.0, 0.0)) if getattr(p, "centre", None) == HELD else p
                    for n, p in self.parts.items()}
         origin = equilibrium(self._stretch(0.0, 0.0, {}, at_rest).parts_at(0.0))
@@ -197,8 +126,10 @@ class _Builder:
     def _stretch(
         self, start: float, stop: float, courses: Mapping[str, Course], parts: Mapping[str, Part] | None = None
     ) -> Stretch:
+        now = {n: replace(p, travel=self.travel.get(n, 0.0)) if isinstance(p, Lattice) else p
+               for n, p in (self.parts if parts is None else parts).items()}
         return Stretch(
-            start, stop, dict(self.parts if parts is None else parts), self.gravity, dict(courses), self.still,
+            start, stop, now, self.gravity, dict(courses), self.still,
             self.scattering, 4 * np.pi * self.q * self.plan.atoms.number,
         )  # fmt: skip
 
@@ -206,7 +137,8 @@ class _Builder:
         if isinstance(stage, Kick):
             self.state[3:] += stage.velocity
             self.path.append(self.state.copy())
-            return [Step(self._stretch(start, start, {}), index, True, True, stage.velocity)]
+            stretch = self._stretch(start, start, {})
+            return [Step(stretch, index, True, True, stage.velocity, frozenset(), dict(self.fallen))]
         before = (dict(self.parts), self.scattering)
         courses = self._courses(stage, start, stop)
         windows = self._windows(stage, start, stop)
@@ -220,8 +152,12 @@ class _Builder:
             self._meet_cloud(courses, t0)
             running = {p: c for p, c in courses.items() if c.start <= t0 and t1 <= c.stop and c.before != c.after}
             stretch = self._stretch(t0, t1, running)
-            steps.append(Step(stretch, index, t0 == start, t1 == stop, (0.0, 0.0, 0.0)))
-            self._follow(stretch)
+            stands = stretch.gripped() if stage.kind in STANDING else frozenset()
+            steps.append(Step(stretch, index, t0 == start, t1 == stop, ORIGIN, stands, self._fall(stretch, stands)))
+            self._follow(stretch, stands)
+            for name, part in self.parts.items():
+                if isinstance(part, Lattice):
+                    self.travel[name] = self.travel.get(name, 0.0) + stretch.moved_on(name, t1)
             for path, course in courses.items():
                 if course.stop == t1:
                     self._set(path, course.after)
@@ -292,13 +228,31 @@ class _Builder:
                 self._met.add(name)
                 self.parts[name] = replace(part, centre=tuple(self.state[:3]))
 
-    def _follow(self, stretch: Stretch) -> None:
-        """Carry the classical centre through a stretch."""
+    def _fall(self, stretch: Stretch, stands: frozenset[int]) -> dict[str, Array]:
+        """Add what uniform forces do in a stretch to every lattice that has acted or acts now."""
+        free = np.array([j not in stands for j in range(3)], dtype=float)
+        middle, half = (stretch.start + stretch.stop) / 2, (stretch.stop - stretch.start) / (2 * np.sqrt(3))
+        pushes = [
+            sum((p.steer(ORIGIN)[0] for p in stretch.parts_at(t) if not p.confines), np.zeros(3))
+            for t in (middle - half, middle + half)
+        ]
+        gained = free * (stretch.stop - stretch.start) * (pushes[0] + pushes[1]) / (2 * self.plan.atoms.mass)
+        acting = {n for n, p in stretch.parts.items() if isinstance(p, Lattice) and p.strength > 0}
+        acting |= {c.partition(".")[0] for c in stretch.courses if c.endswith(".strength")}
+        for name, part in stretch.parts.items():
+            if isinstance(part, Lattice) and (name in self.fallen or name in acting):
+                self.fallen[name] = self.fallen.get(name, np.zeros(3)) + gained
+        return dict(self.fallen)
+
+    def _follow(self, stretch: Stretch, stands: frozenset[int]) -> None:
+        """Carry the classical centre through a stretch; where a part holds the cloud, it stands."""
         mass = self.plan.atoms.mass
+        free = np.array([j not in stands for j in range(3)], dtype=float)
+        self.state[3:] *= free
 
         def slope(t: float, y: Array) -> Array:
             force, _ = steered(stretch.parts_at(t), y[:3])
-            return np.concatenate([y[3:], force / mass])
+            return np.concatenate([y[3:], free * force / mass])
 
         solution = integrate.solve_ivp(
             slope, (stretch.start, stretch.stop), self.state, method="DOP853", rtol=1e-12, atol=1e-17

@@ -90,7 +90,7 @@ class Recorder:
     def _too_soon(self, elapsed: float, cloud: Cloud, leg: Leg) -> bool:
         _, curvature = steered(leg.interval.parts_at(cloud.time), tuple(cloud.frame.X))
         fastest = np.sqrt(max(curvature.max(), 0.0) * cloud.q / HBAR)
-        return fastest * elapsed < APART
+        return fastest * elapsed < APART and elapsed < self.every / 4
 
     def _sample(self, cloud: Cloud, interval: Interval, *, stage: int, columns: bool) -> Moments:
         seen = observe(cloud, interval)

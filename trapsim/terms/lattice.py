@@ -101,6 +101,9 @@ class Lattice(Part):
     def finest(self) -> float:
         return self.period
 
+    def rate(self, speed: Array) -> float:
+        return 2 * self.k * float(speed[self.direction]) + abs(self.detuning)
+
     def points_per_period(self) -> int:
         """How many grid points hold a cloud that is bound in it."""
         recoils = self.strength * self.depth / self.recoil_energy

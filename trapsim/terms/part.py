@@ -2,18 +2,20 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable
+from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass
-from typing import ClassVar
+from typing import Any, ClassVar
 
 import numpy as np
 
+from trapsim.errors import Complaint
 from trapsim.fields import Triple, entry
 
 Array = np.ndarray
 
 ANYWHERE = "anywhere"
 NONE = "none"
+ALL = (True, True, True)
 
 
 @dataclass(frozen=True)
@@ -57,6 +59,10 @@ class Part:
         A `Symmetry`.
     `finest()`
         The shortest length in m over which it changes, infinity for a parabola.
+    `grips`
+        Directions in which it can hold atoms without steering them: while it does, the frame stands still there.
+    `rate(speed)`
+        How fast (rad/s) its energy changes for a point that moves past it at up to `speed` (3,) m/s.
     """
 
     kind: ClassVar[str] = ""
@@ -81,6 +87,22 @@ class Part:
     def finest(self) -> float:
         return np.inf
 
+    @property
+    def grips(self) -> frozenset[int]:
+        return frozenset()
+
+    def rate(self, speed: Array) -> float:
+        return 2 * np.pi * float(np.max(speed)) / self.finest()
+
+    @classmethod
+    def units(cls, table: Mapping[str, Any], mass: float) -> Mapping[str, float]:
+        """Units that mean something only in this part's table (raw text), in SI, for atoms of a mass in kg."""
+        return {}
+
+    def complaints(self, place: str) -> list[Complaint]:
+        """What does not fit together in its entries; `place` is its path in the plan."""
+        return []
+
 
 def steered(parts: Iterable[Part], centre: Triple) -> tuple[Array, Array]:
     """Force (N) and curvature (N/m), three each, of the exactly quadratic share of all parts about `centre`."""
@@ -92,15 +114,36 @@ def steered(parts: Iterable[Part], centre: Triple) -> tuple[Array, Array]:
     return force, curvature
 
 
-def remainder(parts: Iterable[Part], centre: Triple, x: Array, y: Array, z: Array) -> Array | float:
-    """Potential energy (J) that is not steered, counted from its value at `centre`; 0.0 when nothing is left."""
+def remainder(
+    parts: Iterable[Part], centre: Triple, x: Array, y: Array, z: Array, *, steered_along: Sequence[bool] = ALL
+) -> Array | float:
+    """Potential energy (J) that is not steered, counted from its value at `centre`; 0.0 when nothing is left.
+
+    Parameters
+    ----------
+    parts : iterable of Part
+    centre : (3,)
+        About which they are steered, m.
+    x, y, z : array
+        Broadcastable lab coordinates.
+    steered_along : three flags
+        The directions in which the frame takes what is steered.
+    """
     total: Array | float = 0.0
     for part in parts:
-        if part.quadratic or part.strength == 0:
+        if part.strength == 0 or (part.quadratic and all(steered_along)):
             continue
         force, curvature = part.steer(centre)
-        total = total + part.energy(x, y, z) - part.energy(*(np.asarray(c) for c in centre))
-        for u, c, f, k in zip((x, y, z), centre, force, curvature, strict=True):
-            if f or k:
-                total = total + f * (u - c) - 0.5 * k * (u - c) ** 2
+        # the whole part less what the frame takes; of a quadratic one, only what the frame does not take
+        sign, along = (1.0, steered_along) if not part.quadratic else (-1.0, [not s for s in steered_along])
+        if not part.quadratic:
+            total = total + part.energy(x, y, z) - part.energy(*(np.asarray(c) for c in centre))
+        for u, c, f, k, taken in zip((x, y, z), centre, force, curvature, along, strict=True):
+            if taken and (f or k):
+                total = total + sign * (f * (u - c) - 0.5 * k * (u - c) ** 2)
     return total
+
+
+def gripped(parts: Iterable[Part]) -> frozenset[int]:
+    """Directions in which some part holds the atoms without steering them."""
+    return frozenset().union(*(p.grips for p in parts if p.strength > 0))

@@ -25,6 +25,12 @@ def exponential(s: float, sharpness: float) -> float:
 
 
 SHAPES = {"linear": linear, "smooth": smooth, "exponential": exponential}
+#: the integrals of the shapes from 0 to s
+INTEGRALS = {
+    "linear": lambda s, sharpness: s**2 / 2,
+    "smooth": lambda s, sharpness: s**3 - s**4 / 2,
+    "exponential": lambda s, sharpness: s + math.expm1(-sharpness * s) / sharpness,
+}
 
 
 @dataclass(frozen=True)
@@ -56,6 +62,13 @@ class Course:
             before = np.asarray(self.before)
             return tuple(before + share * (np.asarray(self.after) - before))
         return self.before + share * (self.after - self.before)
+
+    def gained(self, t: float) -> float:
+        """The integral of the value from the start until t."""
+        length = self.stop - self.start
+        s = (t - self.start) / length
+        done = length * INTEGRALS[self.shape](s, self.sharpness)
+        return self.before * (t - self.start) + (self.after - self.before) * done
 
     def left_over(self) -> float:
         """The share of the change that has not happened at its end."""

@@ -1,0 +1,150 @@
+"""What the plan asks of the space: room and fineness for the cloud at rest, and for what light makes of it."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import replace
+
+import numpy as np
+
+from trapsim.constants import HBAR
+from trapsim.errors import PlanError
+from trapsim.plan.plan import Plan
+from trapsim.prepare.extent import Accuracy, Lengths, box_lengths, cloud_lengths
+from trapsim.prepare.growth import scales
+from trapsim.prepare.stretch import Stretch
+from trapsim.prepare.timeline import Timeline
+from trapsim.quantities import human
+from trapsim.space.axes import Array
+from trapsim.terms.box import Box
+from trapsim.terms.lattice import Lattice
+from trapsim.terms.part import Part
+
+#: lattice orders kept beyond the highest that is populated, in pairs of recoils
+BEYOND = 1.5
+#: points along a direction when the rim of a shallow trap is looked for
+SCAN = 400
+
+
+def measure_up(
+    plan: Plan, timeline: Timeline, omega: Array, q: float, coupling: float, accuracy: Accuracy
+) -> Lengths:
+    """Lengths of the cloud at rest, whatever holds it."""
+    parts = timeline.initial.parts_at(0.0)
+    extent = np.asarray(plan.numerics.extent, dtype=float)
+    box = next((p for p in parts if isinstance(p, Box)), None)
+    free = omega == 0
+    length = np.where(extent > 0, extent, box.size if box else 0.0)
+    number = coupling / (4 * np.pi * q) / float(np.prod(length[free]))
+    lengths = cloud_lengths(omega, q, number, accuracy)
+    if box is not None:
+        lengths = box_lengths(lengths, box, q, accuracy, free)
+    elif any(not p.quadratic and not isinstance(p, Lattice) for p in parts):
+        lengths = _within_rim(lengths, parts, timeline.origin)
+    periodic = free if box is None else np.zeros(3, dtype=bool)
+    return replace(lengths, half=np.where(extent > 0, extent / 2, lengths.half), periodic=periodic)
+
+
+def _within_rim(lengths: Lengths, parts: Sequence[Part], origin: Sequence[float]) -> Lengths:
+    """Room that ends before the potential turns down again beyond its rim, as it does in a beam under gravity.
+
+    Raises
+    ------
+    PlanError
+        When the rim is not clearly above the cloud's chemical potential.
+    """
+    half = lengths.half.copy()
+    here = np.asarray(origin, dtype=float)
+    lowest = sum(p.energy(*here) for p in parts)
+    for j in range(3):
+        if not np.isfinite(half[j]):
+            continue
+        for side in (-1, 1):
+            # a trap that is not a parabola lets the cloud reach further out than one
+            out = np.linspace(0.0, 2 * half[j], SCAN)
+            place = [np.full(SCAN, here[i]) for i in range(3)]
+            place[j] = here[j] + side * out
+            energy = (sum(p.energy(*place) for p in parts) - lowest) / HBAR
+            top = int(np.argmax(energy))
+            rim = top if top < SCAN - 1 and energy[-1] < energy[top] else SCAN - 1
+            if energy[rim] < 1.3 * lengths.mu:
+                raise PlanError.at(
+                    "trap", f"a rim {human(HBAR * energy[rim], 'energy')} above its lowest point along {'xyz'[j]}",
+                    f"the cloud needs {human(HBAR * lengths.mu, 'energy')} and would leak over it",
+                    "make the trap deeper, take fewer atoms, or levitate them with a gradient",
+                )  # fmt: skip
+            enough = np.nonzero(energy > 1.3 * lengths.mu)[0][0]
+            half[j] = max(lengths.half[j], 1.3 * out[enough]) if rim == SCAN - 1 else min(half[j], out[rim])
+    return replace(lengths, half=half)
+
+
+def hold_orders(
+    lengths: Lengths,
+    timeline: Timeline,
+    omega: Array,
+    q: float,
+    coupling: float,
+    moving: Sequence[Sequence[bool]],
+) -> Lengths:
+    """The lengths, made fine enough for every lattice: commensurate where it holds the cloud, else for its orders.
+
+    Raises
+    ------
+    PlanError
+        When two lattices of different spacing hold the cloud along one direction.
+    """
+    spacing, period, per = lengths.spacing.copy(), lengths.period.copy(), lengths.per_period.copy()
+    growth = scales(timeline, omega, q, _number(coupling, q, lengths, omega), moving)
+    still = np.ones(3)
+    acting = [(timeline.initial, timeline.initial.gripped(), still, still)]
+    acting += [(s.stretch, s.stands, *b) for s, b in zip(timeline.steps, growth, strict=True)]
+    for stretch, stands, before, after in acting:
+        for lattice in _strongest(stretch):
+            j = lattice.direction
+            grown = max(before[j], after[j])
+            if (j in stands or lengths.periodic[j]) and grown == 1.0:
+                if period[j] and abs(period[j] / lattice.period - 1) > 1e-9:
+                    raise PlanError.at(
+                        "trap", f"lattices with spacings of {human(period[j], 'length')} and "
+                        f"{human(lattice.period, 'length')} along {lattice.axis}",
+                        "lattices that hold the cloud along one direction have one spacing",
+                        "use them in pulses, or give them the same spacing",
+                    )  # fmt: skip
+                period[j] = lattice.period
+                per[j] = max(per[j], lattice.points_per_period())
+            if j in stands:
+                spacing[j] = min(spacing[j], lattice.period / (lattice.points_per_period() * grown))
+            else:
+                highest = 2 * lattice.k * (_highest_order(lattice, stretch) + BEYOND)
+                spacing[j] = min(spacing[j], np.pi / (grown * highest))
+    return replace(lengths, spacing=spacing, period=period, per_period=per)
+
+
+def _number(coupling: float, q: float, lengths: Lengths, omega: Array) -> float:
+    return coupling / (4 * np.pi * q) / float(np.prod(2 * lengths.half[omega == 0]))
+
+
+def _strongest(stretch: Stretch) -> list[Lattice]:
+    """The lattices that are on in a stretch, each at the time when it is deepest."""
+    found: dict[str, Lattice] = {}
+    for t in np.linspace(stretch.start, stretch.stop, 5):
+        for part in stretch.parts_at(t):
+            if isinstance(part, Lattice):
+                name = f"{part.axis}{part.period}"
+                if name not in found or part.strength * part.depth > found[name].strength * found[name].depth:
+                    found[name] = part
+    return list(found.values())
+
+
+def _highest_order(lattice: Lattice, stretch: Stretch) -> float:
+    """The highest order that a pulse populates: by its area for a short one, by its depth for a long one.
+
+    J_n(theta) falls off beyond n = theta; no atom in a lattice of depth V gets faster than sqrt(2 V/m), plus what it had
+    in the lattice's frame.
+    """
+    depth = lattice.strength * lattice.depth
+    theta = depth * (stretch.stop - stretch.start) / (2 * HBAR)
+    by_area = theta + 2 * theta ** (1 / 3) + 2
+    relative = abs(lattice.detuning) * lattice.period / (2 * np.pi) / (2 * lattice.recoil_velocity)
+    by_depth = 2 * relative + np.sqrt(depth / lattice.recoil_energy) / 2 + 2
+    return float(min(by_area, by_depth))
