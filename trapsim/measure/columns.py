@@ -97,6 +97,62 @@ class ColumnViews:
         values = values / (frame.b[right] * frame.b[up])
         return Column(frame.lab(lines[0], right), frame.lab(lines[1], up), values, view, cloud.time)
 
+    def see_turned(self, cloud: Cloud, view: str, turn: float) -> Column:
+        """A column density along a line of sight that is turned about the picture's upward direction.
+
+        With along, right and up of the plain view, the line of sight is along cos(turn) + right sin(turn), and what
+        points right is right cos(turn) - along sin(turn). By the Fourier slice theorem: the spectrum of the side view is
+        a straight cut through that of the density.
+        """
+        along = "xyz".index(view)
+        right, up = ("xyz".index(d) for d in VIEWS[view])
+        frame = cloud.frame
+        cosine, sine = np.cos(turn), np.sin(turn)
+        points, weights, density = self._cartesian(cloud)
+        density = np.moveaxis(density, (right, up, along), (0, 1, 2))
+        lab = [frame.b[j] * points[j] for j in (right, along)]
+        half = sum(abs(c) * frame.b[j] * self.space.axis(j).half_extent for c, j in ((cosine, right), (sine, along)))
+        waves = np.pi / half * np.arange(-self.raster // 2, self.raster // 2)
+        # beyond what the points resolve, sums over them only repeat
+        spacing = [values[1] - values[0] for values in lab]
+        waves = waves[(np.abs(waves * cosine) <= np.pi / spacing[0]) & (np.abs(waves * sine) <= np.pi / spacing[1])]
+        cut = np.empty((len(waves), density.shape[1]), dtype=complex)
+        for i, k in enumerate(waves):
+            across = density @ (weights[along] * np.exp(1j * k * sine * lab[1]))
+            cut[i] = (weights[right] * np.exp(-1j * k * cosine * lab[0])) @ across
+        s = self._line(half)
+        profile = np.real(np.exp(1j * np.outer(s, waves)) @ cut) / (2 * half)
+        rows = self._lines[self.space.dim(up)]
+        axis = self.space.axis(up)
+        if isinstance(axis, Radial):
+            spread = profile  # a round cloud was spread over the raster's own line
+        else:
+            spread = profile @ axis.basis(rows).T
+        middle = frame.X[right] * cosine - frame.X[along] * sine
+        # grid measures along and right cancel against the density's own; up is left
+        return Column(s + middle, frame.lab(rows, up), spread.T / frame.b[up], view, cloud.time)
+
+    def _cartesian(self, cloud: Cloud) -> tuple[list[Array], list[Array], Array]:
+        """Points, weights and density with a dimension for each of x, y and z."""
+        density = self.density(cloud)
+        if self._onto_finer is None:
+            axes = [self.space.axis(j) for j in range(3)]
+            order = [self.space.dim(j) for j in range(3)]
+            return [a.points for a in axes], [a.weights for a in axes], np.transpose(density, order)
+        axis, other = self.finer
+        line = self._lines[0]
+        r = np.sqrt(line[:, None] ** 2 + line[None, :] ** 2)
+        radii = np.linspace(0.0, axis.half_extent, 8 * axis.n)
+        spline = interpolate.CubicSpline(radii, axis.basis(radii) @ density, axis=0)
+        square = np.where((r <= axis.half_extent)[..., None], spline(np.minimum(r, axis.half_extent)), 0.0)
+        first, second = axis.covers
+        points, weights = [None] * 3, [None] * 3
+        for j in (first, second):
+            points[j], weights[j] = line, np.full(self.raster, line[1] - line[0])
+        (third,) = other.covers
+        points[third], weights[third] = other.points, other.weights
+        return points, weights, np.moveaxis(square, (0, 1, 2), (first, second, third))
+
     def _flat(self, rest: Array, gone: int, up: int, right: int) -> Array:
         """Two axes of their own are left: their own series evaluated on the raster."""
         dims = [d for d in range(len(self.space.axes)) if d != gone]

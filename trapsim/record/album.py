@@ -1,0 +1,185 @@
+"""The album: pictures of the cameras, momentum distributions and diffraction orders, kept until the run is over."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+
+from trapsim.cloud.cloud import Cloud
+from trapsim.evolve.march import Leg
+from trapsim.measure.camera import Camera, Picture, pixel_edges, pixel_means, resonant_cross_section
+from trapsim.measure.columns import RASTER, ColumnViews
+from trapsim.measure.momentum import Momentum, momentum, order_shares
+from trapsim.record.series import Array
+from trapsim.space.axes import Wave
+from trapsim.space.space import Space
+from trapsim.terms.lattice import Lattice
+
+#: raster samples per axis point behind a picture
+FINER = 4
+
+
+@dataclass(frozen=True)
+class Shot:
+    """A picture to be taken.
+
+    Parameters
+    ----------
+    name : str
+        "<camera>_<stage>_<time>".
+    camera : str
+    time : float
+        s, from the start of the sequence.
+    """
+
+    name: str
+    camera: str
+    time: float
+
+
+@dataclass(frozen=True)
+class Seen:
+    """A momentum distribution at the end of a stage.
+
+    Parameters
+    ----------
+    stage : int
+    part : str
+        The lattice along whose axis it is.
+    recoil : float
+        Wave number of one photon of that lattice, 1/m.
+    fallen : float
+        Velocity that uniform forces have given since the lattice first acted, m/s.
+    momentum : Momentum
+    orders : mapping of str to float
+    """
+
+    stage: int
+    part: str
+    recoil: float
+    fallen: float
+    momentum: Momentum
+    orders: Mapping[str, float]
+
+
+class Album:
+    """Takes pictures and looks at momenta when it is time.
+
+    Parameters
+    ----------
+    cameras : mapping of str to Camera
+    shots : sequence of Shot
+    wavelength : float or None
+        Of the probe, m; needed for pictures.
+    atoms : float
+        Number at the start.
+    origin : (3,)
+        Positions are counted from here, m.
+    """
+
+    def __init__(
+        self, *, cameras: Mapping[str, Camera], shots: Sequence[Shot], wavelength: float | None, atoms: float, origin: Array
+    ) -> None:
+        self.cameras = cameras
+        self.shots = tuple(shots)
+        self.wavelength = wavelength
+        self.atoms = atoms
+        self.origin = np.asarray(origin)
+        self.pictures: dict[str, Picture] = {}
+        self.seen: list[Seen] = []
+        self._views: ColumnViews | None = None
+
+    def look(self, cloud: Cloud, leg: Leg, *, centre: Array, stage_ends: bool, fallen: Mapping[str, Array]) -> None:
+        """Take the pictures that are due at the cloud's time; at the end of a stage, look at the momenta.
+
+        Parameters
+        ----------
+        cloud : Cloud
+        leg : Leg
+        centre : (3,)
+            Of mass, m.
+        stage_ends : bool
+        fallen : mapping of str to (3,)
+            Velocities from uniform forces since each lattice first acted.
+        """
+        for shot in self.shots:
+            if shot.time == cloud.time and shot.name not in self.pictures:
+                self.pictures[shot.name] = self._take(shot, cloud, centre)
+        if stage_ends:
+            for name, part in leg.interval.parts.items():
+                if isinstance(part, Lattice) and name in fallen and _has_axis(cloud.space, part.direction):
+                    fell = float(fallen[name][part.direction])
+                    spread = momentum(cloud, part.direction)
+                    orders = order_shares(spread, part, fallen=fell)
+                    self.seen.append(Seen(leg.stage, name, part.k, fell, spread, orders))
+
+    def orders(self, stage: int) -> dict[str, dict[str, float]] | None:
+        """Populations by lattice at the end of a stage; None where no lattice has acted."""
+        found = {s.part: dict(s.orders) for s in self.seen if s.stage == stage}
+        return found or None
+
+    def _take(self, shot: Shot, cloud: Cloud, centre: Array) -> Picture:
+        camera = self.cameras[shot.camera]
+        along = "xyz".index(camera.view)
+        right, up = ("xyz".index(d) for d in camera.axes)
+        if self._views is None or self._views.space is not cloud.space:
+            finest = max(RASTER, FINER * max(cloud.space.points_per_direction()))
+            self._views = ColumnViews(cloud.space, raster=finest)
+        cosine, sine = np.cos(camera.turn), np.sin(camera.turn)
+        where = centre if camera.follow else np.asarray(camera.aim)
+        middle = (where[right] * cosine - where[along] * sine, where[up])
+        column = self._views.see_turned(cloud, camera.view, camera.turn) if camera.turn else (
+            self._views.see(cloud, (camera.view,))[camera.view]
+        )
+        edges = pixel_edges(camera, middle)
+        sigma = resonant_cross_section(self.wavelength)
+        density = self.atoms * pixel_means(column, edges)
+        start = (self.origin[right] * cosine - self.origin[along] * sine, self.origin[up])
+        x, y = ((e[1:] + e[:-1]) / 2 - s for e, s in zip(edges, start, strict=True))
+        words = "xyz"[right] if not camera.turn else f"{'xyz'[right]} turned by {np.degrees(camera.turn):.4g} deg"
+        return Picture(
+            shot.name, shot.camera, cloud.time, x, y, sigma * density, camera.object_pixel**2 / sigma, words, "xyz"[up]
+        )
+
+    # checkpoints
+
+    def arrays(self) -> tuple[dict[str, Array], dict[str, Any]]:
+        """All that was seen so far, as arrays and plain attributes, for a checkpoint."""
+        arrays: dict[str, Array] = {}
+        for i, p in enumerate(self.pictures.values()):
+            arrays |= {f"picture{i}_od": p.optical_density, f"picture{i}_x": p.x, f"picture{i}_y": p.y}
+        for i, s in enumerate(self.seen):
+            arrays |= {f"momentum{i}_k": s.momentum.k, f"momentum{i}_density": s.momentum.density}
+        told = {
+            "pictures": [
+                [p.name, p.camera, p.time, p.atoms_per_od, p.right, p.up] for p in self.pictures.values()
+            ],
+            "seen": [
+                [s.stage, s.part, s.recoil, s.fallen, s.momentum.direction, dict(s.orders)] for s in self.seen
+            ],
+        }  # fmt: skip
+        return arrays, told
+
+    def restore(self, arrays: Mapping[str, Array], told: Mapping[str, Any]) -> None:
+        """Take up what `arrays` kept."""
+        self.pictures = {
+            name: Picture(
+                name, camera, time, *(arrays[f"picture{i}_{part}"] for part in ("x", "y", "od")), per_od, right, up
+            )
+            for i, (name, camera, time, per_od, right, up) in enumerate(told["pictures"])
+        }
+        self.seen = [
+            Seen(
+                stage, part, recoil, fallen,
+                Momentum(direction, arrays[f"momentum{i}_k"], arrays[f"momentum{i}_density"]), orders,
+            )
+            for i, (stage, part, recoil, fallen, direction, orders) in enumerate(told["seen"])
+        ]  # fmt: skip
+
+
+def _has_axis(space: Space, direction: int) -> bool:
+    axis = space.axis(direction)
+    return isinstance(axis, Wave) and not axis.uniform
