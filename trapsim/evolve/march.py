@@ -27,6 +27,8 @@ from trapsim.terms.part import remainder
 MOVED = 0.15
 #: transform pairs a full profile costs: half a pair, and one derivative per direction
 PROFILE_PAIRS = 1.5
+#: plain steps between two looks at the spectrum, where something may shift it
+LOOK = 8
 
 
 @dataclass(frozen=True)
@@ -252,6 +254,8 @@ def _play(state: State, leg: Leg, *, pace: Pace, guards: Guards) -> Generator[Ti
     stride = state.stride
     books = state.books
     phi = cloud.space.array(cloud.phi)
+    # a moving frame takes up all that is quadratic; anything else may throw atoms out of the spectrum on the way
+    shifting = not leg.moving or not all(p.quadratic for p in leg.interval.parts_at(0.5 * (leg.start + leg.stop)))
     targets = sorted({t for t in leg.landings if leg.start < t < leg.stop} | {leg.stop})
     targets = [t for t in targets if t > cloud.time]
     for target in targets:
@@ -272,6 +276,8 @@ def _play(state: State, leg: Leg, *, pace: Pace, guards: Guards) -> Generator[Ti
             )  # fmt: skip
             marginals = cloud.space.marginals(cloud.density())
             books = _watch(cloud, marginals, books, leg, guards)
+            if now == leg.stop or (shifting and (not leg.trapped or books.steps % LOOK == 0)):
+                books = _watch_spectrum(cloud, books, leg, guards)
             if leg.moving and now < leg.stop and _has_moved(cloud, marginals, law_start):
                 law_start = _law_start(cloud, profile(cloud), leg)
                 books = books.spent(PROFILE_PAIRS, flight=not leg.trapped)
@@ -295,6 +301,17 @@ def _watch(cloud: Cloud, marginals: list[Array], books: Books, leg: Leg, guards:
     if alarm:
         raise alarm.refuse(time=cloud.time, place=place, space=cloud.space)
     return replace(books, edge=np.maximum(books.edge, edge))
+
+
+def _watch_spectrum(cloud: Cloud, books: Books, leg: Leg, guards: Guards) -> Books:
+    samples = cloud.space.forward(cloud.space.array(cloud.phi))
+    share = spectrum_population(cloud.space, cloud.space.spectral_marginals(samples.real**2 + samples.imag**2))
+    place = f"stage {leg.name}"
+    alarm = guards.check(time=cloud.time, norm=1.0, edge=np.zeros(3), spectrum=share, place=place)
+    if alarm:
+        raise alarm.refuse(time=cloud.time, place=place, space=cloud.space)
+    books = books.spent(0.5, flight=not leg.trapped)
+    return replace(books, spectrum=np.maximum(books.spectrum, share))
 
 
 def _has_moved(cloud: Cloud, marginals: list[Array], law: LawStart) -> bool:
