@@ -128,7 +128,9 @@ SPACES = {
 }
 
 
-def cloud_samples(space: Space, *, sizes: tuple[float, float, float] = SIZES, chirps: tuple[float, float, float]) -> Array:
+def cloud_samples(
+    space: Space, *, sizes: tuple[float, float, float] = SIZES, chirps: tuple[float, float, float]
+) -> Array:
     """A chirped Gaussian packet with three widths on a space, its norm 1."""
     exponent = space.quadratic([-1 / (4 * s**2) + 0.5j * c for s, c in zip(sizes, chirps, strict=True)])
     return space.array((2 * pi) ** -0.75 / np.sqrt(np.prod(sizes)) * np.exp(exponent))

@@ -3,9 +3,9 @@
 from __future__ import annotations
 
 import numpy as np
+import proofs
 import pytest
 
-import proofs
 from trapsim.cloud.cloud import Cloud, regauge
 from trapsim.measure.observables import profile
 from trapsim.space.axes import Radial, Wave
@@ -32,8 +32,8 @@ def on_waves() -> Cloud:
 def lab_wave_function(cloud: Cloud) -> np.ndarray:
     """psi on the cloud's points, from the definition of the frame (the transformation of the published scaling laws).
 
-    Y. Castin and R. Dum, Phys. Rev. Lett. 77, 5315 (1996): psi = B^(-1/2) phi exp(i m b' y^2/(2 hbar b)), and for a centre
-    in motion exp(i m v y/hbar).
+    Y. Castin and R. Dum, Phys. Rev. Lett. 77, 5315 (1996): psi = B^(-1/2) phi exp(i m b' y^2/(2 hbar b)), and for a
+    centre in motion exp(i m v y/hbar).
     """
     f = cloud.frame
     angle = 0.0

@@ -31,6 +31,7 @@ from trapsim.record.summary import (
     moment_of,
 )
 from trapsim.space.space import Array
+from trapsim.terms.part import steered
 
 _HZ = 1 / (2 * np.pi)
 
@@ -106,10 +107,11 @@ def summarise(
     end: Moment | None = moment_of(track, -1, mass=mass, law_model=model) if plan.sequence else None
     drift = energy_drift(track, setup.legs)
     error = trust(
-        state.books, residual=ground.residual or 0.0, energy_drift=drift, centre_off=_centre_off(setup, state, track)
-    )
+        state.books, residual=ground.residual or 0.0, energy_drift=drift, swing=swing_error(track, setup.legs, setup.q),
+        centre_off=_centre_off(setup, state, track),
+    )  # fmt: skip
     return Summary(
-        title=plan.title or plan.name,
+        title=printable(plan.title or plan.name),
         status=status,
         key=plan.key,
         march_key=plan.march_key,
@@ -135,6 +137,11 @@ def summarise(
     )  # fmt: skip
 
 
+def printable(text: str) -> str:
+    """The text in one line, without what files and terminals choke on."""
+    return " ".join("".join(c if c.isprintable() else " " for c in text).split())
+
+
 def _leg_spaces(setup: Setup) -> tuple[LegSpace, ...]:
     return tuple(
         LegSpace(
@@ -156,15 +163,34 @@ def _stage_ends(track: Track, times: Sequence[tuple[float, float]], now: float) 
 
 def energy_drift(track: Track, legs: Sequence[Leg]) -> float | None:
     """The worst relative change of the internal energy over stretches in which nothing changes in time."""
-    energy = np.nansum(track["kinetic"], axis=1) + track["trap"] + track["interaction"]
-    worst = None
+    known = [d for leg in legs if (d := _drift_in(track, leg)) is not None]
+    return max(known, default=None)
+
+
+def _drift_in(track: Track, leg: Leg) -> float | None:
+    """The relative change of the internal energy over a leg; None where it need not be constant, or was not seen."""
+    inside = (track["stage"] == leg.stage) & (track.time > leg.start) & (track.time <= leg.stop)
+    if not leg.interval.steady or inside.sum() < 2:
+        return None
+    values = np.nansum(track["kinetic"], axis=1) + track["trap"] + track["interaction"]
+    values = values[inside]
+    return float(np.max(np.abs(values - values[0])) / np.abs(values).max())
+
+
+def swing_error(track: Track, legs: Sequence[Leg], q: float) -> float:
+    """What the swings of the cloud in its traps may be out by, relative.
+
+    Plain steps keep a Hamiltonian that is a little wrong: the energy wobbles by that share within a swing, and the
+    swing itself runs fast or slow by about half of it per radian.
+    """
+    total = 0.0
     for leg in legs:
-        inside = (track["stage"] == leg.stage) & (track.time > leg.start) & (track.time <= leg.stop)
-        if leg.interval.steady and inside.sum() > 1:
-            values = energy[inside]
-            change = float(np.max(np.abs(values - values[0])) / np.abs(values).max())
-            worst = change if worst is None else max(worst, change)
-    return worst
+        drift = _drift_in(track, leg) if leg.trapped else None
+        if drift is not None:
+            _, curvature = steered(leg.interval.parts_at(leg.start), (0.0, 0.0, 0.0))
+            turns = np.sqrt(max(float(curvature.max()), 0.0) * q / HBAR) * (leg.stop - leg.start)
+            total += drift * (1 + turns / 2)
+    return total
 
 
 def _centre_off(setup: Setup, state: State, track: Track) -> float:

@@ -60,35 +60,43 @@ def locked(folder: Path) -> Iterator[None]:
     FileTrouble
         When another run works in the folder, or it cannot be made.
     """
-    lock = folder / _LOCK
     with trouble(folder):
         made = [p for p in (folder, *folder.parents) if not p.exists()]
-        new = not lock.exists()
+        new = not (folder / _LOCK).exists()
+    try:
+        handle = _lock(folder)
+        try:
+            yield
+        finally:
+            with suppress(OSError):
+                if new and not (folder / PLAN).exists():
+                    (folder / _LOCK).unlink(missing_ok=True)
+            os.close(handle)
+    finally:
+        for empty in made:
+            with suppress(OSError, ValueError):  # what is not empty stays
+                empty.rmdir()
+
+
+def _lock(folder: Path) -> int:
+    """Make the folder and take its lock."""
+    with trouble(folder):
         folder.mkdir(parents=True, exist_ok=True)
-        handle = os.open(lock, os.O_RDWR | os.O_CREAT, 0o644)
+        handle = os.open(folder / _LOCK, os.O_RDWR | os.O_CREAT, 0o644)
     try:
         fcntl.flock(handle, fcntl.LOCK_EX | fcntl.LOCK_NB)
-    except BlockingIOError as error:
-        os.close(handle)
-        raise FileTrouble.at(
-            str(folder), "another run is at work in it", "one run at a time per folder",
-            "wait for it, or choose another place with --out",
-        ) from error  # fmt: skip
     except OSError as error:
         os.close(handle)
+        if isinstance(error, BlockingIOError):
+            raise FileTrouble.at(
+                str(folder), "another run is at work in it", "one run at a time per folder",
+                "wait for it, or choose another place with --out",
+            ) from error  # fmt: skip
         raise FileTrouble.at(
-            str(lock), error.strerror or str(error), "the folder must be on a disk that knows locks",
+            str(folder), error.strerror or str(error), "results go to a disk that knows locks",
             "choose another place with --out",
         ) from error  # fmt: skip
-    try:
-        yield
-    finally:
-        with suppress(OSError):
-            if new and not (folder / PLAN).exists():
-                lock.unlink(missing_ok=True)
-            for empty in made:  # the first that is not empty ends it
-                empty.rmdir()
-        os.close(handle)
+    return handle
 
 
 def claim(folder: Path, plan: Plan, *, force: bool = False) -> None:
@@ -179,9 +187,11 @@ def save(
         arrays |= {f"law_frame_{n}": getattr(law.frame, n) for n in _FRAME}
     books = {k: v for k, v in asdict(state.books).items() if k not in ("edge", "spectrum")}
     attributes = {
-        "layout": LAYOUT, "march_key": plan.march_key, "time": cloud.time, "q": cloud.q, "leg": state.leg, "space": cloud.space.describe(), "books": books,
-        "law_time": None if law is None else law.time, "law_edge": None if law is None else law.edge, "stride": None if stride is None else asdict(stride),
-        "notices": [asdict(n) for n in state.notices], "ground": dict(ground), "seconds": seconds,
+        "layout": LAYOUT, "march_key": plan.march_key, "seconds": seconds, "ground": dict(ground),
+        "time": cloud.time, "q": cloud.q, "leg": state.leg, "space": cloud.space.describe(), "books": books,
+        "law_time": None if law is None else law.time, "law_edge": None if law is None else law.edge,
+        "stride": None if stride is None else asdict(stride),
+        "notices": [asdict(n) for n in state.notices],
     }  # fmt: skip
     write_checkpoint(folder / CHECKPOINT, arrays, attributes)
 
@@ -200,7 +210,8 @@ def load(folder: Path, plan: Plan, spaces: list[Space]) -> tuple[State, dict[str
     arrays, told = read_checkpoint(path)
     if told.get("layout") != LAYOUT or told.get("march_key") != plan.march_key:
         raise FileTrouble.at(
-            str(path), "a checkpoint of another plan or of another trapsim", "a run can only be taken up as it was begun",
+            str(path), "a checkpoint of another plan or of another trapsim",
+            "a run can only be taken up as it was begun",
             "run again with --force to begin anew",
         )  # fmt: skip
     with whole(path):

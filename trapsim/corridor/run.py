@@ -1,7 +1,7 @@
 """The corridor: plan in, finished folder out.
 
-text -> plan -> setup -> ground state -> march through the legs -> track and columns -> folder. Figures are drawn from the
-finished folder by whoever wants them.
+text -> plan -> setup -> ground state -> march through the legs -> track and columns -> folder. Figures are drawn from
+the finished folder by whoever wants them.
 """
 
 from __future__ import annotations
@@ -16,6 +16,7 @@ from typing import Any, Protocol
 
 from trapsim.cloud.cloud import Cloud
 from trapsim.corridor import folder as place
+from trapsim.corridor.bounds import ordinary_numbers, set_up
 from trapsim.corridor.findings import Spent, ground_figures, summarise, wave_function
 from trapsim.errors import FileTrouble, Interrupted, Notice, PhysicsRefused
 from trapsim.estimate.law import scaling_law
@@ -24,7 +25,7 @@ from trapsim.evolve.continuity import continuity
 from trapsim.evolve.march import Leg, State, Tick, march
 from trapsim.evolve.relax import Relaxed, relax
 from trapsim.plan.plan import Plan
-from trapsim.prepare.setup import Setup, prepare
+from trapsim.prepare.setup import Setup
 from trapsim.record.recorder import Recorder
 from trapsim.record.store import RUN_FILE, Contents, read_run, write_results
 from trapsim.record.summary import Ground, Run
@@ -98,7 +99,7 @@ def run(
     FileTrouble
         When the folder cannot be read or written.
     """
-    setup = prepare(plan)
+    setup = set_up(plan)
     if out is None:
         return _Corridor(setup, None, progress or Silent(), stop).walk()
     folder = Path(out)
@@ -158,7 +159,8 @@ class _Corridor:
         self.progress = progress
         self.stop = stop
         self.clock = _Clock()
-        self.law = scaling_law(setup)
+        with ordinary_numbers(setup.plan.name):
+            self.law = scaling_law(setup)
         plan, timeline = setup.plan, setup.timeline
         self.recorder = Recorder(
             origin=timeline.origin, atoms=plan.atoms.number, duration=plan.duration, released=timeline.released,
@@ -226,6 +228,7 @@ class _Corridor:
 
     def _march(self, state: State) -> State:
         setup = self.setup
+        self.progress.at(state.cloud.time, setup.legs[state.leg].name if state.leg < len(setup.legs) else "")
         for tick in march(state, setup.legs, pace=setup.pace, guards=setup.guards):
             state = self._hear(tick)
         return state
@@ -259,8 +262,8 @@ class _Corridor:
         if self.folder:
             self._save(state, self.ground)
             raise Interrupted(
-                f"interrupted at {1e3 * state.cloud.time:.4g} ms of {1e3 * self.setup.plan.duration:.4g} ms; the state is "
-                f"saved in {self.folder}: the same command goes on from there"
+                f"interrupted at {1e3 * state.cloud.time:.4g} ms of {1e3 * self.setup.plan.duration:.4g} ms; "
+                f"the state is saved in {self.folder}: the same command goes on from there"
             )
         raise Interrupted("interrupted; without a result folder nothing was kept")
 
@@ -269,9 +272,8 @@ class _Corridor:
             return
         began = time.perf_counter()
         ground = {**ground, "march_seconds": self.march_seconds}
-        place.save(
-            self.folder, self.setup.plan, state, heard=self.recorder.arrays(), ground=ground, seconds=self.clock.seconds()
-        )
+        heard, seconds = self.recorder.arrays(), self.clock.seconds()
+        place.save(self.folder, self.setup.plan, state, heard=heard, ground=ground, seconds=seconds)
         took = time.perf_counter() - began
         self.next_save = time.perf_counter() + max(FIRST, PATIENCE * took)
         log.debug("checkpoint at %.6g s took %.3g s", state.cloud.time, took)
@@ -317,7 +319,7 @@ def ground_state(setup: Setup) -> Relaxed:
     if relaxed.collapsed:
         raise PhysicsRefused.at(
             "ground state", f"N a = {1e9 * setup.plan.atoms.number * setup.plan.atoms.scattering_length:.4g} nm",
-            "the attraction is too strong for this trap: the cloud collapses (in a round trap from N |a| / a_ho = 0.575)",
+            "the attraction is too strong for this trap: the cloud collapses (in a round trap at N |a| / a_ho = 0.575)",
             "take fewer atoms, a weaker attraction or a weaker trap",
         )  # fmt: skip
     if relaxed.signed:

@@ -26,7 +26,7 @@ class Trust:
     centre: float
 
 
-def trust(books: Books, *, residual: float, energy_drift: float | None, centre_off: float) -> Trust:
+def trust(books: Books, *, residual: float, energy_drift: float | None, swing: float, centre_off: float) -> Trust:
     """From step estimates and guards to widths, rates and centre.
 
     Time: the extrapolated steps of a flight have an L2 error far below their estimate e, and a width feels the square
@@ -43,11 +43,13 @@ def trust(books: Books, *, residual: float, energy_drift: float | None, centre_o
         Of the ground state.
     energy_drift : float or None
         Relative, the worst over stretches where nothing changed in time.
+    swing : float
+        Relative, of swings in a trap, from the drift of the energy there and how long it lasted.
     centre_off : float
         Distance of the measured centre from the classical path, m.
     """
     time = 2 * books.error**2 + 5e-3 * books.local ** (2 / 3)
     space = 1.2 * float(np.max(books.spectrum)) ** 0.75 + 0.05 * float(np.max(books.edge))
-    width = float(np.sqrt(time**2 + space**2)) + residual
+    width = float(np.sqrt(time**2 + space**2 + swing**2)) + residual
     rate = max(1.5 * width, abs(energy_drift or 0.0) / 2)
     return Trust(width, rate, centre_off)

@@ -34,6 +34,8 @@ FULL, FULL_TAIL, CHIRPED = 0.5, 1e-4, 0.1
 HELD_BACK = 0.1
 #: transform pairs a full profile costs: half a pair, and one derivative per direction
 PROFILE_PAIRS = 1.5
+#: plain steps between two looks at the spectrum, where something may shift it
+LOOK = 8
 
 
 @dataclass(frozen=True)
@@ -319,6 +321,8 @@ def _play(state: State, leg: Leg, *, pace: Pace, guards: Guards) -> Generator[Ti
     stride = state.stride
     books = state.books
     phi = cloud.space.array(cloud.phi)
+    # a moving frame takes up all that is quadratic; anything else may throw atoms out of the spectrum on the way
+    shifting = not all(leg.moving) or not all(p.quadratic for p in leg.interval.parts_at(0.5 * (leg.start + leg.stop)))
     targets = sorted({t for t in leg.landings if leg.start < t < leg.stop} | {leg.stop})
     targets = [t for t in targets if t > cloud.time]
     for target in targets:
@@ -343,6 +347,8 @@ def _play(state: State, leg: Leg, *, pace: Pace, guards: Guards) -> Generator[Ti
             crowded = not leg.trapped and edge.max() > max(HELD_BACK * guards.edge, 2 * law_start.edge)
             moved = _has_moved(cloud, marginals, law_start, leg.moving)
             _stop_at(cloud, marginals, edge, leg, guards)
+            if now == leg.stop or (shifting and (not leg.trapped or books.steps % LOOK == 0)):
+                books = _watch_spectrum(cloud, books, leg, guards)
             if any(leg.moving) and now < leg.stop and (moved or crowded):
                 cloud, seen = _followed(cloud, profile(cloud), leg)
                 phi = cloud.phi
@@ -367,6 +373,17 @@ def _stop_at(cloud: Cloud, marginals: list[Array], edge: Array, leg: Leg, guards
     alarm = guards.check(time=cloud.time, norm=norm, edge=edge, spectrum=np.zeros(3), place=place)
     if alarm:
         raise alarm.refuse(time=cloud.time, place=place, space=cloud.space)
+
+
+def _watch_spectrum(cloud: Cloud, books: Books, leg: Leg, guards: Guards) -> Books:
+    samples = cloud.space.forward(cloud.space.array(cloud.phi))
+    share = spectrum_population(cloud.space, cloud.space.spectral_marginals(samples.real**2 + samples.imag**2))
+    place = f"stage {leg.name}"
+    alarm = guards.check(time=cloud.time, norm=1.0, edge=np.zeros(3), spectrum=share, place=place)
+    if alarm:
+        raise alarm.refuse(time=cloud.time, place=place, space=cloud.space)
+    books = books.spent(0.5, flight=not leg.trapped)
+    return replace(books, spectrum=np.maximum(books.spectrum, share))
 
 
 def _has_moved(cloud: Cloud, marginals: list[Array], law: LawStart, moving: Sequence[bool]) -> bool:

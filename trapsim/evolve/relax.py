@@ -1,6 +1,7 @@
 """The ground state: conjugate gradient on the sphere, or imaginary time.
 
-H/hbar = K + V + c |u|^2, K = -(q/2) laplacian, c = 4 pi q a N, integral of u^2 = 1, u real. Energies are rad/s per atom.
+H/hbar = K + V + c |u|^2, K = -(q/2) laplacian, c = 4 pi q a N, integral of u^2 = 1, u real. Energies are rad/s per
+atom.
 
 Sources: preconditioned nonlinear conjugate gradient, X. Antoine, A. Levitt and Q. Tang, J. Comput. Phys. 343, 92
 (2017); normalised gradient flow, W. Bao and Q. Du, SIAM J. Sci. Comput. 25, 1674 (2004).
@@ -14,8 +15,8 @@ import numpy as np
 
 from trapsim.space.space import Array, Space
 
-#: an attractive cloud with more than this share of its spectrum beyond 0.8 of the highest wave number is not resolved
-LOCKED = 1e-4
+#: an attractive cloud that is drawn together by more than this share of E_kin has collapsed: only the grid holds it
+UNBALANCED = 2e-3
 
 
 @dataclass(frozen=True)
@@ -102,15 +103,19 @@ class Hamiltonian:
                     return True
         return False
 
-    def held_by_grid(self, u: Array) -> bool:
-        """Whether wave numbers near the highest are populated: a collapsed cloud can come to rest on a few points."""
-        spectrum = self.space.forward(self.space.array(u))
-        marginals = self.space.spectral_marginals(spectrum.real**2 + spectrum.imag**2)
-        for d, axis in enumerate(self.space.axes):
-            population = marginals[d] * axis.spectral_weights
-            if not axis.uniform and population[np.abs(axis.k) > 0.8 * axis.k_max].sum() > LOCKED:
-                return True
-        return False
+    def unbalanced(self, u: Array, kin: float, inter: float) -> float:
+        """What still draws the cloud together, 2 E_kin - <r.grad V> + d E_int, relative to E_kin (virial theorem).
+
+        By parts, <r.grad V> = -int V (d n + r.grad n): the cloud is smooth where a potential need not be.
+        """
+        phi = self.space.array(u)
+        lever = sum(
+            self.space.along(i, axis.points) * self.space.gradient(phi, i).real
+            for i, axis in enumerate(self.space.axes)
+            if not axis.uniform
+        )
+        outward = -self.space.integral(self.V * u * (self.extended * u + 2 * lever))
+        return (2 * kin - outward + self.extended * inter) / kin
 
 
 def relax(
@@ -157,11 +162,12 @@ def _result(h: Hamiltonian, u: Array, tolerance: float, collapsed: bool) -> Rela
     residual = np.sqrt(h.dot(r, r)) / max(abs(mu), 1e-3 * _scale(kin, pot, inter))
     signed = bool(u.min() < -1e-4 * u.max())
     if h.c < 0 and not collapsed:
-        collapsed = h.rms_too_small(u) or h.held_by_grid(u)
+        collapsed = h.rms_too_small(u) or h.unbalanced(u, kin, inter) < -UNBALANCED
     return Relaxed(
         u=u, mu=mu + h.lowest, energy=kin + pot + inter + h.lowest, kinetic=kin, potential=pot + h.lowest,
         interaction=inter, residual=float(residual), pairs=pairs,
-        converged=bool(residual <= 1.01 * tolerance) and not collapsed and not signed, collapsed=collapsed, signed=signed,
+        converged=bool(residual <= 1.01 * tolerance) and not collapsed and not signed, collapsed=collapsed,
+        signed=signed,
     )  # fmt: skip
 
 

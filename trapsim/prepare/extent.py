@@ -102,8 +102,9 @@ def cloud_lengths(omega: Array, q: float, scattering_number: float, accuracy: Ac
     """Lengths of a cloud in a harmonic trap, from the chemical potential of its best Gaussian.
 
     Per direction the energy available is mu less the zero point of the others, R = sqrt(2 q mu_j)/w_j; outside it the
-    wave function falls as exp(-S), S = [x sqrt(x^2 - R^2) - R^2 arccosh(x/R)]/2 in oscillator lengths (WKB), over an edge
-    of thickness delta = (q^2/(2 w^2 R))^(1/3) (F. Dalfovo, L. Pitaevskii and S. Stringari, Phys. Rev. A 54, 4213 (1996)).
+    wave function falls as exp(-S), S = [x sqrt(x^2 - R^2) - R^2 arccosh(x/R)]/2 in oscillator lengths (WKB), over an
+    edge of thickness delta = (q^2/(2 w^2 R))^(1/3) (F. Dalfovo, L. Pitaevskii and S. Stringari, Phys. Rev. A 54, 4213
+    (1996)).
 
     Parameters
     ----------
