@@ -15,8 +15,10 @@ from trapsim.estimate.law import ScalingLaw
 from trapsim.estimate.trust import trust
 from trapsim.evolve.march import Leg, State
 from trapsim.evolve.relax import Relaxed
+from trapsim.measure.camera import Picture
 from trapsim.measure.observables import Moments, peak_density
 from trapsim.prepare.setup import Setup
+from trapsim.record.album import Album
 from trapsim.record.series import AxisRecord, Track, WaveFunction
 from trapsim.record.summary import (
     Effort,
@@ -26,6 +28,7 @@ from trapsim.record.summary import (
     MarchEffort,
     Moment,
     Numerics,
+    PictureFigures,
     StageEnd,
     Summary,
     moment_of,
@@ -34,6 +37,8 @@ from trapsim.space.space import Array
 from trapsim.terms.part import steered
 
 _HZ = 1 / (2 * np.pi)
+#: by how much an axis is stretched to see the potential change
+STRETCH = 1e-4
 
 
 def ground_figures(setup: Setup, relaxed: Relaxed, cloud: Cloud, seen: Moments, law: ScalingLaw | None) -> Ground:
@@ -54,19 +59,26 @@ def ground_figures(setup: Setup, relaxed: Relaxed, cloud: Cloud, seen: Moments, 
         healing_length_um=1e6 / np.sqrt(8 * np.pi * peak * a) if a > 0 else None,
         gas_parameter=peak * abs(a) ** 3,
         residual=relaxed.residual,
-        virial=virial(setup, seen),
+        virial=virial(setup, cloud, seen),
     )
 
 
-def virial(setup: Setup, seen: Moments) -> float | None:
-    """The worst of |2 K_j - 2 P_j + E_int| over the trapped directions, relative to the energy."""
-    trapped = setup.omega > 0
-    if not trapped.any():
-        return None
-    mass = HBAR / setup.q
-    potential = 0.5 * mass * (setup.omega * seen.width) ** 2
-    off = np.abs(2 * seen.kinetic - 2 * potential + seen.interaction)[trapped]
-    return float(off.max() / seen.internal) if seen.internal > 0 else float(off.max() / seen.kinetic.sum())
+def virial(setup: Setup, cloud: Cloud, seen: Moments) -> float | None:
+    """The worst of |2 K_j - <y_j dV/dy_j> + E_int| over the axes that something confines, relative to the energy.
+
+    On a radial axis the sum over its two directions. The derivative is that of the potential under a stretch of one axis.
+    """
+    size = max(seen.internal, float(seen.kinetic.sum()))
+    off = []
+    for axis in cloud.space.axes:
+        if axis.uniform or any(setup.lengths.periodic[j] for j in axis.covers):
+            continue
+        wide, narrow = (
+            setup.potential([1 + sign * STRETCH * (j in axis.covers) for j in range(3)]) for sign in (1, -1)
+        )
+        slope = cloud.space.integral((wide - narrow) * cloud.density()) / (2 * STRETCH)
+        off.append(abs(2 * seen.kinetic[list(axis.covers)].sum() - slope + len(axis.covers) * seen.interaction))
+    return float(max(off) / size) if off else None
 
 
 @dataclass(frozen=True)
@@ -90,6 +102,7 @@ def summarise(
     law: ScalingLaw | None,
     spent: Spent,
     continuity: float | None,
+    album: Album,
     notices: Sequence[Notice],
 ) -> Summary:
     """All figures of a run, complete or not."""
@@ -100,11 +113,14 @@ def summarise(
     stages = tuple(
         StageEnd(
             name=stage.name, kind=stage.kind, start_ms=1e3 * start, duration_ms=1e3 * stage.duration,
-            end=None if index is None else moment_of(track, index, mass=mass, law_model=model),
+            end=None if index is None else moment_of(track, index, mass=mass, law_model=model, orders=album.orders(i)),
         )
-        for stage, (start, _), index in zip(plan.sequence, timeline.stage_times, ends, strict=True)
+        for i, (stage, (start, _), index) in enumerate(zip(plan.sequence, timeline.stage_times, ends, strict=True))
     )  # fmt: skip
-    end: Moment | None = moment_of(track, -1, mass=mass, law_model=model) if plan.sequence else None
+    end: Moment | None = None
+    if plan.sequence:
+        orders = album.orders(int(track["stage"][-1])) if status == "complete" else None
+        end = moment_of(track, -1, mass=mass, law_model=model, orders=orders)
     drift = energy_drift(track, setup.legs)
     error = trust(
         state.books, residual=ground.residual or 0.0, energy_drift=drift, swing=swing_error(track, setup.legs, setup.q),
@@ -133,8 +149,18 @@ def summarise(
             continuity=continuity,
             error=ErrorEstimate(error.width, error.rate, 1e6 * error.centre),
         ),
+        pictures=tuple(_picture_figures(p, timeline.released) for p in album.pictures.values()),
         warnings=tuple(notices),
     )  # fmt: skip
+
+
+def _picture_figures(picture: Picture, released: float | None) -> PictureFigures:
+    centre, width = picture.moments()
+    flight = None if released is None or picture.time < released else 1e3 * (picture.time - released)
+    return PictureFigures(
+        picture.name, picture.camera, 1e3 * picture.time, flight, picture.atoms, float(picture.optical_density.max()),
+        tuple(1e6 * width), tuple(1e6 * centre),
+    )
 
 
 def printable(text: str) -> str:

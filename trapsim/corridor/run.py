@@ -24,8 +24,11 @@ from trapsim.estimate.validity import FINE, validity
 from trapsim.evolve.continuity import continuity
 from trapsim.evolve.march import Leg, State, Tick, march
 from trapsim.evolve.relax import Relaxed, relax
+from trapsim.measure.columns import VIEWS
+from trapsim.measure.flow import flow_plane
 from trapsim.plan.plan import Plan
 from trapsim.prepare.setup import Setup
+from trapsim.record.album import Album
 from trapsim.record.recorder import Recorder
 from trapsim.record.store import RUN_FILE, Contents, read_run, write_results
 from trapsim.record.summary import Ground, Run
@@ -130,8 +133,9 @@ def open_run(folder: str | Path, *, plan: Plan | None = None) -> Run:
     """
     kept = read_run(folder)
     return Run(
-        plan if plan is not None else kept.plan, kept.summary, kept.track, kept.columns, {}, kept.final, Path(folder)
-    )
+        plan if plan is not None else kept.plan, kept.summary, kept.track, kept.columns, kept.pictures, kept.final,
+        Path(folder), momenta=kept.momenta, flow=kept.flow,
+    )  # fmt: skip
 
 
 @dataclass
@@ -166,6 +170,9 @@ class _Corridor:
             origin=timeline.origin, atoms=plan.atoms.number, duration=plan.duration, released=timeline.released,
             law=self.law.at if self.law else None, stage_names=tuple(s.name for s in plan.sequence),
         )  # fmt: skip
+        self.album = Album(
+            cameras=plan.camera, shots=setup.shots, atoms=plan.atoms.number, origin=timeline.origin
+        )
         self.march_seconds = 0.0
         self._probed = -1
         self.next_save = time.perf_counter() + FIRST
@@ -194,6 +201,7 @@ class _Corridor:
         state, heard, ground, seconds = kept
         with place.whole(self.folder / place.CHECKPOINT):
             self.recorder.restore(heard)
+            self.album.restore(heard, ground.pop("album"))
             self.march_seconds = ground["march_seconds"]
             Ground(**ground["figures"])
         self.clock.before = seconds
@@ -237,7 +245,11 @@ class _Corridor:
         now = time.perf_counter()
         state = tick.state
         leg = self.setup.legs[state.leg - (tick.reason == "edge")]
-        self.recorder.listen(tick, leg)
+        seen = self.recorder.listen(tick, leg)
+        if seen is not None and tick.reason != "step":
+            ended = tick.reason == "edge" and leg.last
+            fallen = self.setup.timeline.steps[state.leg - (tick.reason == "edge")].fallen
+            self.album.look(state.cloud, leg, centre=seen.centre, stage_ends=ended, fallen=fallen)
         self._probe(tick, leg)
         self.progress.at(state.cloud.time, leg.name)
         self._last = state
@@ -272,7 +284,9 @@ class _Corridor:
             return
         began = time.perf_counter()
         ground = {**ground, "march_seconds": self.march_seconds}
-        heard, seconds = self.recorder.arrays(), self.clock.seconds()
+        pictured, told = self.album.arrays()
+        heard, seconds = {**self.recorder.arrays(), **pictured}, self.clock.seconds()
+        ground["album"] = told
         place.save(self.folder, self.setup.plan, state, heard=heard, ground=ground, seconds=seconds)
         took = time.perf_counter() - began
         self.next_save = time.perf_counter() + max(FIRST, PATIENCE * took)
@@ -289,17 +303,24 @@ class _Corridor:
         )  # fmt: skip
         summary = summarise(
             setup, status=status, ground=Ground(**self.ground["figures"]), state=state, track=track, law=self.law,
-            spent=spent, continuity=self.ground["continuity"], notices=(*state.notices, *extra),
+            spent=spent, continuity=self.ground["continuity"], album=self.album,
+            notices=(*state.notices, *extra),
         )  # fmt: skip
         # samples are borrowed from the march: after a refused step they are no longer those of the last good state
         final = wave_function(state.cloud, setup.timeline.origin) if status == "complete" else None
+        flow = {v: flow_plane(state.cloud, v) for v in VIEWS} if status == "complete" else {}
         columns = self.recorder.columns()
         if self.folder:
-            contents = Contents(plan.source, plan.resolved(), summary, track, columns, final)
+            contents = Contents(
+                plan.source, plan.resolved(), summary, track, columns, final, pictures=self.album.pictures,
+                momenta=tuple(self.album.seen), flow=flow,
+            )  # fmt: skip
             write_results(self.folder, contents)
             if status == "complete":
                 (self.folder / place.CHECKPOINT).unlink(missing_ok=True)
-        return Run(plan, summary, track, columns, {}, final, self.folder)
+        return Run(
+            plan, summary, track, columns, self.album.pictures, final, self.folder, momenta=tuple(self.album.seen), flow=flow
+        )
 
 
 def ground_state(setup: Setup) -> Relaxed:

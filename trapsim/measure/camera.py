@@ -7,6 +7,7 @@ from dataclasses import dataclass
 import numpy as np
 from scipy import interpolate
 
+from trapsim.errors import Complaint
 from trapsim.fields import ORIGIN, Triple, entry
 from trapsim.measure.columns import VIEWS, Column
 from trapsim.space.axes import Array
@@ -24,8 +25,18 @@ class Camera:
     pixel: float = entry("length", "side of a pixel on the sensor", above=0.0)
     magnification: float = entry("number", "sensor over atoms", above=0.0)
     size: tuple[int, int] = entry("whole", "pixels to the right and upwards", count=2, low=1, default=(512, 512))
-    follow: bool = entry("flag", "keeps the cloud's classical centre in the middle", default=False)
+    follow: bool = entry("flag", "keeps the cloud's centre of mass in the middle", default=False)
     aim: Triple = entry("length", "what is in the middle, in the lab, unless it follows", default=ORIGIN, count=3)
+    wavelength: float | None = entry(
+        "length", "of the resonant probe; by default the probe line of the species", default=None, above=0.0
+    )
+
+    def complaints(self, place: str) -> list[Complaint]:
+        """What does not fit together in its entries."""
+        if self.follow and self.aim != ORIGIN:
+            return [Complaint(f"{place}.aim", "", "a camera that follows the cloud has no aim of its own",
+                              "leave aim out, or follow = false")]
+        return []
 
     @property
     def object_pixel(self) -> float:
@@ -102,15 +113,11 @@ def pixel_means(column: Column, edges: tuple[Array, Array]) -> Array:
     edges : (C + 1,), (R + 1,)
         Of the pixels, in the column's coordinates.
     """
-    right = _averaging(column.x, edges[0])
-    up = _averaging(column.y, edges[1])
-    return up @ column.values @ right.T
+    return _averaged(_averaged(column.values, column.x, edges[0]).T, column.y, edges[1]).T
 
 
-def _averaging(points: Array, edges: Array) -> Array:
-    """(pixels, points): the mean over each pixel of the natural cubic spline through samples, zero outside."""
-    spline = interpolate.CubicSpline(points, np.eye(len(points)), bc_type="natural")
-    integral = spline.antiderivative()
+def _averaged(values: Array, points: Array, edges: Array) -> Array:
+    """(rows, pixels): samples along the last axis averaged over pixels, by their natural spline; zero outside."""
+    integral = interpolate.CubicSpline(points, values, axis=1, bc_type="natural").antiderivative()
     inside = np.clip(edges, points[0], points[-1])
-    sums = np.diff(integral(inside), axis=0)
-    return sums / np.diff(edges)[:, None]
+    return np.diff(integral(inside), axis=1) / np.diff(edges)

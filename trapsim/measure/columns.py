@@ -19,6 +19,8 @@ from trapsim.space.space import Space
 VIEWS: Mapping[str, tuple[str, str]] = {"x": ("y", "z"), "y": ("x", "z"), "z": ("x", "y")}
 #: samples per side of a raster
 RASTER = 128
+#: waves summed at a time
+CHUNK = 32
 
 
 @dataclass(frozen=True)
@@ -59,17 +61,16 @@ class ColumnViews:
     space : Space
     raster : int
         Samples per side.
+    finer : float
+        At least that many samples per point of an axis, for pictures.
     """
 
-    def __init__(self, space: Space, *, raster: int = RASTER) -> None:
+    def __init__(self, space: Space, *, raster: int = RASTER, finer: float = 0.0) -> None:
         self.space = space
-        self.raster = raster
+        self.samples = [max(raster, int(finer * a.n)) for a in space.axes]
         self.finer = [a.finer() if isinstance(a, Radial) else a for a in space.axes]
         self._onto_finer = space.axes[0].basis(self.finer[0].points) if isinstance(space.axes[0], Radial) else None
-        self._lines = [self._line(a.half_extent) for a in self.finer]
-
-    def _line(self, half: float) -> Array:
-        return ((np.arange(self.raster) + 0.5) / self.raster * 2 - 1) * half
+        self._lines = [_line(a.half_extent, n) for a, n in zip(self.finer, self.samples, strict=True)]
 
     def density(self, cloud: Cloud) -> Array:
         """|phi|^2 on the finer points."""
@@ -97,30 +98,24 @@ class ColumnViews:
         values = values / (frame.b[right] * frame.b[up])
         return Column(frame.lab(lines[0], right), frame.lab(lines[1], up), values, view, cloud.time)
 
-    def see_turned(self, cloud: Cloud, view: str, turn: float) -> Column:
+    def see_turned(self, cloud: Cloud, view: str, turn: float, *, finest: float = 0.0) -> Column:
         """A column density along a line of sight that is turned about the picture's upward direction.
 
         With along, right and up of the plain view, the line of sight is along cos(turn) + right sin(turn), and what
         points right is right cos(turn) - along sin(turn). By the Fourier slice theorem: the spectrum of the side view is
-        a straight cut through that of the density.
+        a straight cut through that of the density. Detail shorter than `finest` (m) may be left out.
         """
         along = "xyz".index(view)
         right, up = ("xyz".index(d) for d in VIEWS[view])
         frame = cloud.frame
         cosine, sine = np.cos(turn), np.sin(turn)
-        points, weights, density = self._cartesian(cloud)
-        density = np.moveaxis(density, (right, up, along), (0, 1, 2))
-        lab = [frame.b[j] * points[j] for j in (right, along)]
         half = sum(abs(c) * frame.b[j] * self.space.axis(j).half_extent for c, j in ((cosine, right), (sine, along)))
-        waves = np.pi / half * np.arange(-self.raster // 2, self.raster // 2)
-        # beyond what the points resolve, sums over them only repeat
-        spacing = [values[1] - values[0] for values in lab]
-        waves = waves[(np.abs(waves * cosine) <= np.pi / spacing[0]) & (np.abs(waves * sine) <= np.pi / spacing[1])]
-        cut = np.empty((len(waves), density.shape[1]), dtype=complex)
-        for i, k in enumerate(waves):
-            across = density @ (weights[along] * np.exp(1j * k * sine * lab[1]))
-            cut[i] = (weights[right] * np.exp(-1j * k * cosine * lab[0])) @ across
-        s = self._line(half)
+        samples = max(self.samples[self.space.dim(j)] for j in (right, along))
+        waves = np.pi / half * np.arange(-samples // 2, samples // 2)
+        if finest:
+            waves = waves[np.abs(waves) <= np.pi / finest]
+        cut, waves = self._cut(cloud, waves, cosine, sine, (right, up, along))
+        s = _line(half, samples)
         profile = np.real(np.exp(1j * np.outer(s, waves)) @ cut) / (2 * half)
         rows = self._lines[self.space.dim(up)]
         axis = self.space.axis(up)
@@ -132,26 +127,46 @@ class ColumnViews:
         # grid measures along and right cancel against the density's own; up is left
         return Column(s + middle, frame.lab(rows, up), spread.T / frame.b[up], view, cloud.time)
 
-    def _cartesian(self, cloud: Cloud) -> tuple[list[Array], list[Array], Array]:
-        """Points, weights and density with a dimension for each of x, y and z."""
-        density = self.density(cloud)
-        if self._onto_finer is None:
-            axes = [self.space.axis(j) for j in range(3)]
-            order = [self.space.dim(j) for j in range(3)]
-            return [a.points for a in axes], [a.weights for a in axes], np.transpose(density, order)
-        axis, other = self.finer
-        line = self._lines[0]
-        r = np.sqrt(line[:, None] ** 2 + line[None, :] ** 2)
+    def _cut(
+        self, cloud: Cloud, waves: Array, cosine: float, sine: float, directions: tuple[int, int, int]
+    ) -> tuple[Array, Array]:
+        """The density's spectrum along a straight line in the plane of right and along, for every up: (waves, up).
+
+        On a radial axis that covers up, the places up are those of the raster, else those of the axis. Waves that the
+        points do not resolve are left out.
+        """
+        right, up, along = directions
+        density, frame = self.density(cloud), cloud.frame
+        radial = self._onto_finer is not None
+        lines = [self._lines[0] if radial and j in self.finer[0].covers else self.space.axis(j).points for j in range(3)]
+        for j, factor in ((right, cosine), (along, sine)):
+            spacing = frame.b[j] * (lines[j][1] - lines[j][0])
+            waves = waves[np.abs(waves * factor) <= np.pi / spacing]
+
+        def turns(j: int) -> Array:
+            factor = -cosine if j == right else sine
+            return (lines[j][1] - lines[j][0]) * np.exp(1j * factor * frame.b[j] * np.outer(lines[j], waves))
+
+        if not radial:
+            order = [self.space.dim(j) for j in (right, up, along)]
+            return _contract(np.transpose(density, order), turns(along), turns(right)), waves
+        (other,) = self.finer[1].covers
+        if other == up:
+            square = self._spread(density)
+            return _contract(np.transpose(square, (0, 2, 1)), turns(along), turns(right)), waves
+        # the flat axis first, which leaves one radial profile per wave
+        profiles = density @ turns(other)
+        square = self._spread(profiles.real) + 1j * self._spread(profiles.imag)
+        return np.einsum("ruk,rk->ku", square, turns(right if other == along else along)), waves
+
+    def _spread(self, profile: Array) -> Array:
+        """Samples (n_r, ...) of round functions on the square raster of the radial axis, (raster, raster, ...)."""
+        axis, line = self.finer[0], self._lines[0]
         radii = np.linspace(0.0, axis.half_extent, 8 * axis.n)
-        spline = interpolate.CubicSpline(radii, axis.basis(radii) @ density, axis=0)
-        square = np.where((r <= axis.half_extent)[..., None], spline(np.minimum(r, axis.half_extent)), 0.0)
-        first, second = axis.covers
-        points, weights = [None] * 3, [None] * 3
-        for j in (first, second):
-            points[j], weights[j] = line, np.full(self.raster, line[1] - line[0])
-        (third,) = other.covers
-        points[third], weights[third] = other.points, other.weights
-        return points, weights, np.moveaxis(square, (0, 1, 2), (first, second, third))
+        spline = interpolate.CubicSpline(radii, axis.basis(radii) @ profile, axis=0)
+        r = np.sqrt(line[:, None] ** 2 + line[None, :] ** 2)
+        inside = (r <= axis.half_extent).reshape(r.shape + (1,) * (profile.ndim - 1))
+        return np.where(inside, spline(np.minimum(r, axis.half_extent)), 0.0)
 
     def _flat(self, rest: Array, gone: int, up: int, right: int) -> Array:
         """Two axes of their own are left: their own series evaluated on the raster."""
@@ -166,12 +181,7 @@ class ColumnViews:
 
     def _round(self, profile: Array) -> Array:
         """A round cloud seen along its axis: a profile in r, spread over the raster."""
-        axis = self.finer[0]
-        radii = np.linspace(0.0, axis.half_extent, 8 * axis.n)
-        spline = interpolate.CubicSpline(radii, axis.basis(radii) @ profile)
-        line = self._lines[0]
-        r = np.sqrt(line[:, None] ** 2 + line[None, :] ** 2)
-        return np.where(r <= axis.half_extent, spline(np.minimum(r, axis.half_extent)), 0.0)
+        return self._spread(profile)
 
     def _side(self, density: Array, up: int, right: int, along: int) -> Array:
         """A round cloud seen from the side: the Fourier slice of the radial axis, the other axis' own series."""
@@ -180,3 +190,18 @@ class ColumnViews:
         values = side @ other.T
         across = next(j for j in self.space.axes[0].covers if j != along)
         return values if across == up else values.T
+
+
+def _contract(density: Array, along: Array, right: Array) -> Array:
+    """Sum (right, up, along) samples with (along, waves) and (right, waves) phases to (waves, up), in chunks of waves."""
+    out = np.empty((along.shape[1], density.shape[1]), dtype=complex)
+    for start in range(0, len(out), CHUNK):
+        chunk = slice(start, start + CHUNK)
+        summed = density @ along[:, chunk].real + 1j * (density @ along[:, chunk].imag)
+        out[chunk] = np.einsum("ruk,rk->ku", summed, right[:, chunk])
+    return out
+
+
+def _line(half: float, samples: int) -> Array:
+    """The midpoints of equal cells from -half to half."""
+    return ((np.arange(samples) + 0.5) / samples * 2 - 1) * half

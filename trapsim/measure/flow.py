@@ -43,7 +43,7 @@ def divergence(cloud: Cloud) -> Array:
 
 
 def continuity_residual(before: Cloud, now: Cloud, after: Cloud) -> float:
-    """How far d n/dt + div j is from zero, in units of the density times the fastest rate in the flow.
+    """How far d n/dt + div j is from zero, in units of either or of the density times the cloud's own rates.
 
     Parameters
     ----------
@@ -52,7 +52,8 @@ def continuity_residual(before: Cloud, now: Cloud, after: Cloud) -> float:
     """
     space = now.space
     growth = (after.density() - before.density()) / (after.time - before.time)
-    residual = growth + divergence(now)
+    outflow = divergence(now)
+    residual = growth + outflow
     n = now.density()
     marginals = space.marginals(n)
     rates = []
@@ -62,7 +63,8 @@ def continuity_residual(before: Cloud, now: Cloud, after: Cloud) -> float:
             spread = marginals[d] * axis.weights
             var = spread @ axis.x2(j) - (spread @ axis.x1(j)) ** 2
             rates.append(abs(now.frame.bdot[j] / now.frame.b[j]) + now.q / (now.frame.b[j] ** 2 * var))
-    return float(np.sqrt(space.integral(residual**2) / space.integral(n**2)) / max(rates, default=1.0))
+    scale = max(np.sqrt(space.integral(n**2)) * max(rates, default=1.0), np.sqrt(space.integral(outflow**2)))
+    return float(np.sqrt(space.integral(residual**2)) / scale)
 
 
 @dataclass(frozen=True)

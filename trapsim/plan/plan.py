@@ -11,6 +11,7 @@ from typing import Any
 
 from trapsim.constants import PHYSICS_VERSION
 from trapsim.fields import Entry, Triple, entries, entry
+from trapsim.measure.camera import Camera
 from trapsim.plan.stages import Stage
 from trapsim.quantities import KINDS
 from trapsim.species import Atoms
@@ -83,6 +84,7 @@ class Plan:
     gravity : Gravity or None
     sequence : tuple of Stage
         With every default filled in that hangs on other entries.
+    camera : mapping of str to Camera
     numerics : Numerics
     track : Track
     sigma : mapping of str to float
@@ -97,6 +99,7 @@ class Plan:
     trap: Mapping[str, Part] = field(default_factory=dict)
     gravity: Gravity | None = None
     sequence: tuple[Stage, ...] = ()
+    camera: Mapping[str, Camera] = field(default_factory=dict)
     numerics: Numerics = Numerics()
     track: Track = Track()
     sigma: Mapping[str, float] = field(default_factory=dict, compare=False)
@@ -116,6 +119,7 @@ class Plan:
             "trap": {name: {"kind": part.kind, **_plain(part)} for name, part in self.trap.items()},
             "gravity": None if self.gravity is None else _plain(self.gravity),
             "sequence": [{"stage": stage.kind, **_plain(stage, self.target)} for stage in self.sequence],
+            "camera": {name: _plain(camera) for name, camera in self.camera.items()},
             "numerics": _plain(self.numerics),
             "track": _plain(self.track),
         }
@@ -132,15 +136,12 @@ class Plan:
         They hash the resolved values and the version of the physics: never title, name, species
         (its mass and scattering length count), threads, memory, uncertainties or the text.
         """
-        return _hash(keyed(self.resolved()))
+        return _hash({name: value for name, value in keyed(self.resolved()).items() if name != "camera"})
 
     @property
     def key(self) -> str:
-        """The march key and all that is done with the cloud afterwards; the result folder's name.
-
-        Cameras and the seed of their noise will make the difference; a plan without them has none.
-        """
-        return self.march_key
+        """The march key and all that is done with the cloud afterwards (cameras); the result folder's name."""
+        return _hash(keyed(self.resolved())) if self.camera else self.march_key
 
 
 def keyed(resolved: Mapping[str, Any]) -> dict[str, Any]:

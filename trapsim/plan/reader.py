@@ -13,12 +13,13 @@ from typing import Any
 
 from trapsim.errors import Complaint, FileTrouble, PlanError
 from trapsim.fields import Entry, entries
+from trapsim.measure.camera import Camera
 from trapsim.plan import checks
 from trapsim.plan.kinds import ATOMS_TARGETS, PARTS, STAGES, rampable
 from trapsim.plan.parse import Context, Reading, listed, nearest, parse, read, shown, unknown
 from trapsim.plan.plan import Numerics, Plan, Track, with_mass
 from trapsim.plan.variants import NAME, TABLES, Tree, stage_names, stage_paths, vary
-from trapsim.species import Atoms
+from trapsim.species import SPECIES, Atoms
 from trapsim.terms.field import Gravity
 from trapsim.terms.part import Part
 
@@ -150,6 +151,7 @@ def assemble(tree: Tree, *, name: str, source: str = "") -> tuple[Plan | None, l
     mass = atoms.mass if atoms is not None else UNKNOWN_MASS
     trap = _trap(tree.get("trap", {}), keep, complaints, mass)
     gravity = keep(parse(Gravity, tree["gravity"], "gravity")) if "gravity" in tree else None
+    cameras = _cameras(tree.get("camera", {}), atoms, keep, complaints)
     numerics = keep(parse(Numerics, tree.get("numerics", {}), "numerics"))
     track = keep(parse(Track, tree.get("track", {}), "track"))
     sequence = _sequence(tree, trap, keep, complaints, mass)
@@ -164,7 +166,8 @@ def assemble(tree: Tree, *, name: str, source: str = "") -> tuple[Plan | None, l
         complaints += checks.check_hold(trap, gravity, numerics)
     if complaints:
         return None, complaints
-    return Plan(title=title, name=name, atoms=atoms, trap=trap, gravity=gravity, sequence=sequence, numerics=numerics,
+    return Plan(title=title, name=name, atoms=atoms, trap=trap, gravity=gravity, sequence=sequence, camera=cameras,
+                numerics=numerics,
                 track=track, sigma=sigma, source=source), []
 
 
@@ -217,6 +220,31 @@ def _trap(raw: Any, keep: Any, complaints: list[Complaint], mass: float) -> dict
             complaints.extend(part.complaints(place))
             trap[name] = with_mass(part, mass)
     return trap
+
+
+def _cameras(raw: Any, atoms: Atoms | None, keep: Any, complaints: list[Complaint]) -> dict[str, Camera]:
+    if not isinstance(raw, Mapping):
+        complaints.append(Complaint("camera", shown(raw), "every camera has a name of its own", "write [camera.side]"))
+        return {}
+    cameras: dict[str, Camera] = {}
+    for name, table in raw.items():
+        place = f"camera.{name}"
+        if not NAME.fullmatch(name):
+            rule = "a camera is called by letters, digits, _ and -, beginning with a letter"
+            complaints.append(Complaint(place, f'"{name}"', rule, "call it something like side"))
+            continue
+        camera = keep(parse(Camera, table, place))
+        if camera is None:
+            continue
+        complaints.extend(camera.complaints(place))
+        species = SPECIES.get(atoms.species) if atoms is not None else None
+        if camera.wavelength is None and species is not None:
+            camera = dataclasses.replace(camera, wavelength=species.probe_wavelength)
+        if camera.wavelength is None and atoms is not None:
+            complaints.append(Complaint(f"{place}.wavelength", "", "the probe line of these atoms is not known here",
+                                        'write wavelength = "780.24 nm"'))
+        cameras[name] = camera
+    return cameras
 
 
 def _changeable(trap: Any, mass: float) -> Context:

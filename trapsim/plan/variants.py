@@ -12,7 +12,7 @@ from trapsim.plan.kinds import STAGES
 from trapsim.plan.parse import listed, nearest, shown, unknown
 
 #: The tables of a plan, and those that hold named tables of their own.
-TABLES = ("title", "atoms", "trap", "gravity", "sequence", "numerics", "track")
+TABLES = ("title", "atoms", "trap", "gravity", "sequence", "camera", "numerics", "track")
 NAME = re.compile(r"[A-Za-z][A-Za-z0-9_-]*")
 _SEGMENT = re.compile(r'(?:"(?P<quoted>[^"]+)"|(?P<bare>[A-Za-z0-9_-]+))(?:\[(?P<index>\s*\d+\s*(?:,\s*\d+\s*)*)\])?')
 

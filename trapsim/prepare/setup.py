@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import os
+from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -19,6 +20,7 @@ from trapsim.prepare.needs import hold_orders, measure_up
 from trapsim.prepare.stretch import Stretch
 from trapsim.prepare.symmetry import choose_words, round_directions
 from trapsim.prepare.timeline import Step, Timeline, build_timeline
+from trapsim.record.album import Shot
 from trapsim.space.frame import Frame
 from trapsim.space.space import Array, Space
 from trapsim.terms.box import Box
@@ -52,6 +54,8 @@ class Setup:
     legs : tuple of Leg
     pace : Pace
     guards : Guards
+    shots : tuple of Shot
+        Pictures to be taken.
     why : str
         Why these axes, in a sentence.
     notices : tuple of Notice
@@ -68,6 +72,7 @@ class Setup:
     legs: tuple[Leg, ...]
     pace: Pace
     guards: Guards
+    shots: tuple[Shot, ...]
     why: str
     notices: tuple[Notice, ...]
 
@@ -80,16 +85,20 @@ class Setup:
         """The frame of the ground state: at rest around the classical centre."""
         return Frame(X=np.array(self.timeline.origin))
 
-    def hamiltonian(self) -> Hamiltonian:
-        """What the ground state minimises."""
+    def potential(self, stretch: Sequence[float] = (1.0, 1.0, 1.0)) -> Array:
+        """Potential energy (J) before the sequence, from that at the origin, on the points of the space, stretched."""
         initial, origin, frame = self.timeline.initial, self.timeline.origin, self.frame()
         parts = initial.parts_at(0.0)
-        along = [j not in initial.gripped() for j in range(3)]
+        along = np.array([j not in initial.gripped() for j in range(3)])
         _, curvature = steered(parts, origin)
-        lab = tuple(frame.lab(x, j) for j, x in enumerate(self.space.coordinates()))
-        taken = self.space.quadratic(0.5 * curvature * along)
-        energy = taken + remainder(parts, origin, *lab, steered_along=along)
-        return Hamiltonian(self.space, energy / HBAR, coupling=self.coupling, q=self.q)
+        factors = np.asarray(stretch, dtype=float)
+        lab = tuple(frame.lab(factors[j] * x, j) for j, x in enumerate(self.space.coordinates()))
+        taken = self.space.quadratic(0.5 * curvature * along * factors**2)
+        return np.asarray(taken + remainder(parts, origin, *lab, steered_along=along))
+
+    def hamiltonian(self) -> Hamiltonian:
+        """What the ground state minimises."""
+        return Hamiltonian(self.space, self.potential() / HBAR, coupling=self.coupling, q=self.q)
 
     def first_guess(self, hamiltonian: Hamiltonian) -> Array:
         """Thomas-Fermi where the mean field rules, the best Gaussian otherwise."""
@@ -125,7 +134,8 @@ def prepare(plan: Plan) -> Setup:
     omega = np.sqrt(np.maximum(curvature, 0.0) / plan.atoms.mass)
     needs = measure_up(plan, timeline, omega, q, coupling, accuracy)
     standing = plan.numerics.frame == "lab"
-    moving = [tuple(not standing and not needs.periodic[j] and j not in s.stands for j in range(3)) for s in timeline.steps]
+    still = needs.periodic | standing
+    moving = [tuple(not still[j] and j not in s.stands for j in range(3)) for s in timeline.steps]
     lengths = hold_orders(needs, timeline, omega, q, coupling, moving)
     round_about = round_directions(timeline, standing=standing)
     words = [_words(plan, r, lengths.uniform) for r in round_about]
@@ -133,13 +143,13 @@ def prepare(plan: Plan) -> Setup:
     for w in words:
         if w not in spaces:
             spaces[w] = _space(plan, w, lengths, accuracy)
-    legs = _legs(plan, timeline, [spaces[w] for w in words[1:]], moving)
+    shots = plan_shots(plan, timeline)
+    legs = _legs(plan, timeline, shots, [spaces[w] for w in words[1:]], moving)
     watched = tuple(not p for p in lengths.periodic)
     return Setup(
         plan=plan, timeline=timeline, q=q, coupling=coupling, omega=omega, lengths=lengths, accuracy=accuracy,
         space=spaces[words[0]], legs=legs, pace=Pace(accuracy.tolerance, accuracy.cap),
-        guards=Guards(accuracy.edge, accuracy.spectrum, accuracy.norm, watched), why=_why(plan, round_about, words),
-        notices=timeline.notices,
+        guards=Guards(accuracy.edge, accuracy.spectrum, accuracy.norm, watched), shots=shots, why=_why(plan, round_about, words), notices=timeline.notices,
     )  # fmt: skip
 
 
@@ -180,14 +190,14 @@ def memory_needed(space: Space) -> float:
 
 
 def _legs(
-    plan: Plan, timeline: Timeline, spaces: list[Space], moving: list[tuple[bool, bool, bool]]
+    plan: Plan, timeline: Timeline, shots: tuple[Shot, ...], spaces: list[Space], moving: list[tuple[bool, bool, bool]]
 ) -> tuple[Leg, ...]:
     legs = []
     walled = _walls(timeline.initial)
     for step, space, flags in zip(timeline.steps, spaces, moving, strict=True):
         stage, stretch = plan.sequence[step.stage], step.stretch
         begin, _ = timeline.stage_times[step.stage]
-        wanted = [begin + t for t in stage.pictures] + list(plan.track.at)
+        wanted = [begin + t for t in stage.pictures] + list(plan.track.at) + [s.time for s in shots]
         legs.append(Leg(
             name=stage.name, kind=stage.kind, stage=step.stage, start=stretch.start, stop=stretch.stop, space=space,
             interval=stretch, trapped=_held(step), moving=flags, brief=stage.kind == "pulse",
@@ -196,6 +206,23 @@ def _legs(
         ))  # fmt: skip
         walled = walled or _walls(stretch)
     return tuple(legs)
+
+
+def plan_shots(plan: Plan, timeline: Timeline) -> tuple[Shot, ...]:
+    """Which camera takes a picture when: as the stages ask, else at the end of every release, else at the very end."""
+    asked = {i: list(stage.pictures) for i, stage in enumerate(plan.sequence) if stage.pictures}
+    for i, stage in enumerate(plan.sequence):
+        if stage.kind == "release" and i not in asked:
+            asked[i] = [stage.duration]
+    if not asked and plan.sequence:
+        asked[len(plan.sequence) - 1] = [plan.sequence[-1].duration]
+    shots = []
+    for i, times in sorted(asked.items()):
+        stage, (start, stop) = plan.sequence[i], timeline.stage_times[i]
+        for t in times:
+            when = stop if t == stage.duration else start + t
+            shots += [Shot(f"{name}_{stage.name}_{1e3 * t:.6g}ms", name, when) for name in plan.camera]
+    return tuple(shots)
 
 
 def _walls(stretch: Stretch) -> bool:

@@ -11,7 +11,7 @@ import numpy as np
 from trapsim.cloud.cloud import Cloud
 from trapsim.evolve.march import Leg
 from trapsim.measure.camera import Camera, Picture, pixel_edges, pixel_means, resonant_cross_section
-from trapsim.measure.columns import RASTER, ColumnViews
+from trapsim.measure.columns import ColumnViews
 from trapsim.measure.momentum import Momentum, momentum, order_shares
 from trapsim.record.series import Array
 from trapsim.space.axes import Wave
@@ -20,6 +20,8 @@ from trapsim.terms.lattice import Lattice
 
 #: raster samples per axis point behind a picture
 FINER = 4
+#: turned views leave out detail shorter than this share of a pixel
+UNRESOLVED = 6
 
 
 @dataclass(frozen=True)
@@ -72,8 +74,6 @@ class Album:
     ----------
     cameras : mapping of str to Camera
     shots : sequence of Shot
-    wavelength : float or None
-        Of the probe, m; needed for pictures.
     atoms : float
         Number at the start.
     origin : (3,)
@@ -81,11 +81,10 @@ class Album:
     """
 
     def __init__(
-        self, *, cameras: Mapping[str, Camera], shots: Sequence[Shot], wavelength: float | None, atoms: float, origin: Array
+        self, *, cameras: Mapping[str, Camera], shots: Sequence[Shot], atoms: float, origin: Array
     ) -> None:
         self.cameras = cameras
         self.shots = tuple(shots)
-        self.wavelength = wavelength
         self.atoms = atoms
         self.origin = np.asarray(origin)
         self.pictures: dict[str, Picture] = {}
@@ -126,16 +125,17 @@ class Album:
         along = "xyz".index(camera.view)
         right, up = ("xyz".index(d) for d in camera.axes)
         if self._views is None or self._views.space is not cloud.space:
-            finest = max(RASTER, FINER * max(cloud.space.points_per_direction()))
-            self._views = ColumnViews(cloud.space, raster=finest)
+            self._views = ColumnViews(cloud.space, finer=FINER)
         cosine, sine = np.cos(camera.turn), np.sin(camera.turn)
         where = centre if camera.follow else np.asarray(camera.aim)
         middle = (where[right] * cosine - where[along] * sine, where[up])
-        column = self._views.see_turned(cloud, camera.view, camera.turn) if camera.turn else (
-            self._views.see(cloud, (camera.view,))[camera.view]
-        )
+        if camera.turn:
+            finest = camera.object_pixel / UNRESOLVED
+            column = self._views.see_turned(cloud, camera.view, camera.turn, finest=finest)
+        else:
+            column = self._views.see(cloud, (camera.view,))[camera.view]
         edges = pixel_edges(camera, middle)
-        sigma = resonant_cross_section(self.wavelength)
+        sigma = resonant_cross_section(camera.wavelength)
         density = self.atoms * pixel_means(column, edges)
         start = (self.origin[right] * cosine - self.origin[along] * sine, self.origin[up])
         x, y = ((e[1:] + e[:-1]) / 2 - s for e, s in zip(edges, start, strict=True))

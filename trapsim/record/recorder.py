@@ -76,16 +76,16 @@ class Recorder:
         """The cloud at rest, before the sequence."""
         return self._sample(cloud, interval, stage=0, columns=True)
 
-    def listen(self, tick: Tick, leg: Leg) -> None:
-        """Keep what a tick shows: always at landings and edges, else when it is time again."""
+    def listen(self, tick: Tick, leg: Leg) -> Moments | None:
+        """Keep what a tick shows: always at landings and edges, else when it is time again; what was seen, if anything."""
         cloud = tick.state.cloud
         last = self._rows[-1][0] if self._rows else -np.inf
         asked = tick.reason != "step"
         if not asked and leg.trapped and self._too_soon(cloud.time - last, cloud, leg):
-            return
+            return None
         shown = self._columns["x"][-1][0] if self._columns["x"] else -np.inf
         columns = (tick.reason == "edge" and leg.last) or tick.reason == "landing" or cloud.time - shown >= self.every
-        self._sample(cloud, leg.interval, stage=leg.stage, columns=columns)
+        return self._sample(cloud, leg.interval, stage=leg.stage, columns=columns)
 
     def _too_soon(self, elapsed: float, cloud: Cloud, leg: Leg) -> bool:
         _, curvature = steered(leg.interval.parts_at(cloud.time), tuple(cloud.frame.X))

@@ -14,12 +14,10 @@ from dataclasses import dataclass, field
 import numpy as np
 
 from trapsim.constants import K_B
+from trapsim.measure.columns import VIEWS
 
 Array = np.ndarray
 DIRECTIONS = ("x", "y", "z")
-
-#: Line of sight -> the lab directions that point right and up in its pictures.
-VIEWS: Mapping[str, tuple[str, str]] = {"x": ("y", "z"), "y": ("x", "z"), "z": ("x", "y")}
 
 _NANOKELVIN = 1e9 / K_B
 #: name -> (SI unit, what it is, lab unit, lab units per SI unit)

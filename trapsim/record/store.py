@@ -17,6 +17,9 @@ import h5py
 import numpy as np
 
 from trapsim.errors import FileTrouble
+from trapsim.measure.camera import Picture
+from trapsim.measure.flow import FlowPlane
+from trapsim.record.album import Seen
 from trapsim.record.files import read_checkpoint, reading, write_atomic, write_checkpoint
 from trapsim.record.series import DIRECTIONS, AxisRecord, ColumnSeries, Series, Track, WaveFunction, track_csv
 from trapsim.record.summary import Summary
@@ -51,6 +54,11 @@ class Contents:
         By line of sight.
     final, ground : WaveFunction or None
         The wave function at the end, and at rest before the sequence.
+    pictures : mapping of str to Picture
+    momenta : tuple of Seen
+        Momentum distributions along lattices at the ends of stages.
+    flow : mapping of str to FlowPlane
+        By line of sight, at the end.
     """
 
     plan_text: str
@@ -60,6 +68,9 @@ class Contents:
     columns: Mapping[str, ColumnSeries] = field(default_factory=dict)
     final: WaveFunction | None = None
     ground: WaveFunction | None = None
+    pictures: Mapping[str, Picture] = field(default_factory=dict)
+    momenta: tuple[Seen, ...] = ()
+    flow: Mapping[str, FlowPlane] = field(default_factory=dict)
 
 
 def write_results(folder: str | Path, contents: Contents) -> None:

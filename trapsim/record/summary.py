@@ -27,7 +27,7 @@ STATUSES = ("complete", "interrupted", "stopped")
 
 __all__ = [
     "ColumnSeries", "Effort", "ErrorEstimate", "Ground", "Law", "LegSpace", "MarchEffort", "Moment", "Notice",
-    "Numerics", "Run", "StageEnd", "Summary", "Track", "WaveFunction", "moment_of", "track_csv",
+    "Numerics", "PictureFigures", "Run", "StageEnd", "Summary", "Track", "WaveFunction", "moment_of", "track_csv",
 ]  # fmt: skip
 
 
@@ -76,6 +76,7 @@ class Moment(_Record):
     centre_kinetic_nk: Number
     trap_nk: Number
     interaction_nk: Number
+    orders: Mapping[str, Mapping[str, float]] | None = None
     law: Law | None = None
 
     @property
@@ -154,6 +155,20 @@ class MarchEffort(_Record):
 
 
 @dataclass(frozen=True)
+class PictureFigures(_Record):
+    """What a picture shows; widths and centre are to the right and upwards, at the atoms."""
+
+    name: str
+    camera: str
+    time_ms: float
+    flight_ms: Number
+    atoms: float
+    peak_optical_density: float
+    width_um: tuple[Number, Number]
+    centre_um: tuple[Number, Number]
+
+
+@dataclass(frozen=True)
 class Numerics(_Record):
     """How it was computed, what that cost and how far it can be trusted; axes and points per lab direction."""
 
@@ -182,6 +197,7 @@ class Summary(_Record):
     stages: tuple[StageEnd, ...]
     end: Moment | None
     numerics: Numerics
+    pictures: tuple[PictureFigures, ...] = ()
     warnings: tuple[Notice, ...] = ()
 
     def as_json(self) -> str:
@@ -223,6 +239,10 @@ class Run:
         The last wave function.
     folder : Path or None
         Where it is kept; None when only in memory.
+    momenta : tuple of album.Seen
+        Momentum distributions along the lattices at the ends of the stages.
+    flow : mapping of str to flow.FlowPlane
+        By line of sight, at the end.
     """
 
     plan: Any
@@ -232,9 +252,18 @@ class Run:
     pictures: Mapping[str, Any] = field(default_factory=dict)
     final: WaveFunction | None = None
     folder: Path | None = None
+    momenta: tuple[Any, ...] = ()
+    flow: Mapping[str, Any] = field(default_factory=dict)
 
 
-def moment_of(track: Track, index: int, *, mass: float, law_model: str = "scaling law") -> Moment:
+def moment_of(
+    track: Track,
+    index: int,
+    *,
+    mass: float,
+    law_model: str = "scaling law",
+    orders: Mapping[str, Mapping[str, float]] | None = None,
+) -> Moment:
     """The cloud at one sample of the track, in lab units; a direction without a width is uniform and has no size.
 
     Parameters
@@ -246,6 +275,8 @@ def moment_of(track: Track, index: int, *, mass: float, law_model: str = "scalin
     mass : float, kg
     law_model : str
         What the law beside it is called, where the track has one.
+    orders : mapping, optional
+        Populations of diffraction orders by lattice.
     """
 
     uniform = track["width"][index] == 0
@@ -276,6 +307,7 @@ def moment_of(track: Track, index: int, *, mass: float, law_model: str = "scalin
         centre_kinetic_nk=lab("centre_kinetic"),
         trap_nk=lab("trap"),
         interaction_nk=lab("interaction"),
+        orders=orders,
         law=law,
     )
 
