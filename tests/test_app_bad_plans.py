@@ -285,5 +285,6 @@ def test_a_full_disk_behind_the_output_is_said(tmp_path):
     (tmp_path / "plan.toml").write_text(GOOD)
     with open("/dev/full", "w") as full:
         done = subprocess.run([sys.executable, "-m", "trapsim.app", "check", "plan.toml"], cwd=tmp_path, stdout=full,
-                              stderr=subprocess.PIPE, text=True, timeout=120, check=False)  # fmt: skip
+                              stderr=subprocess.PIPE, text=True, timeout=120, check=False,
+                              env={k: v for k, v in os.environ.items() if k != "PYTHONUNBUFFERED"})  # fmt: skip
     assert done.returncode == 4 and "No space left" in done.stderr and "Traceback" not in done.stderr

@@ -10,7 +10,7 @@ import signal
 import sys
 from collections.abc import Callable, Sequence
 from pathlib import Path
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING, Any, TextIO
 
 from trapsim import __version__
 from trapsim.errors import FileTrouble, Interrupted, PhysicsRefused, PlanError, TrapsimError
@@ -47,18 +47,27 @@ def main(argv: Sequence[str]) -> int:
         code = options.command(options)
         sys.stdout.flush()
     except BrokenPipeError:
-        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+        _let_go(sys.stdout)
         return 0
     except Exception as error:
         if options.debug:
             raise
         explained = _explained(error)
+        _let_go(sys.stdout)
         print(f"trapsim: {explained}", file=sys.stderr)
         return explained.exit_code
     except KeyboardInterrupt as error:
         print(f"trapsim: {error or 'interrupted'}", file=sys.stderr)
         return Interrupted.exit_code
     return code
+
+
+def _let_go(stream: TextIO) -> None:
+    """Write out what can still be written, and forget the rest, so that Python does not trip over it at its end."""
+    try:
+        stream.flush()
+    except OSError:
+        os.dup2(os.open(os.devnull, os.O_WRONLY), stream.fileno())
 
 
 def _explained(error: Exception) -> TrapsimError:

@@ -124,17 +124,20 @@ def _opened_again(folder: Path, plan: Plan) -> Run:
 
 
 def open_run(folder: str | Path, *, plan: Plan | None = None) -> Run:
-    """A finished run, from its folder.
+    """A finished run, from its folder (or the run.h5 in it).
 
     Raises
     ------
     FileTrouble
         When there is no result in it, or it is damaged.
     """
+    folder = Path(folder)
+    if folder.name == RUN_FILE:
+        folder = folder.parent
     kept = read_run(folder)
     return Run(
         plan if plan is not None else kept.plan, kept.summary, kept.track, kept.columns, kept.pictures, kept.final,
-        Path(folder), momenta=kept.momenta, flow=kept.flow,
+        folder, momenta=kept.momenta, flow=kept.flow,
     )  # fmt: skip
 
 
