@@ -16,8 +16,9 @@ import trapsim
 from reference import units
 from trapsim.cloud.cloud import Cloud
 from trapsim.corridor.run import ground_state
-from trapsim.evolve.march import State, Tick, march
+from trapsim.evolve.march import march
 from trapsim.evolve.scaling import Interval
+from trapsim.evolve.state import State, Tick
 from trapsim.measure.observables import Moments
 from trapsim.prepare.setup import Setup
 from trapsim.record.recorder import observe

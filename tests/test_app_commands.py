@@ -69,7 +69,7 @@ def test_check_computes_no_ground_state_and_no_march(ask, monkeypatch):
     def never(*given, **named):
         raise AssertionError("check computes nothing long")
 
-    monkeypatch.setattr("trapsim.corridor.run.relax", never)
+    monkeypatch.setattr("trapsim.corridor.ground.relax", never)
     monkeypatch.setattr("trapsim.corridor.run.march", never)
     assert ask("check", "push.toml")[0] == 0
     assert ask("run", "push.toml")[0] == 1  # the trap works
@@ -124,7 +124,7 @@ def test_running_a_finished_plan_again_says_so_and_computes_nothing(ask, tmp_pat
     def never(*given, **named):
         raise AssertionError("computed again")
 
-    monkeypatch.setattr("trapsim.corridor.run.relax", never)
+    monkeypatch.setattr("trapsim.corridor.ground.relax", never)
     code, out, _ = ask("run", "push.toml", "--no-figures", "--out", "r")
     assert code == 0 and out.startswith("r already holds this plan's result\n\nInvented")
     assert {p.name: p.stat().st_mtime_ns for p in (tmp_path / "r").iterdir()} == before
@@ -206,7 +206,8 @@ def test_show_tells_a_result_from_its_folder_alone(ask, tmp_path):
     assert out.startswith("Invented: a small round cloud") and "expansion rate (mm/s)" in out
     assert files(tmp_path / "copy") == {"run.h5"} | FIGURES
     assert f"z {SAG:.2f}" in out
-    assert ask("show", "copy/run.h5", "--no-figures")[:2] == (0, out.partition("Results are in")[0] + "Results are in\n  copy\n")
+    head = out.partition("Results are in")[0]
+    assert ask("show", "copy/run.h5", "--no-figures")[:2] == (0, head + "Results are in\n  copy\n")
 
 
 # keys

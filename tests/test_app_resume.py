@@ -182,7 +182,7 @@ def test_a_signal_before_the_march_ends_at_once_and_leaves_nothing(tmp_path, cap
     monkeypatch.chdir(tmp_path)
     (tmp_path / "push.toml").write_text(GOOD)
     for number in (signal.SIGINT, signal.SIGTERM):
-        monkeypatch.setattr("trapsim.corridor.run.relax", lambda *a, n=number, **k: os.kill(os.getpid(), n))
+        monkeypatch.setattr("trapsim.corridor.ground.relax", lambda *a, n=number, **k: os.kill(os.getpid(), n))
         handlers = [signal.getsignal(n) for n in (signal.SIGINT, signal.SIGTERM)]
         assert main(["run", "push.toml"]) == 130
         out, err = capsys.readouterr()

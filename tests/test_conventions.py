@@ -12,11 +12,12 @@ from scipy import constants
 
 import trapsim
 from trapsim.cloud.cloud import Cloud
-from trapsim.evolve.scaling import StandingLaw, standing_start
+from trapsim.evolve.scaling import StandingLaw, measure_law
 from trapsim.evolve.splitstep import SplitStep
-from trapsim.measure.columns import VIEWS, ColumnViews
+from trapsim.measure.columns import ColumnViews
 from trapsim.measure.flow import current
 from trapsim.measure.observables import moments, profile
+from trapsim.measure.views import VIEWS
 from trapsim.prepare.timeline import build_timeline
 from trapsim.space.axes import Radial, Wave
 from trapsim.space.frame import Frame
@@ -165,7 +166,8 @@ class Nothing:
 
 
 def flow(cloud: Cloud, rest: Callable[[float], object]) -> SplitStep:
-    return SplitStep(cloud.space, StandingLaw(standing_start(cloud, profile(cloud)), Nothing(), q=Q), q=Q, rest=rest)
+    start = measure_law(cloud, profile(cloud), tail=None, moving=(False, False, False))
+    return SplitStep(cloud.space, StandingLaw(start, Nothing()), q=Q, rest=rest, rate=lambda t: 0.0)
 
 
 def one_wave(m: int) -> Cloud:

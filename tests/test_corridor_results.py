@@ -54,7 +54,7 @@ GROUND = {
     "thomas_fermi_radius_um", "peak_density_per_um3", "healing_length_um", "gas_parameter", "residual", "virial",
 }  # fmt: skip
 SUMMARY = {
-    "title", "status", "key", "march_key", "version", "ground", "stages", "end", "numerics", "warnings",
+    "title", "status", "key", "march_key", "version", "ground", "stages", "end", "pictures", "numerics", "warnings",
 }  # fmt: skip
 NUMERICS = {
     "axes", "points", "legs", "ground", "march", "seconds", "norm_drift", "energy_drift", "continuity", "error",

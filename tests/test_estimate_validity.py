@@ -13,7 +13,7 @@ from reference import units
 from trapsim.estimate.law import scaling_law
 from trapsim.estimate.trust import trust
 from trapsim.estimate.validity import CARE, DOUBT, FINE, Check, validity
-from trapsim.evolve.march import Books
+from trapsim.evolve.state import Books
 from trapsim.prepare.setup import prepare
 
 A_RB = 100.4 * units.A0
@@ -110,7 +110,7 @@ def test_what_is_doubted_is_told_and_what_is_fine_is_not() -> None:
 
 def test_the_error_of_a_perfect_run_is_nothing_but_its_ground_state() -> None:
     told = trust(Books(), residual=1e-9, energy_drift=None, swing=0.0, centre_off=0.0)
-    assert (told.width, told.rate, told.centre) == (1e-9, 1.5e-9, 0.0)
+    assert (told.width, told.rate, told.centre) == pytest.approx((1e-9, 1.5e-9, 0.0), rel=1e-12, abs=0)
 
 
 @pytest.mark.parametrize(

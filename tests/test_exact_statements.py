@@ -15,8 +15,8 @@ from scipy import optimize
 import trapsim
 from reference import classical, gaussian, units
 from trapsim.evolve import march as marching
-from trapsim.evolve.march import State
 from trapsim.evolve.scaling import LawStart
+from trapsim.evolve.state import State
 from trapsim.measure.flow import current
 from trapsim.prepare.setup import prepare
 
@@ -341,7 +341,7 @@ def test_the_frame_law_leaves_the_answer_alone(monkeypatch: pytest.MonkeyPatch) 
             if constants is not None:
                 A, i = constants
 
-                def chosen(cloud: object, seen: object, *, floor: bool, A: object = A, i: object = i) -> LawStart:
+                def chosen(cloud: object, seen: object, *, A: object = A, i: object = i, **how: object) -> LawStart:
                     return LawStart(cloud.time, cloud.frame, A, i, seen.var)
 
                 patch.setattr(marching, "measure_law", chosen)

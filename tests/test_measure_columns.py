@@ -12,7 +12,8 @@ import pytest
 import trapsim
 from reference import units
 from trapsim.cloud.cloud import Cloud
-from trapsim.measure.columns import RASTER, VIEWS, Column, ColumnViews
+from trapsim.measure.columns import RASTER, Column, ColumnViews
+from trapsim.measure.views import VIEWS
 from trapsim.space.axes import Axis, Radial, Wave
 from trapsim.space.frame import Frame
 from trapsim.space.space import Space

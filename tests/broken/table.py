@@ -123,7 +123,7 @@ SLIPS = {
     "frequency out of this world": Slip('["60 Hz"', '["1e300 Hz"', "plan.toml", "exponent"),
     "strength out of this world": Slip(DIPOLE, DIPOLE + "\nstrength = 1e-300", "plan", "exponent"),
     "time out of this world": Slip('"5 ms"', '"1e300 s"', "plan", "exponent"),
-    "gravity out of this world": Slip('"-z"', '"-z"\nvalue = "1e300 m/s^2"', "plan", "exponent"),
+    "gravity out of this world": Slip('"-z"', '"-z"\nvalue = "1e300 m/s^2"', "trap", "deeper"),
 }
 
 #: Contents of a file that is not a plan; refused with exit code 2.

@@ -13,10 +13,10 @@ from trapsim.constants import HBAR
 from trapsim.errors import Notice
 from trapsim.estimate.law import ScalingLaw
 from trapsim.estimate.trust import trust
-from trapsim.evolve.march import Leg, State
 from trapsim.evolve.relax import Relaxed
-from trapsim.measure.camera import Picture
+from trapsim.evolve.state import Leg, State
 from trapsim.measure.observables import Moments, peak_density
+from trapsim.measure.picture import Picture
 from trapsim.prepare.setup import Setup
 from trapsim.record.album import Album
 from trapsim.record.series import AxisRecord, Track, WaveFunction

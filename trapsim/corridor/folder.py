@@ -14,9 +14,9 @@ from typing import Any
 from trapsim.cloud.cloud import Cloud
 from trapsim.constants import PHYSICS_VERSION
 from trapsim.errors import FileTrouble, Notice, PlanError
-from trapsim.evolve.march import Books, State
 from trapsim.evolve.pace import Stride
 from trapsim.evolve.scaling import LawStart
+from trapsim.evolve.state import Books, State
 from trapsim.plan.plan import Plan, differences
 from trapsim.record.store import RUN_FILE, read_checkpoint, write_atomic, write_checkpoint
 from trapsim.space.frame import Frame

@@ -18,14 +18,15 @@ from trapsim.cloud.cloud import Cloud
 from trapsim.corridor import folder as place
 from trapsim.corridor.bounds import ordinary_numbers, set_up
 from trapsim.corridor.findings import Spent, ground_figures, summarise, wave_function
+from trapsim.corridor.ground import ground_state
 from trapsim.errors import FileTrouble, Interrupted, Notice, PhysicsRefused
 from trapsim.estimate.law import scaling_law
 from trapsim.estimate.validity import FINE, validity
 from trapsim.evolve.continuity import continuity
-from trapsim.evolve.march import Leg, State, Tick, march
-from trapsim.evolve.relax import Relaxed, relax
-from trapsim.measure.columns import VIEWS
+from trapsim.evolve.march import march
+from trapsim.evolve.state import Leg, State, Tick
 from trapsim.measure.flow import flow_plane
+from trapsim.measure.views import VIEWS
 from trapsim.plan.plan import Plan
 from trapsim.prepare.setup import Setup
 from trapsim.record.album import Album
@@ -38,8 +39,6 @@ log = logging.getLogger(__name__)
 #: a checkpoint is due when this many times what the last one took has passed, but not more often than FIRST seconds
 PATIENCE = 50.0
 FIRST = 2.0
-#: with imaginary time, residuals below this would take thousands of pairs
-IMAGINARY_RESIDUAL = 1e-6
 
 
 class Progress(Protocol):
@@ -321,40 +320,5 @@ class _Corridor:
             write_results(self.folder, contents)
             if status == "complete":
                 (self.folder / place.CHECKPOINT).unlink(missing_ok=True)
-        return Run(
-            plan, summary, track, columns, self.album.pictures, final, self.folder, momenta=tuple(self.album.seen), flow=flow
-        )
-
-
-def ground_state(setup: Setup) -> Relaxed:
-    """Relax the cloud of a plan.
-
-    Raises
-    ------
-    PhysicsRefused
-        On collapse, or when it does not converge to a positive state.
-    """
-    hamiltonian = setup.hamiltonian()
-    method = setup.plan.numerics.ground
-    tolerance = setup.accuracy.residual
-    if method == "imaginary time":
-        tolerance = max(tolerance, IMAGINARY_RESIDUAL)
-    relaxed = relax(hamiltonian, setup.first_guess(hamiltonian), method=method, tolerance=tolerance)
-    if relaxed.collapsed:
-        raise PhysicsRefused.at(
-            "ground state", f"N a = {1e9 * setup.plan.atoms.number * setup.plan.atoms.scattering_length:.4g} nm",
-            "the attraction is too strong for this trap: the cloud collapses (in a round trap at N |a| / a_ho = 0.575)",
-            "take fewer atoms, a weaker attraction or a weaker trap",
-        )  # fmt: skip
-    if relaxed.signed:
-        raise PhysicsRefused.at(
-            "ground state", "a wave function that changes sign", "a ground state is positive",
-            "take numerics.accuracy = \"fine\" or give more numerics.points",
-        )  # fmt: skip
-    if not relaxed.converged:
-        raise PhysicsRefused.at(
-            "ground state", f"a residual of {relaxed.residual:.1e} after {relaxed.pairs:.0f} transform pairs",
-            f"it must fall below {tolerance:.0e}",
-            "try the other numerics.ground, or look at numerics.extent and numerics.points",
-        )  # fmt: skip
-    return relaxed
+        seen = tuple(self.album.seen)
+        return Run(plan, summary, track, columns, self.album.pictures, final, self.folder, momenta=seen, flow=flow)

@@ -6,7 +6,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from trapsim.evolve.march import Books
+from trapsim.evolve.state import Books
 
 
 @dataclass(frozen=True)

@@ -5,8 +5,9 @@ from __future__ import annotations
 from dataclasses import replace
 
 from trapsim.cloud.cloud import Cloud
-from trapsim.evolve.march import Leg, stepper
+from trapsim.evolve.march import stepper
 from trapsim.evolve.scaling import LawStart
+from trapsim.evolve.state import Leg
 from trapsim.measure.flow import continuity_residual
 
 #: of the last step, the share by which the cloud is moved back and forth

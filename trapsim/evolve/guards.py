@@ -95,10 +95,15 @@ def edge_population(space: Space, marginals: Sequence[Array]) -> Array:
 def spectrum_population(space: Space, marginals: Sequence[Array]) -> Array:
     """Share (3,) of a spectrum beyond 0.8 of the highest wave number of each direction's axis."""
     shares = [
-        0.0 if a.uniform else _share(m * a.spectral_weights, np.abs(a.k) > UPPER * a.k_max)
+        0.0 if a.uniform else _share(m * a.spectral_weights, _upper(np.abs(a.k)))
         for a, m in zip(space.axes, marginals, strict=True)
     ]
     return np.array([shares[space.dim(j)] for j in range(3)])
+
+
+def _upper(k: Array) -> Array:
+    """Which wave numbers (absolute) lie in the upper part: at least two of them, as a round cloud may have none in one."""
+    return (k > UPPER * k.max()) | (k >= np.unique(k)[-2:][0] * (1 - 1e-9))
 
 
 def _share(population: Array, chosen: Array) -> float:

@@ -5,18 +5,16 @@ Everything downstream (files, figures, cameras) knows only a `Column`, never the
 
 from __future__ import annotations
 
-from collections.abc import Mapping
 from dataclasses import dataclass
 
 import numpy as np
 from scipy import interpolate
 
 from trapsim.cloud.cloud import Cloud
+from trapsim.measure.views import VIEWS
 from trapsim.space.axes import Array, Radial
 from trapsim.space.space import Space
 
-#: line of sight -> the lab directions that point right and up in its pictures
-VIEWS: Mapping[str, tuple[str, str]] = {"x": ("y", "z"), "y": ("x", "z"), "z": ("x", "y")}
 #: samples per side of a raster
 RASTER = 128
 #: waves summed at a time

@@ -7,7 +7,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from trapsim.cloud.cloud import Cloud
-from trapsim.measure.columns import VIEWS
+from trapsim.measure.views import VIEWS
 from trapsim.space.axes import Array, Axis, Radial
 
 

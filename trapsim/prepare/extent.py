@@ -53,12 +53,12 @@ class Accuracy:
 
 
 #: room around a box, in half lengths of it
-HEAD_START = 1.8
+HEAD_START = 2.0
 
 ACCURACY = {
     "draft": Accuracy(2.2, 3e-4, 2.4, 4.0, 3.5, 0.5, 1e-6, 1e-3, 1e-3, 1e-2),
     "normal": Accuracy(1.4, 1e-4, 2.4, 5.5, 5.0, 1.5, 1e-7, 1e-4, 1e-4, 1e-3),
-    "fine": Accuracy(1.1, 1e-5, 0.8, 7.0, 6.0, 4.0, 1e-9, 1e-6, 1e-6, 1e-4),
+    "fine": Accuracy(1.0, 1e-5, 0.8, 7.0, 6.0, 4.0, 1e-9, 2e-6, 1e-5, 1e-4),
 }
 
 

@@ -12,13 +12,13 @@ from trapsim.cloud import shapes
 from trapsim.constants import HBAR
 from trapsim.errors import Notice, PlanError
 from trapsim.evolve.guards import Guards
-from trapsim.evolve.march import Leg, Pace
 from trapsim.evolve.relax import Hamiltonian
+from trapsim.evolve.state import Leg, Pace
 from trapsim.plan.plan import Plan
 from trapsim.prepare.extent import ACCURACY, Accuracy, Lengths, choose_space
 from trapsim.prepare.needs import hold_orders, measure_up
 from trapsim.prepare.stretch import Stretch
-from trapsim.prepare.symmetry import choose_words, round_directions
+from trapsim.prepare.symmetry import choose_words, lasting_axis, round_directions
 from trapsim.prepare.timeline import Step, Timeline, build_timeline
 from trapsim.record.album import Shot
 from trapsim.space.frame import Frame
@@ -138,7 +138,8 @@ def prepare(plan: Plan) -> Setup:
     moving = [tuple(not still[j] and j not in s.stands for j in range(3)) for s in timeline.steps]
     lengths = hold_orders(needs, timeline, omega, q, coupling, moving)
     round_about = round_directions(timeline, standing=standing)
-    words = [_words(plan, r, lengths.uniform) for r in round_about]
+    axis = lasting_axis(round_about, lengths.uniform)
+    words = [_words(plan, axis, r, lengths.uniform) for r in round_about]
     spaces: dict[tuple[str, ...], Space] = {}
     for w in words:
         if w not in spaces:
@@ -149,21 +150,22 @@ def prepare(plan: Plan) -> Setup:
     return Setup(
         plan=plan, timeline=timeline, q=q, coupling=coupling, omega=omega, lengths=lengths, accuracy=accuracy,
         space=spaces[words[0]], legs=legs, pace=Pace(accuracy.tolerance, accuracy.cap),
-        guards=Guards(accuracy.edge, accuracy.spectrum, accuracy.norm, watched), shots=shots, why=_why(plan, round_about, words), notices=timeline.notices,
+        guards=Guards(accuracy.edge, accuracy.spectrum, accuracy.norm, watched), shots=shots,
+        why=_why(plan, round_about, words), notices=timeline.notices,
     )  # fmt: skip
 
 
-def _words(plan: Plan, round_about: frozenset[int], uniform: Array) -> tuple[str, str, str]:
+def _words(plan: Plan, axis: int | None, round_about: frozenset[int], uniform: Array) -> tuple[str, str, str]:
     asked = plan.numerics.axes
     if asked == "auto":
-        return choose_words(round_about, uniform)
+        return choose_words(axis, round_about)
     words = ("wave", "wave", "wave") if asked == "full" else asked
     pair = [j for j in range(3) if words[j] == "radial"]
     if pair:
-        (axis,) = set(range(3)) - set(pair)
-        if axis not in round_about or any(uniform[j] for j in pair):
+        (alone,) = set(range(3)) - set(pair)
+        if alone not in round_about or any(uniform[j] for j in pair):
             raise PlanError.at(
-                "numerics.axes", str(list(words)), f"the plan is not round about {AXES[axis]} all the way",
+                "numerics.axes", str(list(words)), f"the plan is not round about {AXES[alone]} all the way",
                 "write axes = \"auto\", or \"full\"",
             )  # fmt: skip
     return tuple(words)
@@ -200,7 +202,7 @@ def _legs(
         wanted = [begin + t for t in stage.pictures] + list(plan.track.at) + [s.time for s in shots]
         legs.append(Leg(
             name=stage.name, kind=stage.kind, stage=step.stage, start=stretch.start, stop=stretch.stop, space=space,
-            interval=stretch, trapped=_held(step), moving=flags, brief=stage.kind == "pulse",
+            interval=stretch, trapped=_held(step), moving=flags, brief=stage.kind == "pulse" and bool(stretch.gripped()),
             landings=tuple(sorted({t for t in wanted if stretch.start < t < stretch.stop})), kick=step.kick,
             last=step.last, unwalled=walled and not _walls(stretch),
         ))  # fmt: skip

@@ -71,10 +71,14 @@ def _round_about(stretch: Stretch, place: Array, moved: frozenset[int]) -> froze
     return out
 
 
-def choose_words(round_about: frozenset[int], uniform: Sequence[bool]) -> tuple[str, str, str]:
-    """Kinds of axis along x, y, z: the radial axis covers two directions that are alike."""
-    for axis in sorted(round_about):
-        pair = [j for j in range(3) if j != axis]
-        if not any(uniform[j] for j in pair):
-            return tuple("wave" if j == axis else "radial" for j in range(3))
-    return ("wave", "wave", "wave")
+def lasting_axis(round_about: Sequence[frozenset[int]], uniform: Sequence[bool]) -> int | None:
+    """The direction about which the cloud stays round for the most steps; one radial axis serves it all that time."""
+    fit = [a for a in sorted(round_about[0]) if not any(uniform[j] for j in range(3) if j != a)]
+    return max(fit, key=lambda a: sum(a in still_round for still_round in round_about), default=None)
+
+
+def choose_words(axis: int | None, round_about: frozenset[int]) -> tuple[str, str, str]:
+    """Kinds of axis along x, y, z: the radial axis covers the two directions that are alike about `axis`."""
+    if axis is None or axis not in round_about:
+        return ("wave", "wave", "wave")
+    return tuple("wave" if j == axis else "radial" for j in range(3))

@@ -6,7 +6,7 @@ and a stretch answers for its closed interval with the values of its inside: not
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field, replace
 
 import numpy as np
@@ -192,6 +192,7 @@ class _Builder:
 
     def _release(self, stage: Release, start: float, stop: float) -> dict[str, Course]:
         names = stage.off if stage.off is not None else [n for n, p in self.parts.items() if p.confines]
+        self._let_go(names, start)
         courses = {}
         for name in names:
             path = f"{name}.strength"
@@ -203,6 +204,14 @@ class _Builder:
             sharpness = (end - start) / off.time_constant if off.time_constant else 1.0
             courses[path] = Course(start, end, self.parts[name].strength, 0.0, off.shape, sharpness)
         return courses
+
+    def _let_go(self, names: Sequence[str], t: float) -> None:
+        """Leave released parts with a held centre where they are: one that dies away holds nothing any more."""
+        held = [n for n, p in self.parts.items() if p.strength > 0 and getattr(p, "centre", None) == HELD]
+        placed = self._stretch(t, t, {}).parts_at(t)
+        for name, part in zip(held, placed[len(placed) - len(held) :], strict=True):
+            if name in names:
+                self._set(f"{name}.centre", part.centre)
 
     def _get(self, path: str) -> Value | str:
         if path == SCATTERING:

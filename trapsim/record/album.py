@@ -9,10 +9,11 @@ from typing import Any
 import numpy as np
 
 from trapsim.cloud.cloud import Cloud
-from trapsim.evolve.march import Leg
-from trapsim.measure.camera import Camera, Picture, pixel_edges, pixel_means, resonant_cross_section
+from trapsim.evolve.state import Leg
+from trapsim.measure.camera import Camera
 from trapsim.measure.columns import ColumnViews
 from trapsim.measure.momentum import Momentum, momentum, order_shares
+from trapsim.measure.picture import Picture, pixel_edges, pixel_means, resonant_cross_section
 from trapsim.record.series import Array
 from trapsim.space.axes import Wave
 from trapsim.space.space import Space

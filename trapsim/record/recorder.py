@@ -9,10 +9,12 @@ import numpy as np
 
 from trapsim.cloud.cloud import Cloud
 from trapsim.constants import HBAR
-from trapsim.evolve.march import PROFILE_PAIRS, Leg, Tick
+from trapsim.evolve.march import PROFILE_PAIRS
 from trapsim.evolve.scaling import Interval
-from trapsim.measure.columns import VIEWS, ColumnViews
+from trapsim.evolve.state import Leg, Tick
+from trapsim.measure.columns import ColumnViews
 from trapsim.measure.observables import Moments, moments, profile
+from trapsim.measure.views import VIEWS
 from trapsim.record.series import Array, ColumnSeries, Track
 from trapsim.terms.part import remainder, steered
 

@@ -14,7 +14,7 @@ from dataclasses import dataclass, field
 import numpy as np
 
 from trapsim.constants import K_B
-from trapsim.measure.columns import VIEWS
+from trapsim.measure.views import VIEWS
 
 Array = np.ndarray
 DIRECTIONS = ("x", "y", "z")

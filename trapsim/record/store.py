@@ -17,8 +17,8 @@ import h5py
 import numpy as np
 
 from trapsim.errors import FileTrouble
-from trapsim.measure.camera import Picture
 from trapsim.measure.flow import FlowPlane
+from trapsim.measure.picture import Picture
 from trapsim.record.album import Seen
 from trapsim.record.files import read_checkpoint, reading, write_atomic, write_checkpoint
 from trapsim.record.series import DIRECTIONS, AxisRecord, ColumnSeries, Series, Track, WaveFunction, track_csv

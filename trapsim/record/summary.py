@@ -23,7 +23,6 @@ from trapsim.record.series import ColumnSeries, Track, WaveFunction, track_csv
 
 Number = float | None
 Triple = tuple[Number, Number, Number]
-STATUSES = ("complete", "interrupted", "stopped")
 
 __all__ = [
     "ColumnSeries", "Effort", "ErrorEstimate", "Ground", "Law", "LegSpace", "MarchEffort", "Moment", "Notice",

@@ -65,7 +65,8 @@ def _prediction(setup: Setup, law: ScalingLaw | None) -> list[str]:
     for index, (stage, (_, stop)) in enumerate(zip(setup.plan.sequence, setup.timeline.stage_times, strict=True)):
         centre = setup.timeline.path[last[index]][:3] - np.array(setup.timeline.origin)
         widths = _three(1e6 * law.at(stop)[0], "") if law else "-"
-        lines.append(f"  {stage.name:<16}{four(1e3 * stop):>7} ms   {widths:<28}{_three(1e6 * _quiet(centre), '')}".rstrip())
+        where = _three(1e6 * _quiet(centre), "")
+        lines.append(f"  {stage.name:<16}{four(1e3 * stop):>7} ms   {widths:<28}{where}".rstrip())
     return lines
 
 
