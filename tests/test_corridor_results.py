@@ -47,7 +47,7 @@ def test_run_draws_figures_that_are_pictures(finished):
 TRIPLES = "width_um expansion_rate_mm_per_s centre_um velocity_mm_per_s velocity_spread_mm_per_s expansion_energy_nk"
 MOMENT = {
     "time_ms", "flight_ms", "atoms", *TRIPLES.split(), "internal_kinetic_nk", "centre_kinetic_nk", "trap_nk",
-    "interaction_nk", "aspect_ratio", "law",
+    "interaction_nk", "aspect_ratio", "orders", "law",
 }  # fmt: skip
 GROUND = {
     "origin_um", "chemical_potential_hz", "energy_hz", "kinetic_hz", "trap_hz", "interaction_hz", "width_um",
