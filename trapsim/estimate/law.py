@@ -9,6 +9,8 @@ import numpy as np
 from scipy import integrate
 
 from trapsim.prepare.setup import Setup
+from trapsim.prepare.stretch import Stretch
+from trapsim.terms.harmonic import Harmonic
 from trapsim.terms.part import Array, steered
 
 THOMAS_FERMI = "Thomas-Fermi scaling law"
@@ -61,14 +63,19 @@ def thomas_fermi(omega: Array, q: float, number: float) -> tuple[float, Array]:
         return float(mu), np.where(omega > 0, np.sqrt(2 * q * mu) / omega, np.inf)
 
 
+def _turned(stretch: Stretch) -> bool:
+    """Whether a trap that couples the directions is on in a stretch."""
+    return any(isinstance(p, Harmonic) and any(p.turn) for p in stretch.parts_at(stretch.start))
+
+
 def scaling_law(setup: Setup) -> ScalingLaw | None:
-    """The law for a plan's timeline; None where there is none (attraction, nothing trapped).
+    """The law for a plan's timeline; None where there is none (attraction, nothing trapped, a turned trap).
 
     b_j'' = w_j(0)^2/(b_j b_x b_y b_z) - w_j(t)^2 b_j for a Thomas-Fermi cloud (Y. Castin and R. Dum, Phys. Rev. Lett. 77,
     5315 (1996)), b_j'' = w_j(0)^2/b_j^3 - w_j(t)^2 b_j for the ideal gas.
     """
     trapped = setup.omega > 0
-    if setup.coupling < 0 or not trapped.any():
+    if setup.coupling < 0 or not trapped.any() or any(_turned(step.stretch) for step in setup.timeline.steps):
         return None
     w0 = setup.omega
     if setup.coupling == 0:

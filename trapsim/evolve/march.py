@@ -12,6 +12,7 @@ from dataclasses import replace
 import numpy as np
 
 from trapsim.cloud.cloud import Cloud, regauge
+from trapsim.constants import HBAR
 from trapsim.evolve.guards import Guards, edge_population, spectrum_population
 from trapsim.evolve.pace import Buffers
 from trapsim.evolve.scaling import LawStart, MovingLaw, StandingLaw, measure_law, reach
@@ -32,6 +33,8 @@ FOLLOW = 1e-3
 FULL, FULL_TAIL, CHIRPED = 0.5, 1e-4, 0.1
 #: in flight the frame grows so that less than this share of what the guards allow comes near the edge
 HELD_BACK = 0.1
+#: by how much an axis is stretched to see what is not steered change
+STRETCH = 1e-4
 #: transform pairs a full profile costs: half a pair, and one derivative per direction
 PROFILE_PAIRS = 1.5
 #: plain steps between two looks at the spectrum, where something may shift it
@@ -88,8 +91,32 @@ def _law_start(cloud: Cloud, seen: Profile, leg: Leg, guards: Guards) -> LawStar
         sound = np.sqrt(cloud.q * max(leg.interval.coupling(cloud.time), 0.0) * cloud.density().max() / cloud.frame.B)
         front = 2 * float(sound)
     tail = None if leg.trapped else HELD_BACK * guards.edge
-    law = measure_law(cloud, seen, tail=tail, moving=leg.moving, front=front)
+    squeeze = _squeeze(cloud, seen, leg) if leg.trapped else None
+    law = measure_law(cloud, seen, tail=tail, moving=leg.moving, front=front, squeeze=squeeze)
     return replace(law, edge=float(np.where(guards.watched, edge_population(cloud.space, seen.density), 0.0).max()))
+
+
+def _squeeze(cloud: Cloud, seen: Profile, leg: Leg) -> Array | None:
+    """How what is not steered holds the widths, <y_j dU/dy_j>/(m <y_j^2>) (1/s^2); None when nothing is left."""
+    parts = leg.interval.parts_at(cloud.time)
+    if all(p.quadratic for p in parts):
+        return None
+    space, frame = cloud.space, cloud.frame
+    density, coordinates, X = cloud.density(), space.coordinates(), tuple(frame.X)
+    out = np.zeros(3)
+    for axis in space.axes:
+        if axis.uniform:
+            continue
+        wide, narrow = (
+            remainder(parts, X, *(
+                frame.lab((1 + sign * STRETCH * (j in axis.covers)) * x, j) for j, x in enumerate(coordinates)
+            ), steered_along=leg.moving)
+            for sign in (1, -1)
+        )  # fmt: skip
+        slope = space.integral((wide - narrow) * density) / (2 * STRETCH * seen.norm)
+        size = sum(frame.b[j] ** 2 * seen.var[j] for j in axis.covers) * HBAR / cloud.q
+        out[list(axis.covers)] = slope / size
+    return out
 
 
 def settled(cloud: Cloud, moving: Sequence[bool]) -> Cloud:

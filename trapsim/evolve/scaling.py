@@ -67,7 +67,13 @@ class LawStart:
 
 
 def measure_law(
-    cloud: Cloud, seen: Profile, *, tail: float | None, moving: Sequence[bool] = ALL, front: float = 0.0
+    cloud: Cloud,
+    seen: Profile,
+    *,
+    tail: float | None,
+    moving: Sequence[bool] = ALL,
+    front: float = 0.0,
+    squeeze: Array | None = None,
 ) -> LawStart:
     """Measure the constants of the frame law on a cloud.
 
@@ -79,6 +85,8 @@ def measure_law(
         Directions in which the frame moves; in the others A and i are zero.
     front : float
         Velocity of atoms that run ahead of the rest, m/s, which A must hold as well.
+    squeeze : (3,), optional
+        <y_j dU/dy_j>/(m <y_j^2>) of what is not steered, 1/s^2: it holds the widths as a trap would.
     """
     A, i = np.zeros(3), np.zeros(3)
     for j in range(3):
@@ -88,6 +96,8 @@ def measure_law(
         # the part of the spread of k that is not mere expansion against the frame
         own = seen.k_var[j] - seen.cov[j] ** 2 / seen.var[j]
         A[j] = cloud.q**2 * own / seen.var[j]
+        if squeeze is not None:
+            A[j] -= squeeze[j] * cloud.frame.b[j] ** 4
         i[j] = cloud.q * seen.quartic / (2 * seen.norm * seen.var[j])
         if tail is not None:
             A[j] = max(A[j], _holding(cloud, seen, j, tail, front))
@@ -169,9 +179,12 @@ class MovingLaw:
 
     def turn(self, dK: Array) -> tuple[Array, Array]:
         """Lens (1/s) and drift (s) that turn phase space by sqrt(A) dK: sqrt(A) tan(theta/2), sin(theta)/sqrt(A)."""
-        root = np.sqrt(self.start.A)
+        root = np.sqrt(np.abs(self.start.A))
         theta = root * dK
-        return root * np.tan(theta / 2), np.where(root > 0, np.sin(theta) / np.where(root > 0, root, 1.0), dK)
+        pull = self.start.A >= 0
+        lens = np.where(pull, root * np.tan(theta / 2), -root * np.tanh(theta / 2))
+        sine = np.where(pull, np.sin(theta), np.sinh(theta))
+        return lens, np.where(root > 0, sine / np.where(root > 0, root, 1.0), dK)
 
 
 class StandingLaw:

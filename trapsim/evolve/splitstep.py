@@ -108,7 +108,7 @@ class SplitStep:
 
     def turned(self, t0: float, t1: float) -> float:
         """By how much phase space turns over an interval, rad."""
-        return float(np.max(np.sqrt(self.law.start.A) * self.law.integrals(t0, t1)[0]))
+        return float(np.max(np.sqrt(np.abs(self.law.start.A)) * self.law.integrals(t0, t1)[0]))
 
     def longest(self, t: float) -> float:
         """The longest step, s, that still samples what is not steered well at two points."""

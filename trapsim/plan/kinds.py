@@ -11,11 +11,14 @@ from trapsim.species import Atoms
 from trapsim.terms.beam import Beam
 from trapsim.terms.box import Box
 from trapsim.terms.field import Gradient
+from trapsim.terms.function import Function
 from trapsim.terms.harmonic import Harmonic
 from trapsim.terms.lattice import Lattice
 from trapsim.terms.part import Part
 
-PARTS: Mapping[str, type[Part]] = MappingProxyType({cls.kind: cls for cls in (Harmonic, Box, Lattice, Beam, Gradient)})
+PARTS: Mapping[str, type[Part]] = MappingProxyType(
+    {cls.kind: cls for cls in (Harmonic, Box, Lattice, Beam, Gradient, Function)}
+)
 STAGES: Mapping[str, type[Stage]] = MappingProxyType({cls.kind: cls for cls in (Hold, Ramp, Pulse, Kick, Release)})
 
 

@@ -13,21 +13,27 @@ from typing import Any
 
 from trapsim.errors import Complaint, FileTrouble, PlanError
 from trapsim.fields import Entry, entries
-from trapsim.measure.camera import Camera
 from trapsim.plan import checks
 from trapsim.plan.kinds import ATOMS_TARGETS, PARTS, STAGES, rampable
-from trapsim.plan.parse import Context, Reading, listed, nearest, parse, read, shown, unknown
-from trapsim.plan.plan import Numerics, Plan, Track, with_mass
+from trapsim.plan.parse import Context, Reading, parse, read, shown, unknown
+from trapsim.plan.plan import Numerics, Plan, Track
+from trapsim.plan.tables import kind_of, read_cameras, read_trap, with_functions
 from trapsim.plan.variants import NAME, TABLES, Tree, stage_names, stage_paths, vary
-from trapsim.species import SPECIES, Atoms
+from trapsim.species import Atoms
 from trapsim.terms.field import Gravity
+from trapsim.terms.function import Potential
 from trapsim.terms.part import Part
 
 #: kg; stands in for the mass of atoms that could not be read, so that the rest of the plan still can
 UNKNOWN_MASS = 1e-25
 
 
-def read_plan(path: str | os.PathLike[str], changes: Mapping[str, Any] | None = None) -> Plan:
+def read_plan(
+    path: str | os.PathLike[str],
+    changes: Mapping[str, Any] | None = None,
+    *,
+    functions: Mapping[str, Potential] | None = None,
+) -> Plan:
     """Read a plan file, with some values replaced by path if wanted.
 
     Parameters
@@ -36,6 +42,8 @@ def read_plan(path: str | os.PathLike[str], changes: Mapping[str, Any] | None = 
         A TOML file.
     changes : mapping of str to object, optional
         New values by path, written as in the file: {"atoms.number": "2e5"}; None takes an entry out.
+    functions : mapping of str to callable, optional
+        For every part of the kind "function", by the part's name: V(x, y, z, t) in J on broadcastable arrays in m.
 
     Returns
     -------
@@ -48,12 +56,18 @@ def read_plan(path: str | os.PathLike[str], changes: Mapping[str, Any] | None = 
     PlanError
         When what it says is not a plan; all complaints at once.
     """
-    return _read(_text(Path(path)), Path(path).stem, changes, str(path))
+    return _read(_text(Path(path)), Path(path).stem, changes, str(path), functions)
 
 
-def plan_from_text(text: str, name: str = "plan", changes: Mapping[str, Any] | None = None) -> Plan:
+def plan_from_text(
+    text: str,
+    name: str = "plan",
+    changes: Mapping[str, Any] | None = None,
+    *,
+    functions: Mapping[str, Potential] | None = None,
+) -> Plan:
     """Read a plan from its text; see `read_plan`."""
-    return _read(text, name, changes, name)
+    return _read(text, name, changes, name, functions)
 
 
 def settings(texts: Sequence[str]) -> dict[str, Any]:
@@ -114,9 +128,11 @@ def _text(path: Path) -> str:
     return text
 
 
-def _read(text: str, name: str, changes: Mapping[str, Any] | None, source: str) -> Plan:
+def _read(
+    text: str, name: str, changes: Mapping[str, Any] | None, source: str, functions: Mapping[str, Potential] | None
+) -> Plan:
     tree, complaints = vary(_tree(text, source), changes or {})
-    plan, wrong = assemble(tree, name=name, source=text)
+    plan, wrong = assemble(tree, name=name, source=text, functions=functions or {})
     complaints += wrong
     if plan is None or complaints:
         raise PlanError.from_complaints(_in_file_order(complaints, tree), source)
@@ -136,7 +152,9 @@ def _tree(text: str, source: str) -> Tree:
     return tree
 
 
-def assemble(tree: Tree, *, name: str, source: str = "") -> tuple[Plan | None, list[Complaint]]:
+def assemble(
+    tree: Tree, *, name: str, source: str = "", functions: Mapping[str, Potential] | None = None
+) -> tuple[Plan | None, list[Complaint]]:
     """The plan that a text tree describes, or None, and everything that is wrong with it."""
     complaints = [unknown(key, key, TABLES, sort="a table") for key in tree if key not in TABLES]
     sigma: dict[str, float] = {}
@@ -149,11 +167,13 @@ def assemble(tree: Tree, *, name: str, source: str = "") -> tuple[Plan | None, l
     title = keep(read(tree["title"], entries(Plan)["title"], "title")) if "title" in tree else ""
     atoms = _atoms(tree, keep, complaints)
     mass = atoms.mass if atoms is not None else UNKNOWN_MASS
-    trap = _trap(tree.get("trap", {}), keep, complaints, mass)
+    trap = read_trap(tree.get("trap", {}), keep, complaints, mass)
     gravity = keep(parse(Gravity, tree["gravity"], "gravity")) if "gravity" in tree else None
-    cameras = _cameras(tree.get("camera", {}), atoms, keep, complaints)
+    cameras = read_cameras(tree.get("camera", {}), atoms, keep, complaints)
     numerics = keep(parse(Numerics, tree.get("numerics", {}), "numerics"))
     track = keep(parse(Track, tree.get("track", {}), "track"))
+    trap, wrong = with_functions(trap, functions or {})
+    complaints += wrong
     sequence = _sequence(tree, trap, keep, complaints, mass)
 
     complaints += checks.check_parts(trap)
@@ -184,69 +204,6 @@ def _atoms(tree: Tree, keep: Any, complaints: list[Complaint]) -> Atoms | None:
     return atoms
 
 
-def _kind(raw: Mapping[str, Any], place: str, key: str, kinds: Mapping[str, type]) -> type | Complaint:
-    """The class that a table names by its kind."""
-    given, spot = raw.get(key), f"{place}.{key}"
-    if given is None:
-        return Complaint(spot, "", f"this is needed: one of {listed(kinds)}", f'write {key} = "{next(iter(kinds))}"')
-    if isinstance(given, str) and given in kinds:
-        return kinds[given]
-    close = nearest(given, kinds) if isinstance(given, str) else ""
-    hint = f'did you mean "{close}"? ' if close else ""
-    return Complaint(spot, shown(given), f"trapsim does not know this {key}", f"{hint}known here: {listed(kinds)}")
-
-
-def _trap(raw: Any, keep: Any, complaints: list[Complaint], mass: float) -> dict[str, Part]:
-    if not isinstance(raw, Mapping):
-        complaints.append(Complaint("trap", shown(raw), "the trap is made of named parts", "write [trap.dipole]"))
-        return {}
-    trap: dict[str, Part] = {}
-    for name, table in raw.items():
-        place = f"trap.{name}"
-        if not isinstance(table, Mapping):
-            rule, way_out = "every part of the trap has a name of its own", "write [trap.dipole], then its entries"
-            complaints.append(Complaint(place, shown(table), rule, way_out))
-            continue
-        if name == "atoms" or not NAME.fullmatch(name):
-            rule = "a part is called by letters, digits, _ and -, beginning with a letter, and not atoms"
-            complaints.append(Complaint(place, f'"{name}"', rule, "call it something like dipole"))
-            continue
-        cls = _kind(table, place, "kind", PARTS)
-        if isinstance(cls, Complaint):
-            complaints.append(cls)
-            continue
-        part = keep(parse(cls, table, place, Context(units=cls.units(table, mass)), also=("kind",)))
-        if part is not None:
-            complaints.extend(part.complaints(place))
-            trap[name] = with_mass(part, mass)
-    return trap
-
-
-def _cameras(raw: Any, atoms: Atoms | None, keep: Any, complaints: list[Complaint]) -> dict[str, Camera]:
-    if not isinstance(raw, Mapping):
-        complaints.append(Complaint("camera", shown(raw), "every camera has a name of its own", "write [camera.side]"))
-        return {}
-    cameras: dict[str, Camera] = {}
-    for name, table in raw.items():
-        place = f"camera.{name}"
-        if not NAME.fullmatch(name):
-            rule = "a camera is called by letters, digits, _ and -, beginning with a letter"
-            complaints.append(Complaint(place, f'"{name}"', rule, "call it something like side"))
-            continue
-        camera = keep(parse(Camera, table, place))
-        if camera is None:
-            continue
-        complaints.extend(camera.complaints(place))
-        species = SPECIES.get(atoms.species) if atoms is not None else None
-        if camera.wavelength is None and species is not None:
-            camera = dataclasses.replace(camera, wavelength=species.probe_wavelength)
-        if camera.wavelength is None and atoms is not None:
-            complaints.append(Complaint(f"{place}.wavelength", "", "the probe line of these atoms is not known here",
-                                        'write wavelength = "780.24 nm"'))
-        cameras[name] = camera
-    return cameras
-
-
 def _changeable(trap: Any, mass: float) -> Context:
     """What a stage may change, also in parts that are not written well."""
     targets: dict[str, Entry] = {}
@@ -273,7 +230,7 @@ def _sequence(
     context = _changeable(tree.get("trap", {}), mass)
     paths, stages = stage_paths(raw), []
     for i, (table, place, name) in enumerate(zip(raw, paths, stage_names(raw), strict=True)):
-        cls = _kind(table, place, "stage", STAGES)
+        cls = kind_of(table, place, "stage", STAGES)
         if isinstance(cls, Complaint):
             complaints.append(cls)
             stages.append(None)

@@ -16,12 +16,18 @@ from trapsim.prepare.stretch import Stretch
 from trapsim.prepare.timeline import Timeline
 from trapsim.quantities import human
 from trapsim.space.axes import Array
+from trapsim.terms.beam import Beam
 from trapsim.terms.box import Box
+from trapsim.terms.function import Function
 from trapsim.terms.lattice import Lattice
-from trapsim.terms.part import Part
+from trapsim.terms.part import Part, steered
 
 #: lattice orders kept beyond the highest that is populated, in pairs of recoils
 BEYOND = 1.5
+#: m, the step of differences of forces
+NEARBY = 1e-8
+#: grid points per detail of a user's own potential
+PER_DETAIL = 3
 #: points along a direction when the rim of a shallow trap is looked for
 SCAN = 400
 
@@ -36,13 +42,38 @@ def measure_up(
     free = omega == 0
     length = np.where(extent > 0, extent, box.size if box else 0.0)
     number = coupling / (4 * np.pi * q) / float(np.prod(length[free]))
-    lengths = cloud_lengths(omega, q, number, accuracy)
+    lengths = _along_lab(timeline, omega, q, number, accuracy)
     if box is not None:
         lengths = box_lengths(lengths, box, q, accuracy, free)
-    elif any(not p.quadratic and not isinstance(p, Lattice) for p in parts):
+    elif any(isinstance(p, Beam) for p in parts):
         lengths = _within_rim(lengths, parts, timeline.origin)
     periodic = free if box is None else np.zeros(3, dtype=bool)
     return replace(lengths, half=np.where(extent > 0, extent / 2, lengths.half), periodic=periodic)
+
+
+def _along_lab(timeline: Timeline, omega: Array, q: float, number: float, accuracy: Accuracy) -> Lengths:
+    """Lengths along the lab directions of a cloud whose trap may be turned: its own are those of the principal axes."""
+    matrix = _hessian(timeline)
+    coupled = np.abs(matrix - np.diag(np.diag(matrix))).max() > 1e-6 * np.abs(matrix).max()
+    if not coupled:
+        return cloud_lengths(omega, q, number, accuracy)
+    values, vectors = np.linalg.eigh(matrix * q / HBAR)
+    own = cloud_lengths(np.sqrt(np.maximum(values, 0.0)), q, number, accuracy)
+    shares = vectors**2
+    seen = shares > 1e-3
+    half = np.sqrt(np.sum(np.where(seen, shares * np.where(np.isfinite(own.half), own.half, 0.0) ** 2, 0.0), axis=1))
+    finest = np.min(np.where(seen, own.finest[None, :], np.inf), axis=1)
+    held = omega > 0
+    return replace(own, half=np.where(held, half, np.inf), finest=np.where(held, finest, np.inf))
+
+
+def _hessian(timeline: Timeline) -> Array:
+    """Second derivatives of the steerable potential at the origin, N/m, from the forces around it."""
+    parts, origin = timeline.initial.parts_at(0.0), np.array(timeline.origin)
+    columns = [
+        steered(parts, tuple(origin - NEARBY * e))[0] - steered(parts, tuple(origin + NEARBY * e))[0] for e in np.eye(3)
+    ]
+    return np.array(columns) / (2 * NEARBY)
 
 
 def _within_rim(lengths: Lengths, parts: Sequence[Part], origin: Sequence[float]) -> Lengths:
@@ -99,6 +130,9 @@ def hold_orders(
     acting = [(timeline.initial, timeline.initial.gripped(), still, still)]
     acting += [(s.stretch, s.stands, *b) for s, b in zip(timeline.steps, growth, strict=True)]
     for stretch, stands, before, after in acting:
+        for part in stretch.parts.values():
+            if isinstance(part, Function):
+                spacing = np.minimum(spacing, part.detail / (PER_DETAIL * np.maximum(before, after)))
         for lattice in _strongest(stretch):
             j = lattice.direction
             grown = max(before[j], after[j])

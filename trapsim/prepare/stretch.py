@@ -9,6 +9,7 @@ from functools import cached_property
 import numpy as np
 
 from trapsim.fields import Triple
+from trapsim.terms.function import Function
 from trapsim.terms.lattice import Lattice
 from trapsim.terms.part import Part, gripped, steered
 from trapsim.terms.ramps import Course
@@ -50,8 +51,7 @@ class Stretch:
     @cached_property
     def steady(self) -> bool:
         """Whether nothing changes in it."""
-        drifting = any(isinstance(p, Lattice) and p.detuning and p.strength for p in self.parts.values())
-        return not self.courses and not drifting
+        return not self.courses and not any(p.strength and _has_a_clock(p) for p in self.parts.values())
 
     @cached_property
     def _fixed(self) -> tuple[Part, ...]:
@@ -70,6 +70,8 @@ class Stretch:
         for name, part in now.items():
             if isinstance(part, Lattice):
                 now[name] = replace(part, travel=part.travel + self.moved_on(name, t))
+            elif isinstance(part, Function):
+                now[name] = replace(part, time=t)
         on = [p for p in now.values() if p.strength > 0 and getattr(p, "centre", None) != HELD]
         held = [p for p in now.values() if p.strength > 0 and getattr(p, "centre", None) == HELD]
         if self.gravity is not None:
@@ -106,3 +108,8 @@ class Stretch:
         """Directions in which a part holds the atoms all the time without steering them."""
         middle = 0.5 * (self.start + self.stop)
         return gripped(self.parts_at(middle))
+
+
+def _has_a_clock(part: Part) -> bool:
+    """Whether a part changes in time by itself."""
+    return (isinstance(part, Lattice) and part.detuning != 0) or (isinstance(part, Function) and part.changes)
