@@ -119,7 +119,7 @@ def summary(kept: Track | None, *, title: str = "Invented: an ideal gas let go",
     spaces = (LegSpace("hold", 0.0, 2.0, ("wave", "radial", "radial"), (160, 48, 48), "round about x"),)
     numerics = Numerics(
         axes=("wave", "radial", "radial"), points=(160, 48, 48), legs=spaces, ground=Effort(22, 0.31),
-        march=MarchEffort(18, 54.0, 2.4), seconds=3.9, norm_drift=2.1e-7, continuity=4.0e-5,
+        march=MarchEffort(18, 54.0, 9.0, 2.4), seconds=3.9, norm_drift=2.1e-7, continuity=4.0e-5,
         error=ErrorEstimate(width_relative=3e-5, rate_relative=6e-5, centre_um=1.2e-4),
     )  # fmt: skip
     return Summary(

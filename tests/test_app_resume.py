@@ -45,7 +45,7 @@ duration = "20 ms"
 to = { "dipole.frequency" = ["50 Hz", "90 Hz", "130 Hz"] }
 [[sequence]]
 stage = "hold"
-duration = "300 ms"
+duration = "1200 ms"
 [[sequence]]
 stage = "release"
 duration = "10 ms"

@@ -78,7 +78,7 @@ def test_summary_json_has_the_names_that_were_promised_and_no_nan(finished):
         assert set(moment["law"]) == {"model", "width_um", "expansion_rate_mm_per_s"}
     assert set(told["numerics"]) == NUMERICS
     assert set(told["numerics"]["ground"]) == {"pairs", "seconds"}
-    assert set(told["numerics"]["march"]) == {"steps", "pairs", "seconds"}
+    assert set(told["numerics"]["march"]) == {"steps", "pairs", "observing_pairs", "seconds"}
     assert set(told["numerics"]["error"]) == {"width_relative", "rate_relative", "centre_um"}
     assert all(set(one) == {"code", "text"} for one in told["warnings"])
 

@@ -141,7 +141,7 @@ def summarise(
             legs=_leg_spaces(setup),
             ground=Effort(spent.ground_pairs, spent.ground_seconds),
             march=None if not setup.legs else MarchEffort(
-                state.books.steps, state.books.pairs + spent.recorder_pairs, spent.march_seconds
+                state.books.steps, state.books.pairs, spent.recorder_pairs, spent.march_seconds
             ),
             seconds=spent.seconds,
             norm_drift=float(track["norm"][-1] - track["norm"][0]),

@@ -170,6 +170,7 @@ class _Corridor:
         plan, timeline = setup.plan, setup.timeline
         self.recorder = Recorder(
             origin=timeline.origin, atoms=plan.atoms.number, duration=plan.duration, released=timeline.released,
+            release_stage=max((i for i, s in enumerate(plan.sequence) if s.kind == "release"), default=0),
             law=self.law.at if self.law else None, stage_names=tuple(s.name for s in plan.sequence),
         )  # fmt: skip
         self.album = Album(

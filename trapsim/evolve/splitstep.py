@@ -20,6 +20,7 @@ from functools import reduce
 import numpy as np
 
 from trapsim.constants import HBAR
+from trapsim.evolve.phases import in_pieces, rotate
 from trapsim.evolve.scaling import MovingLaw, StandingLaw, gauss
 from trapsim.space.space import Array, Space
 
@@ -52,9 +53,6 @@ class SplitStep:
         self.rest = rest
         self.rate = rate
         self.pairs = 0.0
-        self._x2 = [[a.x2(j) for j in a.covers] for a in space.axes]
-        self._theta = np.empty(space.shape)
-        self._phase = space.empty()
         self._fastest = np.array([space.axis(j).k_max ** 2 / len(space.axis(j).covers) for j in range(3)])
 
     def strang(self, phi: Array, t: float, h: float) -> Array:
@@ -70,20 +68,33 @@ class SplitStep:
     def potential(self, phi: Array, t0: float, t1: float, lens: Array) -> None:
         """Overwrite phi with its potential flow from t0 to t1, and with lenses (3,) 1/s: exp(-i lens xi^2/(2 q))."""
         _, dJ = self.law.integrals(t0, t1)
-        theta = self._theta
-        np.multiply(phi.real, phi.real, out=theta)
-        theta += phi.imag**2
-        theta *= dJ
         coefficients = (lens + self.law.start.i * dJ) / (2 * self.q)
-        for d, values in enumerate(self.space.per_axis(coefficients, "x2")):
-            theta += self.space.along(d, values)
+        first, *others = (
+            self.space.along(d, values) for d, values in enumerate(self.space.per_axis(coefficients, "x2"))
+        )
+        # what does not vary along the first dimension is summed once
+        rest = self._rest_phase(t0, t1)
+        flat = sum(others) + (rest if np.ndim(rest) == 0 or rest.shape[0] == 1 else 0.0)
+        steep = rest if np.ndim(rest) and rest.shape[0] > 1 else None
+        turn = rotate()
+
+        def piece(slab: slice) -> None:
+            field = phi[slab]
+            theta = field.real**2
+            theta += field.imag**2
+            theta *= dJ
+            theta += flat
+            theta += first[slab]
+            if steep is not None:
+                theta += steep[slab]
+            turn(field, theta)
+
+        in_pieces(phi.shape, piece, threads=self.space.threads)
+
+    def _rest_phase(self, t0: float, t1: float) -> Array | float:
+        """The phase of what is not steered, by Gauss's rule of two points."""
         first, second = (self.rest(t) for t in gauss(t0, t1))
-        if not np.isscalar(first):
-            theta += (first + second) * ((t1 - t0) / (2 * HBAR))
-        np.cos(theta, out=self._phase.real)
-        np.sin(theta, out=self._phase.imag)
-        np.conjugate(self._phase, out=self._phase)
-        phi *= self._phase
+        return (first + second) * ((t1 - t0) / (2 * HBAR))
 
     def kinetic(self, phi: Array, drift: Array) -> None:
         """Overwrite phi with exp(-i q/2 sum_j k_j^2 drift_j) phi, drift (3,) in s; one pair."""
@@ -92,9 +103,15 @@ class SplitStep:
             self.space.along(d, np.exp(-0.5j * self.q * values) / axis.round_trip)
             for d, (axis, values) in enumerate(zip(self.space.axes, self.space.per_axis(drift, "k2"), strict=True))
         ]
-        if len(factors) > 1:
-            phi *= reduce(np.multiply, factors[:-1])
-        phi *= factors[-1]
+        first, *others = factors
+        flat = reduce(np.multiply, others) if others else 1.0
+
+        def piece(slab: slice) -> None:
+            phi[slab] *= flat * first[slab] if phi.ndim < 3 else flat
+            if phi.ndim == 3:
+                phi[slab] *= first[slab]
+
+        in_pieces(phi.shape, piece, threads=self.space.threads)
         self.space.inverse(phi)
         self.pairs += 1
 

@@ -46,6 +46,8 @@ class Recorder:
         Of the whole sequence, s.
     released : float or None
         When the flight clock starts.
+    release_stage : int
+        The stage with which it starts.
     law : callable or None
         t -> (widths, rates) of the scaling law.
     stage_names : tuple of str
@@ -58,6 +60,7 @@ class Recorder:
         atoms: float,
         duration: float,
         released: float | None,
+        release_stage: int = 0,
         law: Law | None,
         stage_names: tuple[str, ...] = (),
     ) -> None:
@@ -65,6 +68,7 @@ class Recorder:
         self.atoms = atoms
         self.every = duration / COLUMNS
         self.released = released
+        self.release_stage = release_stage
         self.law = law
         self.stage_names = stage_names
         self.pairs = 0.0
@@ -98,7 +102,8 @@ class Recorder:
         seen = observe(cloud, interval)
         self.pairs += PROFILE_PAIRS
         t = seen.time
-        flight = t - self.released if self.released is not None and t >= self.released else np.nan
+        released = self.released is not None and t >= self.released and stage >= self.release_stage
+        flight = t - self.released if released else np.nan
         law = self.law(t) if self.law else (np.full(3, np.nan), np.full(3, np.nan))
         previous = self._rows[-1][0] if self._rows else t
         self._rows.append(np.concatenate([

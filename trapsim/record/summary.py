@@ -146,10 +146,11 @@ class Effort(_Record):
 
 @dataclass(frozen=True)
 class MarchEffort(_Record):
-    """What the march cost: steps, transform pairs and seconds, observables included."""
+    """What the march cost: steps, the transform pairs of the steps and of looking at the cloud, seconds of both."""
 
     steps: int
     pairs: Number
+    observing_pairs: Number
     seconds: Number
 
 
