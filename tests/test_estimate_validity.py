@@ -109,7 +109,7 @@ def test_what_is_doubted_is_told_and_what_is_fine_is_not() -> None:
 
 
 def test_the_error_of_a_perfect_run_is_nothing_but_its_ground_state() -> None:
-    told = trust(Books(), residual=1e-9, energy_drift=None, swing=0.0, centre_off=0.0)
+    told = trust(Books(), residual=1e-9, virial=0.0, energy_drift=0.0, swing=0.0, centre_off=0.0)
     assert (told.width, told.rate, told.centre) == pytest.approx((1e-9, 1.5e-9, 0.0), rel=1e-12, abs=0)
 
 
@@ -118,7 +118,7 @@ def test_the_error_of_a_perfect_run_is_nothing_but_its_ground_state() -> None:
     [
         ((100, 100, 100), (130, 130, 130), "0 a0"),
         ((100, 100, 100), (110, 110, 110), Natural(10.0).a),
-        ((100, 100, 100), (115, 90, 130), Natural(200.0).a),
+        ((100, 100, 100), (115, 115, 90), Natural(200.0).a),
         ((20, 120, 120), (20, 132, 132), "100.4 a0"),
     ],
     ids=["ideal", "beta 10", "beta 200", "cigar"],

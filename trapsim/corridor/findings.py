@@ -123,8 +123,8 @@ def summarise(
         end = moment_of(track, -1, mass=mass, law_model=model, orders=orders)
     drift = energy_drift(track, setup.legs)
     error = trust(
-        state.books, residual=ground.residual or 0.0, energy_drift=drift, swing=swing_error(track, setup.legs, setup.q),
-        centre_off=_centre_off(setup, state, track),
+        state.books, residual=ground.residual or 0.0, virial=ground.virial or 0.0, energy_drift=drift or 0.0,
+        swing=swing_error(track, setup.legs, setup.q), centre_off=_centre_off(setup, state, track),
     )  # fmt: skip
     return Summary(
         title=printable(plan.title or plan.name),

@@ -266,7 +266,7 @@ class _Corridor:
     def _probe(self, tick: Tick, leg: Leg) -> None:
         """Measure the continuity residual once per leg, after its first step; keep the worst."""
         state = tick.state
-        if state.law is None or state.leg == self._probed:
+        if state.law is None or state.leg == self._probed or state.law.time >= state.cloud.time:
             return
         self._probed = state.leg
         residual = continuity(state.cloud, state.law, leg, state.stride.h)

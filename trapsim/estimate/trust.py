@@ -26,22 +26,28 @@ class Trust:
     centre: float
 
 
-def trust(books: Books, *, residual: float, energy_drift: float | None, swing: float, centre_off: float) -> Trust:
-    """From step estimates and guards to widths, rates and centre.
+def trust(
+    books: Books, *, residual: float, virial: float, energy_drift: float, swing: float, centre_off: float
+) -> Trust:
+    """From step estimates, guards and exact statements to widths, rates and centre.
 
     Time: the extrapolated steps of a flight have an L2 error far below their estimate e, and a width feels the square
     of what has added up; a plain step in a trap leaves a bounded error that goes with the step squared, e^(2/3). Space:
     what the grid cannot hold is folded back, s^(3/4) of the population near the highest wave numbers and a share of that
-    near the edge. The forms follow from the orders of the methods; the factors were found by comparing with converged
-    runs of round, cigar-shaped and flat clouds from an ideal gas to 1e6 atoms, where the estimate lies between the
-    truth and some thirty times it. A drift of the conserved energy, if larger, counts instead (rates go as its root).
+    near the edge. Two exact statements feel both: the virial theorem at rest, and the energy while nothing changes;
+    widths are off by up to what these are missed by, rates by twice as much. The forms follow from the orders of the
+    methods; the factors were found by comparing with converged runs of round, cigar-shaped and flat clouds from an
+    ideal gas to 1e6 atoms at every accuracy, where the estimate lies between the truth and some thirty times it (more
+    at accuracy fine).
 
     Parameters
     ----------
     books : Books
     residual : float
         Of the ground state.
-    energy_drift : float or None
+    virial : float
+        By how much the ground state misses the virial theorem, relative.
+    energy_drift : float
         Relative, the worst over stretches where nothing changed in time.
     swing : float
         Relative, of swings in a trap, from the drift of the energy there and how long it lasted.
@@ -50,6 +56,6 @@ def trust(books: Books, *, residual: float, energy_drift: float | None, swing: f
     """
     time = 2 * books.error**2 + 5e-3 * books.local ** (2 / 3)
     space = 1.2 * float(np.max(books.spectrum)) ** 0.75 + 0.05 * float(np.max(books.edge))
-    width = float(np.sqrt(time**2 + space**2 + swing**2)) + residual
-    rate = max(1.5 * width, abs(energy_drift or 0.0) / 2)
+    width = float(np.linalg.norm([time, space, swing, 1.5 * virial, 1.2 * energy_drift])) + residual
+    rate = max(1.5 * width, 2.5 * energy_drift)
     return Trust(width, rate, centre_off)

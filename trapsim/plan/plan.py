@@ -5,6 +5,7 @@ from __future__ import annotations
 import dataclasses
 import hashlib
 import json
+import math
 from collections.abc import Mapping
 from dataclasses import dataclass, field
 from typing import Any
@@ -108,7 +109,7 @@ class Plan:
     @property
     def duration(self) -> float:
         """How long the whole sequence takes, in s."""
-        return sum(stage.duration for stage in self.sequence)
+        return math.fsum(stage.duration for stage in self.sequence)
 
     def resolved(self) -> dict[str, Any]:
         """Every value as it is used, with its SI unit, in plain lists and dictionaries."""

@@ -6,6 +6,7 @@ and a stretch answers for its closed interval with the values of its inside: not
 
 from __future__ import annotations
 
+import math
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field, replace
 
@@ -116,7 +117,7 @@ class _Builder:
         released = None
         durations = [s.duration for s in plan.sequence]
         for index, stage in enumerate(plan.sequence):
-            start, stop = float(np.sum(durations[:index])), float(np.sum(durations[: index + 1]))
+            start, stop = math.fsum(durations[:index]), math.fsum(durations[: index + 1])
             times.append((start, stop))
             if isinstance(stage, Release):
                 released = start
