@@ -216,6 +216,11 @@ class Mirror(Axis):
     def finer(self) -> Mirror:
         return Mirror(self.covers, 2 * self.n, self.half_extent)
 
+    @property
+    def k_max(self) -> float:
+        """That of the wave axis with both sides, whose highest wave has no even part on these points."""
+        return np.pi / self.spacing
+
     def unfolded(self) -> Wave:
         """The wave axis with both sides."""
         return Wave(self.covers, 2 * self.n, self.half_extent)
