@@ -12,7 +12,7 @@ from math import pi
 import numpy as np
 import pytest
 
-from trapsim.space.axes import Axis, Radial, Wave, build
+from trapsim.space.axes import Axis, Mirror, Radial, Wave, build
 from trapsim.space.space import Space
 
 Array = np.ndarray
@@ -21,6 +21,7 @@ Array = np.ndarray
 AXES = {
     "wave": Wave((0,), 64, 8.0),
     "wave with an odd number of points": Wave((2,), 63, 8.0),
+    "mirror": Mirror((1,), 32, 8.0),
     "radial": Radial((1, 2), 36, 8.0),
 }
 WIDTH, CHIRP = 0.9, 0.8

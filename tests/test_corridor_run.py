@@ -119,7 +119,7 @@ def equal(run: trapsim.Run, whole: trapsim.Run) -> None:
 
 def test_the_plan_crosses_what_it_should(whole):
     words = [leg.axes for leg in whole.summary.numerics.legs]
-    assert words[0] == ("radial", "radial", "wave") and words[-1] == ("wave", "wave", "wave")
+    assert words[0] == ("radial", "radial", "mirror") and words[-1] == ("mirror", "mirror", "mirror")
     assert whole.summary.numerics.march.steps > 30
     assert whole.summary.numerics.continuity is not None
 

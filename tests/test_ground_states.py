@@ -99,7 +99,7 @@ def test_isotropic_repulsive(solved: Solve, row: tables.Isotropic, axes: str) ->
     width, _ = expected.pop("width"), [expected.pop(name) for name in ("beta", "source")]
     agree(figures(run), expected | {f"{a}_width": width for a in "xyz"}, row.mu)
     in_balance(run)
-    assert run.summary.numerics.axes == (("wave",) * 3 if axes == "full" else ("wave", "radial", "radial"))
+    assert run.summary.numerics.axes == (("wave",) * 3 if axes == "full" else ("mirror", "radial", "radial"))
 
 
 @pytest.mark.parametrize("row", tables.ISOTROPIC_PUBLISHED, ids=lambda r: f"{r.beta:g}")
@@ -163,7 +163,7 @@ def test_round_trap_of_dalfovo_and_stringari(solved: Solve, row: tables.Round, a
         expected.pop(name)
     agree(figures(run), expected | {"y_width": row.x_width}, row.mu)
     in_balance(run)
-    assert run.summary.numerics.axes == (("wave",) * 3 if axes == "full" else ("radial", "radial", "wave"))
+    assert run.summary.numerics.axes == (("wave",) * 3 if axes == "full" else ("radial", "radial", "mirror"))
 
 
 @pytest.mark.parametrize("row", tables.ROUND_PUBLISHED, ids=lambda r: f"{r.number}")
@@ -182,7 +182,7 @@ def test_the_stiff_direction_may_be_any_one(solved: Solve, stiff: int) -> None:
     run = solved(plan(trap, row.number * tables.ROUND_A * A_HO))
     widths = {f"{a}_width": row.z_width if j == stiff else row.x_width for j, a in enumerate("xyz")}
     agree(figures(run), {"mu": row.mu, "energy": row.energy} | widths, row.mu)
-    assert run.summary.numerics.axes[stiff] == "wave"
+    assert run.summary.numerics.axes[stiff] == "mirror"
     assert run.summary.numerics.axes.count("radial") == 2
 
 
@@ -198,7 +198,7 @@ def test_three_different_frequencies(solved: Solve) -> None:
     }  # fmt: skip
     agree(figures(run), expected, ref.mu)
     in_balance(run)
-    assert run.summary.numerics.axes == ("wave", "wave", "wave")
+    assert run.summary.numerics.axes == ("mirror", "mirror", "mirror")
 
 
 @pytest.mark.parametrize("row", tables.LINE, ids=lambda r: f"{r.beta:g}")
@@ -207,7 +207,7 @@ def test_on_a_line(solved: Solve, row: tables.LowDimension) -> None:
     run = solved(plan((1, 0, 0), row.beta * LENGTH**2 / (4 * pi * A_HO)))
     low_dimension(run, row, LENGTH**2)
     assert run.summary.ground.width_um[1:] == (None, None)
-    assert run.summary.numerics.axes == ("wave", "uniform", "uniform")
+    assert run.summary.numerics.axes == ("mirror", "uniform", "uniform")
 
 
 @every_axes

@@ -42,6 +42,12 @@ class Cloud:
         return replace(self, phi=self.space.array(self.phi))
 
 
+def unfolded(cloud: Cloud) -> Cloud:
+    """The same cloud with both sides of every mirror axis."""
+    phi, space = cloud.space.unfolded(cloud.phi)
+    return cloud if space is cloud.space else replace(cloud, phi=phi, space=space)
+
+
 def regauge(cloud: Cloud, *, bdot: Array | None = None, Xdot: Array | None = None) -> Cloud:
     """The same wave function in a frame with another rate of scale or velocity; exact, no resampling.
 
@@ -58,8 +64,8 @@ def regauge(cloud: Cloud, *, bdot: Array | None = None, Xdot: Array | None = Non
     angle = space.quadratic(frame.b * (frame.bdot - new_bdot) / (2 * cloud.q))
     for j, x in enumerate(space.coordinates()):
         if slope[j]:
-            if len(space.axis(j).covers) > 1 or space.axis(j).uniform:
-                raise ValueError(f"direction {'xyz'[j]} has no axis of its own, so it can carry no velocity")
+            if not space.axis(j).carries_velocity:
+                raise ValueError(f"direction {'xyz'[j]} has no axis that can carry a velocity")
             angle = angle + slope[j] * x
     phi = space.array(cloud.phi * np.exp(1j * angle))
     return replace(cloud, phi=phi, frame=replace(frame, bdot=new_bdot, Xdot=new_Xdot))

@@ -64,7 +64,8 @@ class ColumnViews:
     """
 
     def __init__(self, space: Space, *, raster: int = RASTER, finer: float = 0.0) -> None:
-        self.space = space
+        self.seen = space
+        space = self.space = space.unfolded(space.empty())[1]
         self.samples = [max(raster, int(finer * a.n)) for a in space.axes]
         self.finer = [a.finer() if isinstance(a, Radial) else a for a in space.axes]
         self._onto_finer = space.axes[0].basis(self.finer[0].points) if isinstance(space.axes[0], Radial) else None
@@ -72,7 +73,7 @@ class ColumnViews:
 
     def density(self, cloud: Cloud) -> Array:
         """|phi|^2 on the finer points."""
-        phi = cloud.phi
+        phi, _ = cloud.space.unfolded(cloud.phi)
         if self._onto_finer is not None:
             phi = np.tensordot(self._onto_finer, phi, axes=(1, 0))
         return phi.real**2 + phi.imag**2

@@ -14,7 +14,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from trapsim.cloud.cloud import Cloud
+from trapsim.cloud.cloud import Cloud, unfolded
 from trapsim.space.axes import Array, Wave
 from trapsim.terms.lattice import Lattice
 
@@ -64,6 +64,7 @@ def momentum(cloud: Cloud, direction: int) -> Momentum:
     ValueError
         When the direction shares a radial axis or is uniform.
     """
+    cloud = unfolded(cloud)
     space = cloud.space
     axis = space.axis(direction)
     if not isinstance(axis, Wave) or axis.uniform:

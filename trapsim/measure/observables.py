@@ -12,7 +12,7 @@ import numpy as np
 
 from trapsim.cloud.cloud import Cloud
 from trapsim.constants import HBAR
-from trapsim.space.axes import Axis, Radial
+from trapsim.space.axes import Axis, Mirror, Radial
 from trapsim.terms.part import Array
 
 #: points on either side of the centre from which the density at the centre is found
@@ -187,8 +187,8 @@ def peak_density(cloud: Cloud) -> float:
 
 
 def _towards_centre(axis: Axis) -> tuple[Array, Array]:
-    """Points nearest the centre, and Lagrange's weights of their values there (in r^2 on a radial axis)."""
-    if isinstance(axis, Radial):
+    """Points nearest the centre, and Lagrange's weights of their values there (in x^2 on one that is even)."""
+    if isinstance(axis, Radial | Mirror):
         nearest = np.arange(min(NEAR, axis.n))
         x = axis.points[nearest] ** 2
     else:

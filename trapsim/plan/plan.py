@@ -40,7 +40,7 @@ class Numerics:
     axes: str | tuple[str, str, str] = entry(
         "choice", "kinds of axis along x, y, z; \"auto\" uses the symmetry of the plan, \"full\" uses none of it; "
         "\"radial\" stands twice, for the two directions it covers",
-        default="auto", count=3, choices=("wave", "radial"), words=("auto", "full"),
+        default="auto", count=3, choices=("wave", "mirror", "radial"), words=("auto", "full"),
     )
     points: Whole3 = entry(
         "whole", "number of points along x, y, z; 0 or \"auto\": chosen", default=(0, 0, 0), count=3, low=0,

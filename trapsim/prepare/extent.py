@@ -13,7 +13,7 @@ from trapsim.constants import HBAR
 from trapsim.errors import PlanError
 from trapsim.evolve.guards import OUTER
 from trapsim.quantities import human
-from trapsim.space.axes import Array, Axis, Radial, Wave
+from trapsim.space.axes import Array, Axis, Mirror, Radial, Wave
 from trapsim.space.space import Space
 from trapsim.terms.box import Box
 
@@ -207,7 +207,7 @@ def choose_space(
     """
     axes: list[Axis] = []
     pair = tuple(j for j in range(3) if words[j] == "radial")
-    groups = ([pair] if pair else []) + [(j,) for j in range(3) if words[j] == "wave"]
+    groups = ([pair] if pair else []) + [(j,) for j in range(3) if words[j] != "radial"]
     for group in groups:
         half = max(extent[j] / 2 if extent[j] else lengths.half[j] for j in group)
         spacing = min(min(accuracy.spacing * lengths.finest[j], lengths.spacing[j]) for j in group)
@@ -222,7 +222,13 @@ def choose_space(
         else:
             n = asked or _fast_even(max(12, 2 * half / spacing))
             axes.append(Wave(group, n, half))
+    axes = [_mirrored(a) if words[a.covers[0]] == "mirror" else a for a in axes]
     return Space(axes, threads=threads)
+
+
+def _mirrored(axis: Axis) -> Axis:
+    """Half of a wave axis; an odd number of points is made even."""
+    return Mirror(axis.covers, (axis.n + 1) // 2, axis.half_extent)
 
 
 def _commensurate(j: int, half: float, spacing: float, lengths: Lengths, asked: int, *, fixed: bool) -> Wave:

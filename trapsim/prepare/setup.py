@@ -18,7 +18,7 @@ from trapsim.plan.plan import Plan
 from trapsim.prepare.extent import ACCURACY, Accuracy, Lengths, choose_space
 from trapsim.prepare.needs import hold_orders, measure_up
 from trapsim.prepare.stretch import Stretch
-from trapsim.prepare.symmetry import choose_words, lasting_axis, round_directions
+from trapsim.prepare.symmetry import choose_words, even_directions, lasting_axis, round_directions
 from trapsim.prepare.timeline import Step, Timeline, build_timeline
 from trapsim.record.album import Shot
 from trapsim.space.frame import Frame
@@ -139,7 +139,8 @@ def prepare(plan: Plan) -> Setup:
     lengths = hold_orders(needs, timeline, omega, q, coupling, moving)
     round_about = round_directions(timeline, standing=standing)
     axis = lasting_axis(round_about, lengths.uniform)
-    words = [_words(plan, axis, r, lengths.uniform) for r in round_about]
+    even = even_directions(timeline, still=still)
+    words = [_words(plan, axis, r, e, lengths.uniform) for r, e in zip(round_about, even, strict=True)]
     spaces: dict[tuple[str, ...], Space] = {}
     for w in words:
         if w not in spaces:
@@ -155,10 +156,12 @@ def prepare(plan: Plan) -> Setup:
     )  # fmt: skip
 
 
-def _words(plan: Plan, axis: int | None, round_about: frozenset[int], uniform: Array) -> tuple[str, str, str]:
+def _words(
+    plan: Plan, axis: int | None, round_about: frozenset[int], even: Sequence[bool], uniform: Array
+) -> tuple[str, str, str]:
     asked = plan.numerics.axes
     if asked == "auto":
-        return choose_words(axis, round_about)
+        return choose_words(axis, round_about, [e and not u for e, u in zip(even, uniform, strict=True)])
     words = ("wave", "wave", "wave") if asked == "full" else asked
     pair = [j for j in range(3) if words[j] == "radial"]
     if pair:
@@ -167,6 +170,12 @@ def _words(plan: Plan, axis: int | None, round_about: frozenset[int], uniform: A
             raise PlanError.at(
                 "numerics.axes", str(list(words)), f"the plan is not round about {AXES[alone]} all the way",
                 "write axes = \"auto\", or \"full\"",
+            )  # fmt: skip
+    for j in range(3):
+        if words[j] == "mirror" and (not even[j] or uniform[j]):
+            raise PlanError.at(
+                f"numerics.axes[{j}]", '"mirror"', f"the plan is not even along {AXES[j]} all the way",
+                "write axes = \"auto\", or \"wave\" here",
             )  # fmt: skip
     return tuple(words)
 
@@ -240,10 +249,15 @@ def _held(step: Step) -> bool:
 def _why(plan: Plan, round_about: list[frozenset[int]], words: list[tuple[str, ...]]) -> str:
     if plan.numerics.axes != "auto":
         return "the axes are as the plan forces them"
-    if "radial" not in words[0]:
-        return "no two directions are alike, so each has its own axis"
-    axis = AXES[words[0].index("wave")]
-    pair = " and ".join(a for a in AXES if a != axis)
-    if words[-1] == words[0]:
-        return f"{pair} are alike to the end, so one radial axis covers them"
-    return f"{pair} are alike at first; from where the sequence sets them apart each has its own axis"
+    told = []
+    for pair in [[j for j in range(3) if words[0][j] == "radial"]]:
+        if pair:
+            told.append(f"{' and '.join(AXES[j] for j in pair)} are alike, so one radial axis covers them")
+    mirrored = [AXES[j] for j in range(3) if words[0][j] == "mirror"]
+    if mirrored:
+        told.append(f"along {', '.join(mirrored)} the cloud is even about its centre, so half an axis does")
+    if not told:
+        told.append("nothing is alike, so each direction has a whole axis of its own")
+    if words[-1] != words[0]:
+        told.append("from where the sequence breaks that, larger axes take over")
+    return "; ".join(told)

@@ -9,7 +9,7 @@ import numpy as np
 from trapsim.fields import Triple
 from trapsim.prepare.stretch import Stretch
 from trapsim.prepare.timeline import Timeline
-from trapsim.terms.part import About, Array, steered
+from trapsim.terms.part import ANYWHERE, About, Array, steered
 
 #: a classical centre that is off by less (m, m/s) has not moved
 NOTHING = 1e-15
@@ -47,6 +47,49 @@ def round_directions(timeline: Timeline, *, standing: bool) -> list[frozenset[in
     return out
 
 
+def even_directions(timeline: Timeline, *, still: Sequence[bool]) -> list[tuple[bool, bool, bool]]:
+    """For the ground state and then for every step, whether the cloud is still even about its centre, per direction.
+
+    Parameters
+    ----------
+    timeline : Timeline
+    still : three flags
+        Directions in which the frame never moves.
+    """
+    origin = np.concatenate([timeline.origin, np.zeros(3)])
+    never = frozenset(j for j in range(3) if still[j])
+    pushed = _pushed(timeline.initial, timeline.origin, never | timeline.initial.gripped())
+    even = [_even(timeline.initial, origin, j) and j not in pushed for j in range(3)]
+    out = [tuple(even)]
+    before = origin
+    for step, after in zip(timeline.steps, timeline.path, strict=True):
+        stands = never | step.stands
+        pushed = _pushed(step.stretch, tuple(before[:3]), stands)
+        for j in range(3):
+            thrown = j in stands and (step.kick[j] != 0 or abs(before[3 + j]) > NOTHING)
+            ok = all(_even(step.stretch, place, j) for place in (before, after))
+            even[j] = even[j] and ok and not thrown and j not in pushed
+        out.append(tuple(even))
+        before = after
+    return out
+
+
+def _even(stretch: Stretch, place: Array, j: int) -> bool:
+    """Whether everything in a stretch is even along a direction about a place, once its slope there is taken away."""
+    for t in _samples(stretch):
+        for part in stretch.parts_at(t):
+            about = part.symmetry().even[j]
+            if isinstance(about, About):
+                off = place[j] - about.x
+                if about.period:
+                    off -= about.period * round(off / about.period)
+                if abs(off) > NEAR:
+                    return False
+            elif about != ANYWHERE:
+                return False
+    return True
+
+
 def _samples(stretch: Stretch) -> Sequence[float]:
     if stretch.steady:
         return (stretch.start,)
@@ -77,8 +120,7 @@ def lasting_axis(round_about: Sequence[frozenset[int]], uniform: Sequence[bool])
     return max(fit, key=lambda a: sum(a in still_round for still_round in round_about), default=None)
 
 
-def choose_words(axis: int | None, round_about: frozenset[int]) -> tuple[str, str, str]:
-    """Kinds of axis along x, y, z: the radial axis covers the two directions that are alike about `axis`."""
-    if axis is None or axis not in round_about:
-        return ("wave", "wave", "wave")
-    return tuple("wave" if j == axis else "radial" for j in range(3))
+def choose_words(axis: int | None, round_about: frozenset[int], even: Sequence[bool]) -> tuple[str, str, str]:
+    """Kinds of axis along x, y, z: radial for the two directions alike about `axis`, mirror where the cloud is even."""
+    pair = [j for j in range(3) if j != axis] if axis in round_about else []
+    return tuple("radial" if j in pair else ("mirror" if even[j] else "wave") for j in range(3))

@@ -15,7 +15,6 @@ from trapsim.measure.columns import ColumnViews
 from trapsim.measure.momentum import Momentum, momentum, order_shares
 from trapsim.measure.picture import Picture, pixel_edges, pixel_means, resonant_cross_section
 from trapsim.record.series import Array
-from trapsim.space.axes import Wave
 from trapsim.space.space import Space
 from trapsim.terms.lattice import Lattice
 
@@ -125,7 +124,7 @@ class Album:
         camera = self.cameras[shot.camera]
         along = "xyz".index(camera.view)
         right, up = ("xyz".index(d) for d in camera.axes)
-        if self._views is None or self._views.space is not cloud.space:
+        if self._views is None or self._views.seen is not cloud.space:
             self._views = ColumnViews(cloud.space, finer=FINER)
         cosine, sine = np.cos(camera.turn), np.sin(camera.turn)
         where = centre if camera.follow else np.asarray(camera.aim)
@@ -183,4 +182,4 @@ class Album:
 
 def _has_axis(space: Space, direction: int) -> bool:
     axis = space.axis(direction)
-    return isinstance(axis, Wave) and not axis.uniform
+    return len(axis.covers) == 1 and not axis.uniform

@@ -112,7 +112,7 @@ class Recorder:
             [seen.norm, t - previous],
         ]))  # fmt: skip
         if columns:
-            if self._views is None or self._views.space is not cloud.space:
+            if self._views is None or self._views.seen is not cloud.space:
                 self._views = ColumnViews(cloud.space)
             for view, column in self._views.see(cloud).items():
                 right, up = ("xyz".index(d) for d in VIEWS[view])

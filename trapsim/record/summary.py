@@ -118,7 +118,6 @@ class StageEnd(_Record):
 @dataclass(frozen=True)
 class ErrorEstimate(_Record):
     """How wrong the numerics may be, from the step estimates and the guards: one sigma, not a bound."""
-
     width_relative: Number = None
     rate_relative: Number = None
     centre_um: Number = None

@@ -5,8 +5,8 @@ A member of the family says, for arrays of n samples along it:
 1. `covers`, the lab directions (0, 1, 2 = x, y, z) it stands for;
 2. `points` (n,) m and `weights` (n,): integrals are weighted sums of samples;
 3. `k` (n,) 1/m and `spectral_weights` (n,): weighted sums of |spectrum|^2 give the same norm;
-4. its transform: either a one-dimensional transform of FFTW (`fftw = True`) whose round trip multiplies by
-   `round_trip`, or a pair of real matrices (`forward_matrix`, `inverse_matrix`);
+4. its transform: either a one-dimensional transform of FFTW (`fftw` names the way there and the way back) whose round
+   trip multiplies by `round_trip`, or a pair of real matrices (`forward_matrix`, `inverse_matrix`);
 5. `x1(j)`, `x2(j)`, `k1(j)`, `k2(j)` (n,): the powers of x_j and k_j whose weighted sums are <x_j>, <x_j^2>, ...;
 6. `lever` (n,): x_j d/dx_j = lever * gradient for every covered direction j;
 7. `basis(x)` (len(x), n): the matrix that evaluates the samples' own series anywhere; zero outside.
@@ -22,6 +22,10 @@ from scipy import special
 Array = np.ndarray
 
 
+COMPLEX = ("FFTW_FORWARD", "FFTW_BACKWARD")
+COSINE = ("FFTW_REDFT10", "FFTW_REDFT01")
+
+
 class Axis:
     """Base of the family; the module's docstring is the contract."""
 
@@ -33,8 +37,13 @@ class Axis:
     spectral_weights: Array
     lever: Array
     half_extent: float
-    fftw = False
+    spacing: float
+    fftw: tuple[str, str] | None = None
     round_trip = 1.0
+    #: whether a field on it may have a mean velocity
+    carries_velocity = False
+    #: (n, n) derivative along the axis at the points, where it is not a transform of FFTW
+    gradient_matrix: Array | None = None
     forward_matrix: Array
     inverse_matrix: Array
 
@@ -101,8 +110,9 @@ class Wave(Axis):
         self.k = 2 * np.pi * np.fft.fftfreq(n, spacing)
         self.spectral_weights = np.full(n, spacing / n)
         self.lever = self.points
-        self.fftw = n > 1
+        self.fftw = COMPLEX if n > 1 else None
         self.round_trip = float(n)
+        self.carries_velocity = n > 1
         if n == 1:
             self.forward_matrix = self.inverse_matrix = np.ones((1, 1))
 
@@ -146,6 +156,74 @@ class Wave(Axis):
     def project(self, x: Array) -> Array:
         """(len(x), n): a round density's samples seen from the side; a flat axis has no side view of its own."""
         raise TypeError("a wave axis is integrated over, it has no side view")
+
+
+class Mirror(Axis):
+    """Even about its middle; cosines on the half-cell midpoints of one side.
+
+    Its points are the positive ones of a wave axis with twice as many, and its results the same.
+
+    Parameters
+    ----------
+    covers : sequence of one int
+        The lab direction.
+    n : int
+        Number of points on the one side.
+    half_extent : float
+        Half the period, m.
+    """
+
+    kind = "mirror"
+    fftw = COSINE
+
+    def __init__(self, covers: Sequence[int], n: int, half_extent: float) -> None:
+        (direction,) = covers
+        self.covers = (direction,)
+        self.half_extent = float(half_extent)
+        self.spacing = self.half_extent / n
+        self.points = (np.arange(n) + 0.5) * self.spacing
+        self.weights = np.full(n, 2 * self.spacing)
+        self.k = np.pi * np.arange(n) / self.half_extent
+        self.spectral_weights = np.full(n, self.spacing / n)
+        self.spectral_weights[0] /= 2
+        self.lever = self.points
+        self.round_trip = 2.0 * n
+        # the series of samples f: (1/2n) [ Y_0 + 2 sum_m Y_m cos(k_m x) ] with Y = forward f
+        self._forward = 2 * np.cos(np.outer(self.k, self.points))
+        self._shares = np.where(np.arange(n) == 0, 1.0, 2.0) / (2 * n)
+        slopes = -np.sin(np.outer(self.points, self.k)) * (self.k * self._shares)[None, :]
+        self.gradient_matrix = np.ascontiguousarray(slopes @ self._forward)
+
+    def x1(self, j: int) -> Array:
+        return np.zeros(self.n)
+
+    def x2(self, j: int) -> Array:
+        return self.points**2
+
+    def k1(self, j: int) -> Array:
+        return np.zeros(self.n)
+
+    def k2(self, j: int) -> Array:
+        return self.k**2
+
+    def basis(self, x: Array) -> Array:
+        """The cosine series on each point, zero outside the extent."""
+        x = np.abs(np.asarray(x, dtype=float))
+        series = np.cos(np.outer(x, self.k)) * self._shares[None, :]
+        series[x > self.half_extent] = 0.0
+        return series @ self._forward
+
+    def finer(self) -> Mirror:
+        return Mirror(self.covers, 2 * self.n, self.half_extent)
+
+    @property
+    def k_max(self) -> float:
+        """That of the wave axis with both sides, whose highest wave has no even part on these points."""
+        return np.pi / self.spacing
+
+    def unfolded(self) -> Wave:
+        """The wave axis with both sides."""
+        return Wave(self.covers, 2 * self.n, self.half_extent)
 
 
 class Radial(Axis):
@@ -227,7 +305,7 @@ class Radial(Axis):
         return cosines @ slices
 
 
-KINDS = {Wave.kind: Wave, Radial.kind: Radial}
+KINDS = {Wave.kind: Wave, Mirror.kind: Mirror, Radial.kind: Radial}
 
 
 def build(description: dict[str, object]) -> Axis:

@@ -8,7 +8,7 @@ from functools import cached_property
 import numpy as np
 import pyfftw
 
-from trapsim.space.axes import Array, Axis, Radial, build
+from trapsim.space.axes import COMPLEX, COSINE, Array, Axis, Mirror, Radial, build
 
 
 class Space:
@@ -109,28 +109,27 @@ class Space:
     # transforms
 
     @cached_property
-    def _plans(self) -> tuple[pyfftw.FFTW, pyfftw.FFTW] | None:
-        dims = tuple(d for d, a in enumerate(self.axes) if a.fftw)
-        if not dims:
-            return None
-        scratch = self.empty()
+    def _plans(self) -> tuple[list[_Plan], list[_Plan]]:
         effort = "FFTW_MEASURE" if self.size <= 64**3 else "FFTW_ESTIMATE"
         return tuple(
-            pyfftw.FFTW(scratch, scratch, axes=dims, direction=direction, flags=(effort,), threads=self.threads)
-            for direction in ("FFTW_FORWARD", "FFTW_BACKWARD")
+            [_Plan(self, dims, way, effort) for family in (COMPLEX, COSINE) if (dims := self._dims(family))]
+            for way in (0, 1)
         )
+
+    def _dims(self, family: tuple[str, str]) -> tuple[int, ...]:
+        return tuple(d for d, a in enumerate(self.axes) if a.fftw == family)
 
     def forward(self, a: Array) -> Array:
         """Overwrite samples `a` with their spectrum; returns it."""
-        if self._plans:
-            self._plans[0](a, a)
+        for plan in self._plans[0]:
+            plan(a)
         self._matrices(a, "forward_matrix")
         return a
 
     def inverse(self, a: Array) -> Array:
         """Overwrite a spectrum `a` with its samples times `round_trip`; returns them."""
-        if self._plans:
-            self._plans[1](a, a, normalise_idft=False)
+        for plan in self._plans[1]:
+            plan(a)
         self._matrices(a, "inverse_matrix")
         return a
 
@@ -142,29 +141,32 @@ class Space:
     def gradient(self, a: Array, d: int) -> Array:
         """The derivative of samples along the coordinate of array dimension d, as a new array."""
         axis = self.axes[d]
-        if isinstance(axis, Radial):
-            flat = a.reshape(self.shape[0], -1).view(np.float64)
-            return (axis.gradient_matrix @ flat).view(np.complex128).reshape(self.shape)
+        if axis.gradient_matrix is not None:
+            return self.array(np.moveaxis(np.tensordot(axis.gradient_matrix, a, axes=(1, d)), 0, d))
         out = self.array(a)
         if axis.uniform:
             out[...] = 0.0
             return out
-        forward, backward = self._line_plans[d]
-        forward(out, out)
+        there, back = self._line_plans[d]
+        there(out)
         out *= self.along(d, 1j * axis.derivative_k() / axis.n)
-        return backward(out, out, normalise_idft=False)
+        return back(out)
 
     @cached_property
-    def _line_plans(self) -> dict[int, tuple[pyfftw.FFTW, pyfftw.FFTW]]:
-        scratch = self.empty()
-        return {
-            d: tuple(
-                pyfftw.FFTW(scratch, scratch, axes=(d,), direction=way, flags=("FFTW_ESTIMATE",), threads=self.threads)
-                for way in ("FFTW_FORWARD", "FFTW_BACKWARD")
-            )
-            for d, a in enumerate(self.axes)
-            if a.fftw
-        }
+    def _line_plans(self) -> dict[int, tuple[_Plan, _Plan]]:
+        lines = self._dims(COMPLEX)
+        return {d: tuple(_Plan(self, (d,), way, "FFTW_ESTIMATE") for way in (0, 1)) for d in lines}
+
+    def unfolded(self, samples: Array) -> tuple[Array, Space]:
+        """The same function with both sides of every mirror axis, and the space that it is then on."""
+        axes = [a.unfolded() if isinstance(a, Mirror) else a for a in self.axes]
+        if not any(isinstance(a, Mirror) for a in self.axes):
+            return samples, self
+        for d, axis in enumerate(self.axes):
+            if isinstance(axis, Mirror):
+                samples = np.concatenate([np.flip(samples, d), samples], axis=d)
+        whole = Space(axes, threads=self.threads)
+        return whole.array(samples), whole
 
     # words
 
@@ -182,6 +184,31 @@ class Space:
     @classmethod
     def from_description(cls, description: Sequence[dict[str, object]], *, threads: int = 1) -> Space:
         return cls([build(d) for d in description], threads=threads)
+
+
+class _Plan:
+    """A planned transform in place along some dimensions, without any factor.
+
+    Real transforms of complex samples are done on their real and imaginary parts at once, as a last dimension of two.
+    """
+
+    def __init__(self, space: Space, dims: tuple[int, ...], way: int, effort: str) -> None:
+        self.real = space.axes[dims[0]].fftw == COSINE
+        names = tuple(space.axes[d].fftw[way] for d in dims)
+        scratch = self._view(space.empty())
+        self.plan = pyfftw.FFTW(
+            scratch, scratch, axes=dims, direction=names if self.real else names[0], flags=(effort,),
+            threads=space.threads,
+        )  # fmt: skip
+
+    def _view(self, a: Array) -> Array:
+        return a.view(np.float64).reshape(*a.shape, 2) if self.real else a
+
+    def __call__(self, a: Array) -> Array:
+        view = self._view(a)
+        self.plan.update_arrays(view, view)
+        self.plan.execute()
+        return a
 
 
 def _marginals(density: Array, weights: Sequence[Array]) -> list[Array]:
