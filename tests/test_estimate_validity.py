@@ -5,11 +5,12 @@ from __future__ import annotations
 from math import pi, sqrt
 
 import motion
+import numpy as np
 import pytest
 from motion import RB, Natural
 
 import trapsim
-from reference import units
+from reference import expansion, units
 from trapsim.estimate.law import scaling_law
 from trapsim.estimate.trust import trust
 from trapsim.estimate.validity import CARE, DOUBT, FINE, Check, validity
@@ -141,3 +142,21 @@ def test_the_stated_error_covers_swings_in_a_trap(
     said = runs[1].summary.numerics.error.width_relative
     assert off < said < 100 * off + 1e-6
     assert said < 1e-3
+
+
+@pytest.mark.parametrize(("beta", "lam"), [(1.0, 1.0), (10.0, 4.0), (40.0, 0.3), (100.0, 1.4)])
+def test_the_stated_error_covers_flights(beta: float, lam: float) -> None:
+    own = Natural(beta)
+    (flight,) = expansion.round_flight(lam, beta, [4.0])
+    truth = np.array([flight.widths[0], flight.widths[0], flight.widths[1]]) * own.unit.length * 1e6
+    said = []
+    for accuracy in ("draft", "normal"):
+        summary = trapsim.run(motion.cloud(
+            motion.stage("release", own.s(4)), frequency=own.hz(1, 1, lam), a=own.a, accuracy=accuracy
+        )).summary  # fmt: skip
+        # independent calculation: oscillator functions in stretched coordinates, DOP853 (good to 1e-6)
+        off = float(np.abs(np.array(summary.end.width_um) / truth - 1).max())
+        said.append(summary.numerics.error.width_relative)
+        assert off < said[-1] + 1e-6
+        assert said[-1] < 100 * off + 1e-5
+    assert said[1] < said[0] / 10

@@ -181,7 +181,7 @@ def test_a_ramped_trap_moves_the_cloud_as_the_independent_solver_says(solved: So
     traps = [lambda t, r=r: r(t) if t < 2.5 else 0.0 for r in ramps]
     start = expansion.ground((2, 1), (1.0, 1.4), OWN.beta, counts=(20, 16))
     seen = expansion.march(start, (1.0, 1.4), OWN.beta, ends, trap=traps, edges=(1.5, 2.5))
-    assert run.summary.numerics.axes == ("radial", "radial", "wave")
+    assert run.summary.numerics.axes == ("radial", "radial", "mirror")
     for stage, flight in zip(run.summary.stages, seen, strict=True):
         # independent calculation: oscillator functions in stretched coordinates, DOP853
         widths = [flight.widths[0], flight.widths[0], flight.widths[1]]

@@ -183,7 +183,8 @@ def test_a_release_of_some_parts_leaves_the_others() -> None:
 def test_the_flight_clock_starts_with_the_last_release() -> None:
     run = trapsim.run(motion.cloud(
         motion.stage("hold", 1e-4), motion.stage("release", 2e-4),
-        motion.stage("kick", velocity='["0 m/s", "0 m/s", "1 m/s"]'), motion.stage("hold", 3e-4), frequency=ROUND, number=1e3, accuracy="draft",
+        motion.stage("kick", velocity='["0 m/s", "0 m/s", "1 m/s"]'), motion.stage("hold", 3e-4),
+        frequency=ROUND, number=1e3, accuracy="draft",
     ))  # fmt: skip
     ends = [s.end for s in run.summary.stages]
     assert [e.time_ms for e in ends] == pytest.approx([0.1, 0.3, 0.3, 0.6], rel=1e-12)

@@ -12,7 +12,6 @@ import numpy as np
 from trapsim.errors import PlanError
 from trapsim.plan.plan import Plan
 from trapsim.prepare.setup import Setup, memory_needed, prepare
-from trapsim.space.axes import Axis, Mirror
 
 #: points along a trapped direction; with fewer there is no spectrum to watch
 FEWEST = 8
@@ -30,7 +29,7 @@ def set_up(plan: Plan) -> Setup:
     with ordinary_numbers(plan.name):
         setup = prepare(plan)
     for j, trapped in enumerate(setup.omega > 0):
-        if trapped and (n := _both_sides(setup.space.axis(j))) < FEWEST:
+        if trapped and (n := setup.space.axis(j).whole) < FEWEST:
             raise PlanError.at(
                 f"numerics.points[{j}]", str(n), f"a cloud held along {'xyz'[j]} takes at least {FEWEST} points",
                 'write more points, or "auto"',
@@ -43,11 +42,6 @@ def set_up(plan: Plan) -> Setup:
             f"this machine has {there / 1e9:.3g} GB free", f"{_FEWER}; or set numerics.memory yourself",
         )  # fmt: skip
     return setup
-
-
-def _both_sides(axis: Axis) -> int:
-    """How many points an axis stands for."""
-    return 2 * axis.n if isinstance(axis, Mirror) else axis.n
 
 
 @contextmanager

@@ -79,7 +79,7 @@ class Alarm:
         else:
             got = f"{self.population:.1e} of the atoms near the highest wave number along {name} at {1e3 * time:.4g} ms"
             rule = f"at most {self.limit:.0e} may be there, or fast atoms appear as slow ones"
-            remedy = f"numerics.points along {name} (now {axis.n})"
+            remedy = f"numerics.points along {name} (now {axis.counted})"
         return PhysicsRefused.at(place, got, rule, f"give more room with {remedy}, or a finer numerics.accuracy")
 
 

@@ -250,12 +250,13 @@ def _why(plan: Plan, round_about: list[frozenset[int]], words: list[tuple[str, .
     if plan.numerics.axes != "auto":
         return "the axes are as the plan forces them"
     told = []
-    for pair in [[j for j in range(3) if words[0][j] == "radial"]]:
-        if pair:
-            told.append(f"{' and '.join(AXES[j] for j in pair)} are alike, so one radial axis covers them")
+    lost = " at first" if words[-1] != words[0] else ""
+    alike = [AXES[j] for j in range(3) if words[0][j] == "radial"]
+    if alike:
+        told.append(f"{' and '.join(alike)} are alike{lost}, so one radial axis covers them")
     mirrored = [AXES[j] for j in range(3) if words[0][j] == "mirror"]
     if mirrored:
-        told.append(f"along {', '.join(mirrored)} the cloud is even about its centre, so half an axis does")
+        told.append(f"along {', '.join(mirrored)} the cloud is even about its centre{lost}, so half an axis does")
     if not told:
         told.append("nothing is alike, so each direction has a whole axis of its own")
     if words[-1] != words[0]:

@@ -52,6 +52,11 @@ class Axis:
         return len(self.points)
 
     @property
+    def whole(self) -> int:
+        """Points of the whole axis, of which it may keep a part."""
+        return self.n
+
+    @property
     def k_max(self) -> float:
         return float(np.abs(self.k).max())
 
@@ -59,6 +64,11 @@ class Axis:
     def uniform(self) -> bool:
         """Whether nothing varies along it: one point stands for the whole length."""
         return self.n == 1
+
+    @property
+    def counted(self) -> int:
+        """Number of points as a plan counts them: both sides of a mirror axis, one of a radius."""
+        return self.n
 
     def x1(self, j: int) -> Array:
         raise TypeError(f"{type(self).__name__} does not say x1")
@@ -213,8 +223,16 @@ class Mirror(Axis):
         series[x > self.half_extent] = 0.0
         return series @ self._forward
 
+    @property
+    def counted(self) -> int:
+        return 2 * self.n
+
     def finer(self) -> Mirror:
         return Mirror(self.covers, 2 * self.n, self.half_extent)
+
+    @property
+    def whole(self) -> int:
+        return 2 * self.n
 
     @property
     def k_max(self) -> float:

@@ -175,7 +175,8 @@ class Space:
         return [self.axis(j).kind if not self.axis(j).uniform else "uniform" for j in range(3)]
 
     def points_per_direction(self) -> list[int]:
-        return [self.axis(j).n for j in range(3)]
+        """Points of the whole axis that covers each lab direction, as a plan asks for them."""
+        return [self.axis(j).whole for j in range(3)]
 
     def describe(self) -> list[dict[str, object]]:
         """What it takes to build the same space again."""
