@@ -182,15 +182,15 @@ def test_a_release_of_some_parts_leaves_the_others() -> None:
 
 def test_the_flight_clock_starts_with_the_last_release() -> None:
     run = trapsim.run(motion.cloud(
-        motion.stage("hold", 1e-4), motion.stage("release", 2e-4),
-        motion.stage("kick", velocity='["0 m/s", "0 m/s", "1 m/s"]'), motion.stage("hold", 3e-4),
-        frequency=ROUND, number=1e3, accuracy="draft",
+        motion.stage("hold", 1e-4), motion.stage("release", 2e-4), motion.stage("hold", 1e-4),
+        motion.stage("release", 2e-4), motion.stage("kick", velocity='["0 m/s", "0 m/s", "1 m/s"]'),
+        motion.stage("hold", 3e-4), frequency=ROUND, number=1e3, accuracy="draft",
     ))  # fmt: skip
     ends = [s.end for s in run.summary.stages]
-    assert [e.time_ms for e in ends] == pytest.approx([0.1, 0.3, 0.3, 0.6], rel=1e-12)
-    assert ends[0].flight_ms is None
-    assert [e.flight_ms for e in ends[1:]] == pytest.approx([0.2, 0.2, 0.5], rel=1e-12)
-    assert ends[3].velocity_mm_per_s[2] == pytest.approx(1000, rel=1e-12)
+    assert [e.time_ms for e in ends] == pytest.approx([0.1, 0.3, 0.4, 0.6, 0.6, 0.9], rel=1e-12)
+    assert [e.flight_ms for e in ends[:3]] == [None, None, 0.0]
+    assert [e.flight_ms for e in ends[3:]] == pytest.approx([0.2, 0.2, 0.5], rel=1e-12)
+    assert ends[5].velocity_mm_per_s[2] == pytest.approx(1000, rel=1e-12)
 
 
 def test_a_kick_is_a_step_of_no_duration() -> None:

@@ -121,10 +121,10 @@ def summarise(
     if plan.sequence:
         orders = album.orders(int(track["stage"][-1])) if status == "complete" else None
         end = moment_of(track, -1, mass=mass, law_model=model, orders=orders)
-    drift = energy_drift(track, setup.legs)
+    drift = energy_drift(track, setup.legs, timeline.origin)
     error = trust(
         state.books, residual=ground.residual or 0.0, virial=ground.virial or 0.0, energy_drift=drift or 0.0,
-        swing=swing_error(track, setup.legs, setup.q), centre_off=_centre_off(setup, state, track),
+        swing=swing_error(track, setup.legs, setup.q, timeline.origin), centre_off=_centre_off(setup, state, track),
     )  # fmt: skip
     return Summary(
         title=printable(plan.title or plan.name),
@@ -147,7 +147,7 @@ def summarise(
             norm_drift=float(track["norm"][-1] - track["norm"][0]),
             energy_drift=drift,
             continuity=continuity,
-            error=ErrorEstimate(error.width, error.rate, 1e6 * error.centre),
+            error=ErrorEstimate(error.width, error.rate, None if error.centre is None else 1e6 * error.centre),
         ),
         pictures=tuple(_picture_figures(p, timeline.released) for p in album.pictures.values()),
         warnings=tuple(notices),
@@ -187,23 +187,29 @@ def _stage_ends(track: Track, times: Sequence[tuple[float, float]], now: float) 
     return out
 
 
-def energy_drift(track: Track, legs: Sequence[Leg]) -> float | None:
+def energy_drift(track: Track, legs: Sequence[Leg], origin: Sequence[float]) -> float | None:
     """The worst relative change of the internal energy over stretches in which nothing changes in time."""
-    known = [d for leg in legs if (d := _drift_in(track, leg)) is not None]
+    known = [d for leg in legs if (d := _drift_in(track, leg, origin)) is not None]
     return max(known, default=None)
 
 
-def _drift_in(track: Track, leg: Leg) -> float | None:
+def _drift_in(track: Track, leg: Leg, origin: Sequence[float]) -> float | None:
     """The relative change of the internal energy over a leg; None where it need not be constant, or was not seen."""
     inside = (track["stage"] == leg.stage) & (track.time > leg.start) & (track.time <= leg.stop)
     if not leg.interval.steady or inside.sum() < 2:
         return None
     values = np.nansum(track["kinetic"], axis=1) + track["trap"] + track["interaction"]
+    scale = np.abs(values[inside]).max()
+    parts = leg.interval.parts_at(0.5 * (leg.start + leg.stop))
+    if not all(p.quadratic for p in parts):
+        # only in a parabola is the cloud's own energy kept apart from that of its centre
+        place = (track["centre"] + np.asarray(origin)).T
+        values = values + track["centre_kinetic"] + sum(p.energy(*place) for p in parts if p.strength > 0)
     values = values[inside]
-    return float(np.max(np.abs(values - values[0])) / np.abs(values).max())
+    return float(np.max(np.abs(values - values[0])) / scale)
 
 
-def swing_error(track: Track, legs: Sequence[Leg], q: float) -> float:
+def swing_error(track: Track, legs: Sequence[Leg], q: float, origin: Sequence[float]) -> float:
     """What the swings of the cloud in its traps may be out by, relative.
 
     Plain steps keep a Hamiltonian that is a little wrong: the energy wobbles by that share within a swing, and the
@@ -211,19 +217,22 @@ def swing_error(track: Track, legs: Sequence[Leg], q: float) -> float:
     """
     total = 0.0
     for leg in legs:
-        drift = _drift_in(track, leg) if leg.trapped else None
+        drift = _drift_in(track, leg, origin) if leg.trapped else None
         if drift is not None:
-            _, curvature = steered(leg.interval.parts_at(leg.start), (0.0, 0.0, 0.0))
+            _, curvature = steered(leg.interval.parts_at(leg.start), tuple(origin))
             turns = np.sqrt(max(float(curvature.max()), 0.0) * q / HBAR) * (leg.stop - leg.start)
             total += drift * (1 + turns / 2)
     return total
 
 
-def _centre_off(setup: Setup, state: State, track: Track) -> float:
+def _centre_off(setup: Setup, state: State, track: Track) -> float | None:
     """How far the centre is from the classical path where the last finished leg ended, m.
 
-    The path is exact for everything that is exactly quadratic (Kohn's theorem), whatever the interaction.
+    The path is exact for everything that is exactly quadratic (Kohn's theorem), whatever the interaction; else None.
     """
+    parts = [p for leg in setup.legs for p in leg.interval.parts_at(0.5 * (leg.start + leg.stop))]
+    if not all(p.quadratic for p in parts) or not all(all(leg.moving) for leg in setup.legs):
+        return None
     finished = state.leg if state.law is None else state.leg - 1
     if finished < 1 or finished > len(setup.timeline.path):
         return 0.0

@@ -69,13 +69,16 @@ def _turned(stretch: Stretch) -> bool:
 
 
 def scaling_law(setup: Setup) -> ScalingLaw | None:
-    """The law for a plan's timeline; None where there is none (attraction, nothing trapped, a turned trap).
+    """The law for a plan's timeline; None where there is none (attraction at any time, nothing trapped, a turned trap).
 
     b_j'' = w_j(0)^2/(b_j b_x b_y b_z) - w_j(t)^2 b_j for a Thomas-Fermi cloud (Y. Castin and R. Dum, Phys. Rev. Lett. 77,
     5315 (1996)), b_j'' = w_j(0)^2/b_j^3 - w_j(t)^2 b_j for the ideal gas.
     """
     trapped = setup.omega > 0
-    if setup.coupling < 0 or not trapped.any() or any(_turned(step.stretch) for step in setup.timeline.steps):
+    stretches = [step.stretch for step in setup.timeline.steps]
+    couplings = [setup.coupling, *(s.coupling(t) for s in stretches for t in (s.start, s.stop))]
+    repelling = min(couplings) >= 0 and (max(couplings) == 0 or setup.coupling > 0)
+    if not repelling or not trapped.any() or any(_turned(s) for s in stretches):
         return None
     w0 = setup.omega
     if setup.coupling == 0:
@@ -107,6 +110,8 @@ def scaling_law(setup: Setup) -> ScalingLaw | None:
                 slope_in(stretch), (stretch.start, stretch.stop), y, method="DOP853", rtol=1e-10, atol=1e-12,
                 dense_output=True,
             )  # fmt: skip
+            if not solution.success:
+                return None
             pieces.append((stretch.start, stretch.stop, solution.sol))
             y = solution.y[:, -1]
 

@@ -17,17 +17,17 @@ class Trust:
     ----------
     width, rate : float
         Relative, of rms widths and expansion rates.
-    centre : float
+    centre : float or None
         m.
     """
 
     width: float
     rate: float
-    centre: float
+    centre: float | None
 
 
 def trust(
-    books: Books, *, residual: float, virial: float, energy_drift: float, swing: float, centre_off: float
+    books: Books, *, residual: float, virial: float, energy_drift: float, swing: float, centre_off: float | None
 ) -> Trust:
     """From step estimates, guards and exact statements to widths, rates and centre.
 
@@ -51,8 +51,8 @@ def trust(
         Relative, the worst over stretches where nothing changed in time.
     swing : float
         Relative, of swings in a trap, from the drift of the energy there and how long it lasted.
-    centre_off : float
-        Distance of the measured centre from the classical path, m.
+    centre_off : float or None
+        Distance of the measured centre from the classical path, m; None where that is not exact.
     """
     time = 2 * books.error**2 + 5e-3 * books.local ** (2 / 3)
     space = 1.2 * float(np.max(books.spectrum)) ** 0.75 + 0.05 * float(np.max(books.edge))

@@ -13,13 +13,13 @@ import numpy as np
 
 from trapsim.cloud.cloud import Cloud, regauge
 from trapsim.constants import HBAR
+from trapsim.errors import PhysicsRefused
 from trapsim.evolve.guards import Guards, edge_population, spectrum_population
 from trapsim.evolve.pace import Buffers
-from trapsim.evolve.scaling import LawStart, MovingLaw, StandingLaw, measure_law, reach
+from trapsim.evolve.scaling import LawStart, MovingLaw, StandingLaw, measure_law
 from trapsim.evolve.splitstep import Rest, SplitStep
 from trapsim.evolve.state import Books, Leg, Pace, State, Tick
-from trapsim.fields import Triple
-from trapsim.measure.observables import Profile, profile
+from trapsim.measure.observables import Profile, profile, reach
 from trapsim.space.resample import resample
 from trapsim.space.space import Array
 from trapsim.terms.part import remainder
@@ -70,7 +70,9 @@ def _enter(state: State, leg: Leg, guards: Guards) -> State:
     cloud = replace(state.cloud, time=leg.start)
     if cloud.space is not leg.space and cloud.space.describe() != leg.space.describe():
         cloud = replace(cloud, phi=resample(cloud.phi, cloud.space, leg.space), space=leg.space)
-    cloud = settled(kicked(cloud, leg.kick, moving=leg.moving), leg.moving)
+    cloud = replace(cloud, frame=replace(cloud.frame, Xdot=cloud.frame.Xdot + np.asarray(leg.kick)))
+    _must_fit(cloud, leg)
+    cloud = settled(cloud, leg.moving)
     seen = profile(cloud)
     cloud, seen = _followed(cloud, seen, leg)
     spectrum = spectrum_population(cloud.space, seen.spectrum)
@@ -129,6 +131,36 @@ def settled(cloud: Cloud, moving: Sequence[bool]) -> Cloud:
     return regauge(cloud, bdot=bdot, Xdot=Xdot)
 
 
+def _must_fit(cloud: Cloud, leg: Leg) -> None:
+    """Refuse a frame that comes to rest when the grid cannot hold the velocities it leaves to the wave function.
+
+    Raises
+    ------
+    PhysicsRefused
+        Before they would be folded back to other velocities.
+    """
+    space, frame = cloud.space, cloud.frame
+    stopped = [
+        j for j in range(3)
+        if not leg.moving[j] and (frame.Xdot[j] or frame.bdot[j]) and space.axis(j).carries_velocity
+    ]  # fmt: skip
+    if not stopped:
+        return
+    seen = profile(cloud)
+    for j in stopped:
+        axis, d = space.axis(j), space.dim(j)
+        own = reach(axis.k, seen.spectrum[d] * axis.spectral_weights, FULL_TAIL)
+        far = reach(axis.points, seen.density[d] * axis.weights, FULL_TAIL)
+        wind = frame.b[j] / cloud.q * (abs(frame.Xdot[j]) + abs(frame.bdot[j]) * far)
+        if own + wind > axis.k_max:
+            fastest = 1e3 * axis.k_max * cloud.q / frame.b[j]
+            raise PhysicsRefused.at(
+                f"stage {leg.name}", f"a cloud that moves at {1e3 * frame.Xdot[j]:.4g} mm/s along {'xyz'[j]} as it is held",
+                f"the grid that stands there holds velocities up to {fastest:.4g} mm/s",
+                f"give more numerics.points along {'xyz'[j]} (now {axis.whole}), or let it be held before it moves",
+            )  # fmt: skip
+
+
 def _followed(cloud: Cloud, seen: Profile, leg: Leg) -> tuple[Cloud, Profile]:
     """The same cloud in a frame that suits it better, where that is needed; exact.
 
@@ -154,14 +186,6 @@ def _followed(cloud: Cloud, seen: Profile, leg: Leg) -> tuple[Cloud, Profile]:
     return cloud, profile(cloud)
 
 
-def kicked(cloud: Cloud, velocity: Triple, *, moving: Sequence[bool]) -> Cloud:
-    """The cloud after an instantaneous kick (m/s): the frame takes it where it moves, else the wave function."""
-    if not any(velocity):
-        return cloud
-    pushed = replace(cloud, frame=replace(cloud.frame, Xdot=cloud.frame.Xdot + np.asarray(velocity)))
-    return settled(pushed, moving)
-
-
 def stepper(law_start: LawStart, leg: Leg, q: float) -> SplitStep:
     """Steps on a leg under the frame law that starts from `law_start`."""
     law = MovingLaw(law_start, leg.interval, q=q, moving=leg.moving) if any(leg.moving) else StandingLaw(
@@ -179,7 +203,8 @@ def _rest(law: MovingLaw | StandingLaw, leg: Leg) -> Rest:
         lab = tuple(frame.lab(x, j) for j, x in enumerate(coordinates))
         return remainder(leg.interval.parts_at(t), tuple(frame.X), *lab, steered_along=leg.moving)
 
-    parts = leg.interval.parts_at(leg.start)
+    # in the middle, because a part that is ramped up from nothing is off at the start
+    parts = leg.interval.parts_at(0.5 * (leg.start + leg.stop))
     if all(leg.moving) and all(p.quadratic for p in parts):
         return lambda t: 0.0
     if leg.interval.steady and not any(leg.moving):
@@ -198,7 +223,7 @@ def _rate(law: MovingLaw | StandingLaw, leg: Leg) -> Callable[[float], float]:
         parts = (p for p in leg.interval.parts_at(t) if not p.quadratic and p.strength > 0)
         return max((p.rate(speed) for p in parts), default=0.0)
 
-    if all(p.quadratic for p in leg.interval.parts_at(leg.start)):
+    if all(p.quadratic for p in leg.interval.parts_at(0.5 * (leg.start + leg.stop))):
         return lambda t: 0.0
     return rate
 

@@ -20,7 +20,7 @@ from scipy import integrate
 
 from trapsim.cloud.cloud import Cloud
 from trapsim.constants import HBAR
-from trapsim.measure.observables import Profile
+from trapsim.measure.observables import Profile, reach
 from trapsim.space.frame import Frame
 from trapsim.terms.part import ALL, Array, Part, steered
 
@@ -119,15 +119,7 @@ def _holding(cloud: Cloud, seen: Profile, j: int, tail: float, front: float) -> 
     outward = np.max(bdot * np.abs(places) + (q / b) * np.sign(places) * flow)
     spread = np.sqrt(max(fastest**2 - np.max(np.abs(flow)) ** 2, 0.0))
     velocity = max(outward, 0.0) + q * spread / b + front
-    return float(b**2 * max((velocity / (INSIDE * axis.half_extent)) ** 2 - bdot**2, 0.0))
-
-
-def reach(places: Array, population: Array, tail: float) -> float:
-    """The |place| beyond which only the share `tail` of a population lies."""
-    order = np.argsort(np.abs(places))
-    beyond = population[order][::-1].cumsum()[::-1] / population.sum()
-    inside = np.nonzero(beyond > tail)[0]
-    return float(np.abs(places)[order][inside[-1]])
+    return float(b**2 * max((velocity / (INSIDE * axis.half_extent)) ** 2 - max(bdot, 0.0) ** 2, 0.0))
 
 
 class MovingLaw:
@@ -159,9 +151,10 @@ class MovingLaw:
             self._at = lambda t: y0
             return
         rate = 1 / length
+        most = max(*(abs(interval.coupling(t)) for t in (start.time, interval.stop)), 1e-40)
         absolute = np.concatenate([
             np.full(3, 1e-13), np.full(3, 1e-13 * rate), np.full(3, 1e-17), np.full(3, 1e-17 * rate),
-            np.full(3, 1e-13 * length), [1e-13 * length * max(abs(interval.coupling(start.time)), 1e-300)],
+            np.full(3, 1e-13 * length), [1e-13 * length * most],
         ])  # fmt: skip
         solution = integrate.solve_ivp(
             slope, (start.time, interval.stop), y0, method="DOP853", rtol=1e-12, atol=absolute, dense_output=True

@@ -24,7 +24,7 @@ from trapsim.evolve.phases import in_pieces, rotate
 from trapsim.evolve.scaling import MovingLaw, StandingLaw, gauss
 from trapsim.space.space import Array, Space
 
-#: rad of the fastest change of the potential per half step, for Gauss's rule of two points to be good to 1e-5
+#: rad of the fastest change of the potential per step, for Gauss's rule of two points on its halves to be good to 1e-6
 SAMPLED = 0.6
 Rest = Callable[[float], Array | float]
 

@@ -69,7 +69,7 @@ class ColumnViews:
         self.samples = [max(raster, int(finer * a.n)) for a in space.axes]
         self.finer = [a.finer() if isinstance(a, Radial) else a for a in space.axes]
         self._onto_finer = space.axes[0].basis(self.finer[0].points) if isinstance(space.axes[0], Radial) else None
-        self._lines = [_line(a.half_extent, n) for a, n in zip(self.finer, self.samples, strict=True)]
+        self._lines = [midpoints(a.half_extent, n) for a, n in zip(self.finer, self.samples, strict=True)]
 
     def density(self, cloud: Cloud) -> Array:
         """|phi|^2 on the finer points."""
@@ -114,7 +114,7 @@ class ColumnViews:
         if finest:
             waves = waves[np.abs(waves) <= np.pi / finest]
         cut, waves = self._cut(cloud, waves, cosine, sine, (right, up, along))
-        s = _line(half, samples)
+        s = midpoints(half, samples)
         profile = np.real(np.exp(1j * np.outer(s, waves)) @ cut) / (2 * half)
         rows = self._lines[self.space.dim(up)]
         axis = self.space.axis(up)
@@ -172,10 +172,10 @@ class ColumnViews:
         dims = [d for d in range(len(self.space.axes)) if d != gone]
         if dims != [self.space.dim(up), self.space.dim(right)]:
             rest = rest.T
-        rows, columns = (self._onto_line(self.space.dim(j)) for j in (up, right))
+        rows, columns = (self._ontomidpoints(self.space.dim(j)) for j in (up, right))
         return rows @ rest @ columns.T
 
-    def _onto_line(self, d: int) -> Array:
+    def _ontomidpoints(self, d: int) -> Array:
         return self.finer[d].basis(self._lines[d])
 
     def _round(self, profile: Array) -> Array:
@@ -185,7 +185,7 @@ class ColumnViews:
     def _side(self, density: Array, up: int, right: int, along: int) -> Array:
         """A round cloud seen from the side: the Fourier slice of the radial axis, the other axis' own series."""
         side = self.finer[0].project(self._lines[0]) @ density
-        other = self._onto_line(1)
+        other = self._ontomidpoints(1)
         values = side @ other.T
         across = next(j for j in self.space.axes[0].covers if j != along)
         return values if across == up else values.T
@@ -201,6 +201,6 @@ def _contract(density: Array, along: Array, right: Array) -> Array:
     return out
 
 
-def _line(half: float, samples: int) -> Array:
+def midpoints(half: float, samples: int) -> Array:
     """The midpoints of equal cells from -half to half."""
     return ((np.arange(samples) + 0.5) / samples * 2 - 1) * half

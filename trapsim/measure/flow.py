@@ -7,6 +7,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from trapsim.cloud.cloud import Cloud
+from trapsim.measure.columns import midpoints
 from trapsim.measure.views import VIEWS
 from trapsim.space.axes import Array, Axis, Radial
 
@@ -98,7 +99,7 @@ def flow_plane(cloud: Cloud, view: str, *, n: int = 25) -> FlowPlane:
     """Where the atoms in the middle plane go: v_j = bdot_j xi_j + (q/b_j) Im(phi* d_j phi)/|phi|^2."""
     space, frame, q = cloud.space, cloud.frame, cloud.q
     right, up = ("xyz".index(d) for d in VIEWS[view])
-    lines = [_line(space.axis(j).half_extent, n) for j in (right, up)]
+    lines = [midpoints(space.axis(j).half_extent, n) for j in (right, up)]
     phi, slopes = _in_plane(cloud, right, up, lines)
     density = np.abs(phi) ** 2
     seen = density > FAINT * density.max()
@@ -107,10 +108,6 @@ def flow_plane(cloud: Cloud, view: str, *, n: int = 25) -> FlowPlane:
         own_flow = np.divide((np.conj(phi) * slope).imag, density, out=np.full(phi.shape, np.nan), where=seen)
         out.append(frame.bdot[j] * own + q / frame.b[j] * own_flow)
     return FlowPlane(view, frame.lab(lines[0], right), frame.lab(lines[1], up), density / frame.B, *out)
-
-
-def _line(half: float, n: int) -> Array:
-    return ((np.arange(n) + 0.5) / n * 2 - 1) * half
 
 
 def _in_plane(cloud: Cloud, right: int, up: int, lines: list[Array]) -> tuple[Array, tuple[Array, Array]]:

@@ -15,6 +15,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from trapsim.cloud.cloud import Cloud, unfolded
+from trapsim.measure.observables import reach
 from trapsim.space.axes import Array, Wave
 from trapsim.terms.lattice import Lattice
 
@@ -75,16 +76,16 @@ def momentum(cloud: Cloud, direction: int) -> Momentum:
     lines = np.moveaxis(np.asarray(cloud.phi), d, -1)
     weights = _other_weights(cloud, d)
     spectrum = np.fft.fft(lines, axis=-1)
-    reach = _reach(axis.k, _marginal(np.abs(spectrum) ** 2, weights))
-    extent = _reach(axis.points, _marginal(np.abs(lines) ** 2, weights))
-    if abs(b * bdot) * (axis.half_extent - extent) > q * reach:
+    width_k = reach(axis.k, _marginal(np.abs(spectrum) ** 2, weights), TAIL)
+    extent = reach(axis.points, _marginal(np.abs(lines) ** 2, weights), TAIL)
+    if abs(b * bdot) * (axis.half_extent - extent) > q * width_k:
         f = np.fft.ifft(spectrum * np.exp(-0.5j * q * axis.k**2 / (b * bdot)), axis=-1)
         k = axis.points * bdot / q
         density = _marginal(np.abs(f) ** 2, weights) * q / abs(bdot)
         order = slice(None) if bdot > 0 else slice(None, None, -1)
         return _normalised(direction, k[order] + drift, density[order])
     # the phase winds by up to b bdot xi/q at the edge: as many points as hold that and the spectrum
-    width = reach + abs(b * bdot) * extent / q
+    width = width_k + abs(b * bdot) * extent / q
     n = axis.n * max(1, 2 ** int(np.ceil(np.log2(width / axis.k_max))))
     fine = Wave((direction,), n, axis.half_extent)
     padded = _padded(spectrum, n)
@@ -119,13 +120,6 @@ def _marginal(density: Array, weights: list[Array]) -> Array:
     for w in weights:
         density = np.tensordot(w, density, axes=(0, 0))
     return density
-
-
-def _reach(k: Array, power: Array) -> float:
-    """|k| (or |x|) that holds all of a distribution but its tail."""
-    order = np.argsort(np.abs(k))
-    beyond = power[order][::-1].cumsum()[::-1] / power.sum()
-    return float(np.abs(k)[order][np.nonzero(beyond > TAIL)[0][-1]])
 
 
 def _normalised(direction: int, k: Array, density: Array) -> Momentum:

@@ -78,9 +78,10 @@ def profile(cloud: Cloud) -> Profile:
             weighted = density[d] * axis.weights / norm
             spectral = spectrum[d] * axis.spectral_weights / norm
             mean[j] = weighted @ axis.x1(j)
-            var[j] = weighted @ axis.x2(j) - mean[j] ** 2
+            var[j] = max(weighted @ axis.x2(j) - mean[j] ** 2, 0.0)
             k_mean[j] = spectral @ axis.k1(j)
-            k_var[j] = spectral @ axis.k2(j) - k_mean[j] ** 2
+            # of a plane wave it is rounding, with either sign
+            k_var[j] = max(spectral @ axis.k2(j) - k_mean[j] ** 2, 0.0)
             cov[j] = lever - mean[j] * k_mean[j]
     return Profile(norm, density, spectrum, mean, var, k_mean, k_var, cov, quartic, flow)
 
@@ -196,3 +197,11 @@ def _towards_centre(axis: Axis) -> tuple[Array, Array]:
         x = axis.points[nearest]
     others = [np.delete(x, i) for i in range(len(x))]
     return nearest, np.array([np.prod(o / (o - one)) for one, o in zip(x, others, strict=True)])
+
+
+def reach(places: Array, population: Array, tail: float) -> float:
+    """The |place| beyond which only the share `tail` of a population lies."""
+    order = np.argsort(np.abs(places))
+    beyond = population[order][::-1].cumsum()[::-1] / population.sum()
+    inside = np.nonzero(beyond > tail)[0]
+    return float(np.abs(places)[order][inside[-1]])

@@ -56,7 +56,7 @@ class Accuracy:
 HEAD_START = 2.0
 
 ACCURACY = {
-    "draft": Accuracy(2.2, 3e-4, 2.4, 4.0, 3.5, 0.5, 1e-6, 1e-3, 1e-3, 1e-2),
+    "draft": Accuracy(2.2, 3e-4, 2.4, 4.0, 3.5, 0.5, 1e-6, 4e-3, 4e-3, 1e-2),
     "normal": Accuracy(1.4, 1e-4, 2.4, 5.5, 5.0, 1.5, 1e-7, 1e-4, 1e-4, 1e-3),
     "fine": Accuracy(1.0, 1e-5, 0.8, 7.0, 6.0, 4.0, 1e-9, 2e-6, 1e-5, 1e-4),
 }
@@ -181,7 +181,7 @@ def box_lengths(lengths: Lengths, box: Box, q: float, accuracy: Accuracy, free: 
         wall = box.size[j] / 2
         # when it is let go, its rim runs off at twice the speed of sound before the frame has gathered speed
         half[j] = max(wall + 1.2 * box.edge + accuracy.tail * decay, HEAD_START * wall)
-        finest[j] = min(1.1 * foot, box.size[j] / 8)
+        finest[j] = min(min(1.1, 1.5 / accuracy.spacing) * foot, box.size[j] / 8)
     return replace(lengths, half=half, finest=finest, mu=mu)
 
 

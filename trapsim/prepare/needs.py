@@ -41,7 +41,8 @@ def measure_up(
     box = next((p for p in parts if isinstance(p, Box)), None)
     free = omega == 0
     length = np.where(extent > 0, extent, box.size if box else 0.0)
-    number = coupling / (4 * np.pi * q) / float(np.prod(length[free]))
+    most = max([coupling, *(s.stretch.coupling(s.stretch.stop) for s in timeline.steps)]) if coupling >= 0 else coupling
+    number = scattering_number(most, q, length / 2, omega)
     lengths = _along_lab(timeline, omega, q, number, accuracy)
     if box is not None:
         lengths = box_lengths(lengths, box, q, accuracy, free)
@@ -125,7 +126,7 @@ def hold_orders(
         When two lattices of different spacing hold the cloud along one direction.
     """
     spacing, period, per = lengths.spacing.copy(), lengths.period.copy(), lengths.per_period.copy()
-    growth = scales(timeline, omega, q, _number(coupling, q, lengths, omega), moving)
+    growth = scales(timeline, omega, q, scattering_number(coupling, q, lengths.half, omega), moving)
     still = np.ones(3)
     acting = [(timeline.initial, timeline.initial.gripped(), still, still)]
     acting += [(s.stretch, s.stands, *b) for s, b in zip(timeline.steps, growth, strict=True)]
@@ -154,8 +155,10 @@ def hold_orders(
     return replace(lengths, spacing=spacing, period=period, per_period=per)
 
 
-def _number(coupling: float, q: float, lengths: Lengths, omega: Array) -> float:
-    return coupling / (4 * np.pi * q) / float(np.prod(2 * lengths.half[omega == 0]))
+def scattering_number(coupling: float, q: float, half: Array, omega: Array) -> float:
+    """N a in m over the full lengths of the directions that nothing traps harmonically."""
+    free = np.asarray(omega) == 0
+    return coupling / (4 * np.pi * q) / float(np.prod(2 * np.asarray(half)[free]))
 
 
 def _strongest(stretch: Stretch) -> list[Lattice]:
@@ -165,9 +168,14 @@ def _strongest(stretch: Stretch) -> list[Lattice]:
         for part in stretch.parts_at(t):
             if isinstance(part, Lattice):
                 name = f"{part.axis}{part.period}"
-                if name not in found or part.strength * part.depth > found[name].strength * found[name].depth:
+                if name not in found or _might(part) > _might(found[name]):
                     found[name] = part
     return list(found.values())
+
+
+def _might(lattice: Lattice) -> tuple[float, float]:
+    """What decides how high its orders go: its depth, then its detuning."""
+    return lattice.strength * lattice.depth, abs(lattice.detuning)
 
 
 def _highest_order(lattice: Lattice, stretch: Stretch) -> float:

@@ -16,7 +16,7 @@ from trapsim.evolve.relax import Hamiltonian
 from trapsim.evolve.state import Leg, Pace
 from trapsim.plan.plan import Plan
 from trapsim.prepare.extent import ACCURACY, Accuracy, Lengths, choose_space
-from trapsim.prepare.needs import hold_orders, measure_up
+from trapsim.prepare.needs import hold_orders, measure_up, scattering_number
 from trapsim.prepare.stretch import Stretch
 from trapsim.prepare.symmetry import choose_words, even_directions, lasting_axis, round_directions
 from trapsim.prepare.timeline import Step, Timeline, build_timeline
@@ -112,12 +112,6 @@ class Setup:
         return shapes.gaussian(self.space, np.where(held, self.lengths.half / 3, widths))
 
 
-def scattering_number(coupling: float, q: float, half: Array, omega: Array) -> float:
-    """N a in m over the full lengths of the directions that nothing traps harmonically."""
-    free = np.asarray(omega) == 0
-    return coupling / (4 * np.pi * q) / float(np.prod(2 * np.asarray(half)[free]))
-
-
 def prepare(plan: Plan) -> Setup:
     """Turn a plan into engine objects.
 
@@ -137,6 +131,7 @@ def prepare(plan: Plan) -> Setup:
     still = needs.periodic | standing
     moving = [tuple(not still[j] and j not in s.stands for j in range(3)) for s in timeline.steps]
     lengths = hold_orders(needs, timeline, omega, q, coupling, moving)
+    _leave_uniform(timeline, lengths)
     round_about = round_directions(timeline, standing=standing)
     axis = lasting_axis(round_about, lengths.uniform)
     even = even_directions(timeline, still=still)
@@ -154,6 +149,24 @@ def prepare(plan: Plan) -> Setup:
         guards=Guards(accuracy.edge, accuracy.spectrum, accuracy.norm, watched), shots=shots,
         why=_why(plan, round_about, words), notices=timeline.notices,
     )  # fmt: skip
+
+
+def _leave_uniform(timeline: Timeline, lengths: Lengths) -> None:
+    """Refuse what would act along a direction that the plan makes uniform or periodic."""
+    for step in timeline.steps:
+        stretch = step.stretch
+        _, curvature = steered(stretch.parts_at(0.5 * (stretch.start + stretch.stop)), timeline.origin)
+        for j in range(3):
+            if lengths.periodic[j] and curvature[j] != 0:
+                raise PlanError.at(
+                    "sequence", f"a trap or lens along {AXES[j]}", "that direction was made uniform or periodic",
+                    f"trap the cloud along {AXES[j]} from the start, or take this frequency to 0 Hz",
+                )  # fmt: skip
+            if lengths.uniform[j] and step.kick[j]:
+                raise PlanError.at(
+                    "sequence", f"a kick along {AXES[j]}", "nothing varies along that direction, so nothing can move there",
+                    f"give numerics.points along {AXES[j]}, or trap the cloud along it",
+                )  # fmt: skip
 
 
 def _words(

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Collection, Mapping
 from dataclasses import dataclass, replace
 from functools import cached_property
 
@@ -33,6 +33,8 @@ class Stretch:
         "dipole.frequency" -> how it changes meanwhile.
     equilibrium : (3,)
         Where parts with a held centre keep the cloud.
+    balanced : frozenset of str
+        The parts against which they hold it, with gravity: those that were on before the sequence.
     scattering : float
         m, unless it has a course.
     factor : float
@@ -45,6 +47,7 @@ class Stretch:
     gravity: Part | None
     courses: Mapping[str, Course]
     equilibrium: Triple
+    balanced: frozenset[str]
     scattering: float
     factor: float
 
@@ -72,11 +75,10 @@ class Stretch:
                 now[name] = replace(part, travel=part.travel + self.moved_on(name, t))
             elif isinstance(part, Function):
                 now[name] = replace(part, time=t)
-        on = [p for p in now.values() if p.strength > 0 and getattr(p, "centre", None) != HELD]
+        on = {n: p for n, p in now.items() if p.strength > 0 and getattr(p, "centre", None) != HELD}
         held = [p for p in now.values() if p.strength > 0 and getattr(p, "centre", None) == HELD]
-        if self.gravity is not None:
-            on.append(self.gravity)
-        return (*on, *self._held(held, on))
+        always = [] if self.gravity is None else [self.gravity]
+        return (*on.values(), *always, *self._held(held, [*always, *(p for n, p in on.items() if n in self.balanced)]))
 
     def moved_on(self, name: str, t: float) -> float:
         """Phase (rad) that the detuning of a lattice adds from the start until t: half of it, as V has twice the phase."""
@@ -104,10 +106,11 @@ class Stretch:
         """Whether a part that confines is on at a time inside."""
         return any(p.confines and p.strength > 0 for p in self.parts_at(t))
 
-    def gripped(self) -> frozenset[int]:
-        """Directions in which a part holds the atoms all the time without steering them."""
+    def gripped(self, leaving: Collection[str] = ()) -> frozenset[int]:
+        """Directions in which a part holds the atoms all the time without steering them, but for those `leaving`."""
         middle = 0.5 * (self.start + self.stop)
-        return gripped(self.parts_at(middle))
+        staying = replace(self, parts={n: p for n, p in self.parts.items() if n not in leaving})
+        return gripped(staying.parts_at(middle))
 
 
 def _has_a_clock(part: Part) -> bool:

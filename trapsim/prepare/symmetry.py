@@ -15,6 +15,7 @@ from trapsim.terms.part import ANYWHERE, About, Array, steered
 NOTHING = 1e-15
 #: m; a cloud this close to a part's own centre sits on it
 NEAR = 1e-12
+GOLDEN = (np.sqrt(5) - 1) / 2
 
 
 def round_directions(timeline: Timeline, *, standing: bool) -> list[frozenset[int]]:
@@ -36,7 +37,9 @@ def round_directions(timeline: Timeline, *, standing: bool) -> list[frozenset[in
     out = [still_round]
     before = origin
     for step, after in zip(timeline.steps, timeline.path, strict=True):
-        pushed = _pushed(step.stretch, tuple(before[:3]), everywhere if standing else step.stands)
+        held = everywhere if standing else step.stands
+        thrown = frozenset(j for j in held if step.kick[j] or abs(before[3 + j]) > NOTHING)
+        pushed = _pushed(step.stretch, tuple(before[:3]), held) | thrown
         if standing:
             away = np.abs(after - origin) > NOTHING
             pushed |= frozenset(np.nonzero(away[:3] | away[3:])[0])
@@ -80,6 +83,8 @@ def _even(stretch: Stretch, place: Array, j: int) -> bool:
         for part in stretch.parts_at(t):
             about = part.symmetry().even[j]
             if isinstance(about, About):
+                if abs(place[3 + j]) > NOTHING:
+                    return False
                 off = place[j] - about.x
                 if about.period:
                     off -= about.period * round(off / about.period)
@@ -93,7 +98,9 @@ def _even(stretch: Stretch, place: Array, j: int) -> bool:
 def _samples(stretch: Stretch) -> Sequence[float]:
     if stretch.steady:
         return (stretch.start,)
-    return tuple(np.linspace(stretch.start, stretch.stop, 7))
+    # no round number of periods meets all of these
+    share = np.arange(9) * GOLDEN % 1.0
+    return tuple(stretch.start + share * (stretch.stop - stretch.start))
 
 
 def _pushed(stretch: Stretch, place: Triple, held: frozenset[int]) -> frozenset[int]:

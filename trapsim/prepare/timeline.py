@@ -25,7 +25,7 @@ from trapsim.terms.part import Array, Part, steered
 from trapsim.terms.ramps import Course, Value
 
 #: kinds of stage in which a box or a lattice that is on holds the cloud; a pulse only passes over it
-STANDING = ("hold", "ramp")
+STANDING = ("hold", "ramp", "release")
 
 
 @dataclass(frozen=True)
@@ -101,6 +101,7 @@ class _Builder:
         self.q = HBAR / plan.atoms.mass
         self.gravity = plan.gravity.part(plan.atoms.mass) if plan.gravity is not None else None
         self.still = (0.0, 0.0, 0.0)
+        self.first_on = frozenset(n for n, p in self.parts.items() if p.strength > 0)
         self.travel: dict[str, float] = {}
         self.fallen: dict[str, Array] = {}
         at_rest = {n: replace(p, centre=(0.0, 0.0, 0.0)) if getattr(p, "centre", None) == HELD else p
@@ -130,7 +131,7 @@ class _Builder:
         now = {n: replace(p, travel=self.travel.get(n, 0.0)) if isinstance(p, Lattice) else p
                for n, p in (self.parts if parts is None else parts).items()}
         return Stretch(
-            start, stop, now, self.gravity, dict(courses), self.still,
+            start, stop, now, self.gravity, dict(courses), self.still, self.first_on,
             self.scattering, 4 * np.pi * self.q * self.plan.atoms.number,
         )  # fmt: skip
 
@@ -153,7 +154,8 @@ class _Builder:
             self._meet_cloud(courses, t0)
             running = {p: c for p, c in courses.items() if c.start <= t0 and t1 <= c.stop and c.before != c.after}
             stretch = self._stretch(t0, t1, running)
-            stands = stretch.gripped() if stage.kind in STANDING else frozenset()
+            leaving = stage.off if isinstance(stage, Release) else ()
+            stands = stretch.gripped(leaving) if stage.kind in STANDING else frozenset()
             steps.append(Step(stretch, index, t0 == start, t1 == stop, ORIGIN, stands, self._fall(stretch, stands)))
             self._follow(stretch, stands)
             for name, part in self.parts.items():
