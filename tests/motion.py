@@ -130,3 +130,17 @@ def play(setup: Setup, state: State) -> list[Tick]:
 def seen(cloud: Cloud, interval: Interval) -> Moments:
     """The lab quantities of a cloud under what acts in an interval."""
     return observe(cloud, interval)
+
+
+#: m, of the uniform direction of `flat`
+LENGTH = 20e-6
+
+
+def flat(a_units: float, *stages: str, **words: object) -> trapsim.Plan:
+    """Uniform along z over 20 um, round across; a_units = beta of the two-dimensional gas."""
+    own = Natural(beta=0.0)
+    beta_length = a_units * LENGTH / (4 * pi * NUMBER)  # beta_2D = 4 pi N a/L
+    return cloud(
+        *stages, frequency=own.hz(1, 1, 0), a=f"{beta_length!r} m", accuracy="fine",
+        numerics=f'extent = ["auto", "auto", "{LENGTH!r} m"]', **words,
+    )  # fmt: skip

@@ -10,8 +10,8 @@ from pathlib import Path
 from typing import NamedTuple
 
 import pytest
-from broken.table import COMMAND_LINES, FILES, GOOD, OPTIONS, SLIPS
 
+from broken.table import COMMAND_LINES, FILES, GOOD, OPTIONS, SLIPS
 from trapsim.app import main
 
 

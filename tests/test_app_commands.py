@@ -11,9 +11,9 @@ from pathlib import Path
 
 import numpy as np
 import pytest
-from broken.table import GOOD
 from scipy import constants
 
+from broken.table import GOOD
 from trapsim.app import main
 
 #: of Rb-87, kg: 86.909180531 u, AME2020 (value from memory)

@@ -16,9 +16,9 @@ from contextlib import contextmanager
 from pathlib import Path
 
 import pytest
+
 from broken.folders import agree
 from broken.table import GOOD
-
 from trapsim.app import _Bar, _Stopper, main
 
 #: some seconds of small steps in a trap, then a flight
@@ -45,7 +45,7 @@ duration = "20 ms"
 to = { "dipole.frequency" = ["50 Hz", "90 Hz", "130 Hz"] }
 [[sequence]]
 stage = "hold"
-duration = "1200 ms"
+duration = "600 ms"
 [[sequence]]
 stage = "release"
 duration = "10 ms"

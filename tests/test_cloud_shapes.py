@@ -5,11 +5,11 @@ from __future__ import annotations
 from math import pi, sqrt
 
 import numpy as np
-import proofs
 import pytest
 from scipy import optimize
 from scipy.constants import hbar
 
+import proofs
 from reference import tables, units
 from trapsim.cloud import shapes
 from trapsim.cloud.cloud import Cloud

@@ -6,10 +6,10 @@ from collections.abc import Callable
 from math import pi
 
 import numpy as np
-import proofs
 import pytest
 from scipy import constants
 
+import proofs
 import trapsim
 from trapsim.cloud.cloud import Cloud
 from trapsim.evolve.scaling import StandingLaw, measure_law

@@ -10,9 +10,9 @@ import sys
 from pathlib import Path
 
 import pytest
+
 from broken.folders import agree
 from broken.table import GOOD
-
 from trapsim.app import _Stopper, main
 from trapsim.corridor.folder import locked
 from trapsim.record import files

@@ -7,9 +7,9 @@ import os
 
 import numpy as np
 import pytest
-from broken.table import GOOD
 
 import trapsim
+from broken.table import GOOD
 from trapsim.corridor import folder as place
 from trapsim.corridor.bounds import memory_there, ordinary_numbers
 from trapsim.errors import FileTrouble, PlanError

@@ -11,8 +11,8 @@ import h5py
 import numpy as np
 import pytest
 import xarray
-from broken.table import GOOD
 
+from broken.table import GOOD
 from trapsim.app import main
 
 #: g / (2 pi f)^2 along z, um: the sag of a cloud in a trap of 90 Hz

@@ -4,12 +4,12 @@ from __future__ import annotations
 
 from math import pi, sqrt
 
-import motion
 import numpy as np
 import pytest
-from motion import RB, Natural
 
+import motion
 import trapsim
+from motion import RB, Natural
 from reference import flights, gaussian, scaling, units
 from trapsim.estimate.law import IDEAL, THOMAS_FERMI, ScalingLaw, scaling_law, thomas_fermi
 from trapsim.prepare.setup import prepare

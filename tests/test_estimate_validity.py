@@ -4,12 +4,12 @@ from __future__ import annotations
 
 from math import pi, sqrt
 
-import motion
 import numpy as np
 import pytest
-from motion import RB, Natural
 
+import motion
 import trapsim
+from motion import RB, Natural
 from reference import expansion, units
 from trapsim.estimate.law import scaling_law
 from trapsim.estimate.trust import trust

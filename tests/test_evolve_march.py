@@ -6,14 +6,15 @@ from collections.abc import Callable
 from dataclasses import replace
 from math import pi, sqrt
 
-import motion
 import numpy as np
 import pytest
-from motion import Natural
 from scipy.interpolate import CubicHermiteSpline
 
+import motion
 import trapsim
+from motion import Natural
 from reference import expansion
+from trapsim.evolve.march import march
 from trapsim.evolve.state import Books, State
 from trapsim.prepare.setup import Setup, prepare
 
@@ -91,8 +92,6 @@ def test_a_plan_prepared_anew_goes_on_as_well(walked: tuple[Setup, list[State], 
 
 def test_a_state_is_borrowed_until_the_next_step() -> None:
     setup = prepare(journey(accuracy="draft"))
-    from trapsim.evolve.march import march
-
     ticks = march(motion.begin(setup), setup.legs, pace=setup.pace, guards=setup.guards)
     first = next(ticks).state
     kept, lent = first.copy(), first.cloud.phi

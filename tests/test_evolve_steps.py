@@ -4,12 +4,11 @@ from __future__ import annotations
 
 from math import pi, sqrt
 
-import motion
 import numpy as np
 import pytest
-from motion import Natural
 
-from trapsim.cloud.cloud import Cloud
+import motion
+from motion import Natural
 from trapsim.evolve.march import _enter, stepper
 from trapsim.evolve.pace import Buffers, Flight, Stride, Trapped
 from trapsim.evolve.splitstep import SplitStep
@@ -190,8 +189,3 @@ def test_the_mean_field_turns_the_phase_by_its_coupling() -> None:
     _, dJ = step.law.integrals(0.0, t)
     parabola = state.law.i[2] * dJ * (step.space.axis(2).points[middle] ** 2) / (2 * setup.q)
     assert turned == pytest.approx(-(coupling * density * t + parabola), rel=1e-9)
-
-
-def test_the_test_cloud_is_a_cloud() -> None:
-    _, state, _ = at_the_door("flight", 0.8)
-    assert isinstance(state.cloud, Cloud) and state.law is not None

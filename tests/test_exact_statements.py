@@ -6,14 +6,13 @@ from collections.abc import Callable
 from dataclasses import replace
 from math import pi
 
-import motion
 import numpy as np
 import pytest
-from motion import NUMBER, RB, Natural
-from scipy import optimize
 
+import motion
 import trapsim
-from reference import classical, gaussian, units
+from motion import RB, Natural
+from reference import classical, gaussian
 from trapsim.evolve import march as marching
 from trapsim.evolve.scaling import LawStart
 from trapsim.evolve.state import State
@@ -228,22 +227,9 @@ def test_the_virial_theorem_rules_the_second_derivative_of_the_size(solved: Solv
 # ---- two dimensions ------------------------------------------------------------------------------------------------
 
 
-LENGTH = 20e-6
-
-
-def flat(a_units: float, *stages: str, **words: object) -> trapsim.Plan:
-    """Uniform along z over 20 um, round across; a_units = beta of the two-dimensional gas."""
-    own = Natural(beta=0.0)
-    beta_length = a_units * LENGTH / (4 * pi * NUMBER)  # beta_2D = 4 pi N a/L
-    return motion.cloud(
-        *stages, frequency=own.hz(1, 1, 0), a=f"{beta_length!r} m", accuracy="fine",
-        numerics=f'extent = ["auto", "auto", "{LENGTH!r} m"]', **words,
-    )  # fmt: skip
-
-
 @pytest.mark.parametrize("beta", [0.0, 10.0, 500.0])
 def test_a_gas_in_two_dimensions_expands_in_closed_form_for_any_interaction(solved: Solved, beta: float) -> None:
-    run = solved(flat(beta, motion.stage("release", 10e-3)))
+    run = solved(motion.flat(beta, motion.stage("release", 10e-3)))
     track = run.track
     assert run.summary.numerics.axes == ("radial", "radial", "uniform")
     square = (track["width"][:, :2] ** 2).sum(axis=1)
@@ -256,33 +242,6 @@ def test_a_gas_in_two_dimensions_expands_in_closed_form_for_any_interaction(solv
     # and the start itself: 2 x_rms^2 of the ideal gas is the oscillator length squared
     if beta == 0:
         assert square[0] == pytest.approx(Natural(0.0).unit.length ** 2, rel=1e-7)
-
-
-@pytest.mark.parametrize(("beta", "factor"), [(0.0, 1.3), (100.0, 1.05), (100.0, 0.6)])
-def test_a_gas_in_two_dimensions_breathes_at_twice_the_trap_frequency(beta: float, factor: float) -> None:
-    own = Natural(0.0)
-    start = 100 * factor
-    plan = flat(
-        beta, motion.stage("pulse", own.s(3 * pi), to=f'{{ "dipole.frequency" = {motion.hertz([start, start, 0.0])} }}')
-    )
-    track = trapsim.run(plan).track
-    kept = track.time > 0
-    t, square = track.time[kept], (track["width"][kept, :2] ** 2).sum(axis=1)
-
-    def model(t: np.ndarray, mean: float, swing: float, omega: float) -> np.ndarray:
-        return mean + swing * np.cos(omega * t)
-
-    guess = (square.mean(), square[0] - square.mean(), 2 * TWO_PI * start)
-    (_, swing, omega), _ = optimize.curve_fit(model, t, square, p0=guess)
-    residual = square - model(t, *_fit(model, t, square, guess))
-    # exact at any strength and amplitude: Pitaevskii and Rosch (1997)
-    assert omega / (TWO_PI * start) == pytest.approx(2.0, abs=2e-5)
-    # one frequency, undamped
-    assert np.abs(residual).max() < 1e-4 * abs(swing)
-
-
-def _fit(model: Callable[..., np.ndarray], t: np.ndarray, y: np.ndarray, guess: tuple[float, ...]) -> np.ndarray:
-    return optimize.curve_fit(model, t, y, p0=guess)[0]
 
 
 # ---- freedom of choice: time's arrow, frame law, frame ---------------------------------------------------------------
@@ -386,8 +345,3 @@ def test_atoms_too_fast_for_a_grid_in_the_lab_are_refused() -> None:
     )  # fmt: skip
     with pytest.raises(trapsim.PhysicsRefused, match=r"highest wave number along z(.|\n)*numerics.points along z"):
         trapsim.run(plan)
-
-
-def test_units_of_the_mass_are_those_of_the_plan() -> None:
-    """The mass the tests compare with is the one the plans were given (guards the guards)."""
-    assert prepare(breathing()).q == pytest.approx(units.hbar / RB, rel=1e-15)

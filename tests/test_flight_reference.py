@@ -5,12 +5,12 @@ from __future__ import annotations
 from collections.abc import Callable
 from math import pi
 
-import motion
 import numpy as np
 import pytest
-from motion import NUMBER, Natural
 
+import motion
 import trapsim
+from motion import NUMBER, Natural
 from reference import expansion, flights, gaussian, scaling, units
 from trapsim.prepare.setup import prepare
 

@@ -6,9 +6,9 @@ from collections.abc import Callable
 from math import pi
 
 import numpy as np
-import proofs
 import pytest
 
+import proofs
 import trapsim
 from reference import units
 from trapsim.cloud.cloud import Cloud

@@ -5,9 +5,9 @@ from __future__ import annotations
 from math import prod
 
 import numpy as np
-import proofs
 import pytest
 
+import proofs
 from reference import gaussian
 from trapsim.cloud.cloud import Cloud
 from trapsim.measure.flow import continuity_residual, current, divergence

@@ -6,10 +6,10 @@ from collections.abc import Callable
 from math import pi
 
 import numpy as np
-import proofs
 import pytest
 from scipy.constants import hbar
 
+import proofs
 from reference import gaussian
 from trapsim.cloud.cloud import Cloud
 from trapsim.measure.observables import Moments, moments, peak_density, profile

@@ -5,13 +5,13 @@ from __future__ import annotations
 from collections.abc import Callable
 from math import pi
 
-import motion
 import numpy as np
 import pytest
-from motion import Natural
 from scipy import optimize
 
+import motion
 import trapsim
+from motion import Natural
 from reference import flights, modes
 
 Solved = Callable[[trapsim.Plan], trapsim.Run]
@@ -111,3 +111,26 @@ def test_a_large_round_cloud_swings_at_the_two_hydrodynamic_frequencies(lam: flo
         best, _ = optimize.curve_fit(model, t, signal, p0=(signal.mean(), -signal.mean(), omega, 0.1, other))
         # Stringari, Phys. Rev. Lett. 77, 2360 (1996), formula from memory: the limit of a large cloud
         assert best[2] == pytest.approx(omega, rel=8e-3)
+
+
+@pytest.mark.parametrize(("beta", "factor"), [(0.0, 1.3), (100.0, 1.05), (100.0, 0.6)])
+def test_a_gas_in_two_dimensions_breathes_at_twice_the_trap_frequency(beta: float, factor: float) -> None:
+    own = Natural(0.0)
+    start = 100 * factor
+    plan = motion.flat(
+        beta, motion.stage("pulse", own.s(3 * pi), to=f'{{ "dipole.frequency" = {motion.hertz([start, start, 0.0])} }}')
+    )
+    track = trapsim.run(plan).track
+    kept = track.time > 0
+    t, square = track.time[kept], (track["width"][kept, :2] ** 2).sum(axis=1)
+
+    def model(t: Array, mean: float, swing: float, omega: float) -> Array:
+        return mean + swing * np.cos(omega * t)
+
+    guess = (square.mean(), square[0] - square.mean(), 4 * pi * start)
+    best, _ = optimize.curve_fit(model, t, square, p0=guess)
+    _, swing, omega = best
+    # exact at any strength and amplitude: Pitaevskii and Rosch (1997)
+    assert omega / (2 * pi * start) == pytest.approx(2.0, abs=2e-5)
+    # one frequency, undamped
+    assert np.abs(square - model(t, *best)).max() < 1e-4 * abs(swing)

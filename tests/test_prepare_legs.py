@@ -5,10 +5,10 @@ from __future__ import annotations
 from collections.abc import Callable
 from math import pi
 
-import motion
 import numpy as np
 import pytest
 
+import motion
 import trapsim
 from reference import units
 from trapsim.prepare.setup import prepare

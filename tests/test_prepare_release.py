@@ -5,12 +5,12 @@ from __future__ import annotations
 from collections.abc import Callable
 from math import pi, sqrt
 
-import motion
 import numpy as np
 import pytest
-from motion import RB
 
+import motion
 import trapsim
+from motion import RB
 from reference import classical, expansion, flights, gaussian, scaling, units
 from trapsim.estimate.law import scaling_law
 from trapsim.prepare.setup import prepare

@@ -5,10 +5,10 @@ from __future__ import annotations
 from collections.abc import Callable
 
 import numpy as np
-import proofs
 import pytest
 from scipy import special
 
+import proofs
 from trapsim.space.axes import KINDS, Axis, Radial, Wave
 
 

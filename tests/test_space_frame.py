@@ -3,9 +3,9 @@
 from __future__ import annotations
 
 import numpy as np
-import proofs
 import pytest
 
+import proofs
 from trapsim.cloud.cloud import Cloud, regauge
 from trapsim.measure.observables import profile
 from trapsim.space.axes import Radial, Wave

@@ -5,9 +5,9 @@ from __future__ import annotations
 from collections.abc import Callable
 
 import numpy as np
-import proofs
 import pytest
 
+import proofs
 from trapsim.space.axes import Radial, Wave
 from trapsim.space.space import Space
 

@@ -14,7 +14,6 @@ _WHERE = {
     "read_plan": "trapsim.plan.reader",
     "plan_from_text": "trapsim.plan.reader",
     "Plan": "trapsim.plan.plan",
-    "prepare": "trapsim.prepare.setup",
     "run": "trapsim.corridor.run",
     "open_run": "trapsim.corridor.run",
     "Run": "trapsim.record.summary",

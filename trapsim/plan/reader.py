@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import dataclasses
 import difflib
+import math
 import os
 import re
 import tomllib
@@ -180,7 +181,7 @@ def assemble(
     if numerics is not None:
         complaints += checks.check_numerics(numerics)
     if track is not None and not any(c.place.startswith("sequence") for c in complaints):
-        complaints += checks.check_track(track, sum(stage.duration for stage in sequence))
+        complaints += checks.check_track(track, math.fsum(stage.duration for stage in sequence))
         track = dataclasses.replace(track, at=tuple(sorted(set(track.at))))
     if not any(c.place.partition(".")[0] in ("trap", "gravity", "numerics") for c in complaints):
         complaints += checks.check_hold(trap, gravity, numerics)
