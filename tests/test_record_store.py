@@ -14,12 +14,12 @@ import sys
 from pathlib import Path
 
 import h5py
-import invented_run
 import numpy as np
 import pytest
 import xarray
 from scipy import constants
 
+import invented_run
 from trapsim.errors import FileTrouble
 from trapsim.record import files
 from trapsim.record.series import OBSERVABLES, VIEWS, ColumnSeries, Track, WaveFunction, track_csv

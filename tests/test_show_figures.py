@@ -10,7 +10,6 @@ import subprocess
 import sys
 from pathlib import Path
 
-import invented_run
 import numpy as np
 import pytest
 from matplotlib.backends.backend_agg import FigureCanvasAgg
@@ -20,6 +19,7 @@ from matplotlib.image import AxesImage
 from matplotlib.text import Text
 from scipy import constants
 
+import invented_run
 from trapsim.errors import FileTrouble
 from trapsim.record.series import ColumnSeries, Track
 from trapsim.record.summary import StageEnd

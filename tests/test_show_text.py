@@ -5,9 +5,9 @@ from __future__ import annotations
 import dataclasses
 import re
 
-import invented_run
 import pytest
 
+import invented_run
 from trapsim.record.summary import ErrorEstimate, LegSpace, StageEnd, Summary
 from trapsim.show.numbers import brief, figures, four, nice_length, percent, with_error
 from trapsim.show.text import summary_text
