@@ -124,7 +124,7 @@ def test_the_plan_crosses_what_it_should(whole):
     assert whole.summary.numerics.continuity is not None
 
 
-@pytest.mark.parametrize("every", [1, 4, 13])
+@pytest.mark.parametrize("every", [pytest.param(1, marks=pytest.mark.slow), 4, 13])
 def test_a_run_stopped_at_every_nth_tick_ends_undisturbed(whole, tmp_path, every):
     stops = 0
     while True:

@@ -87,6 +87,8 @@ def in_balance(run: trapsim.Run) -> None:
 
 
 every_axes = pytest.mark.parametrize("axes", ["auto", "full"])
+#: near collapse a full grid is large
+both_axes_slowly = pytest.mark.parametrize("axes", ["auto", pytest.param("full", marks=pytest.mark.slow)])
 
 
 @every_axes
@@ -109,7 +111,7 @@ def test_isotropic_published(solved: Solve, row: tables.Published) -> None:
     assert figures(run)["mu"] == pytest.approx(row.mu, abs=1.01 * 10.0**-row.digits)
 
 
-@every_axes
+@both_axes_slowly
 @pytest.mark.parametrize("row", tables.ATTRACTIVE, ids=lambda r: f"{r.na:g}")
 def test_isotropic_attractive(solved: Solve, row: tables.Attractive, axes: str) -> None:
     # Independent calculation: Chebyshev collocation and Newton's method.
