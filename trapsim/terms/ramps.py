@@ -40,7 +40,7 @@ class Course:
     Parameters
     ----------
     start, stop : float
-        s; the course is only asked inside.
+        s; only times inside are ever asked for.
     before, after : float or tuple
     shape : str
         A name of `SHAPES`.
