@@ -33,7 +33,7 @@ def files(folder: Path) -> set[str]:
     return {p.relative_to(folder).as_posix() for p in folder.rglob("*") if p.is_file()}
 
 
-FIGURES = {"figures/flight.png", "figures/columns.png", "figures/strip.png"}
+FIGURES = {f"figures/{name}.png" for name in ("flight", "columns", "strip", "energies", "flow")}
 
 
 def test_run_draws_figures_that_are_pictures(finished):

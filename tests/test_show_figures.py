@@ -8,6 +8,7 @@ import os
 import re
 import subprocess
 import sys
+from collections.abc import Mapping
 from pathlib import Path
 
 import numpy as np
@@ -22,7 +23,8 @@ from scipy import constants
 import invented_run
 from trapsim.errors import FileTrouble
 from trapsim.record.series import ColumnSeries, Track
-from trapsim.record.summary import StageEnd
+from trapsim.record.store import Contents
+from trapsim.record.summary import StageEnd, Summary
 from trapsim.show.curves import alike, apart, smooth
 from trapsim.show.density import columns_figure, strip_figure, window_of
 from trapsim.show.figures import figures_of, write_figures
@@ -334,16 +336,20 @@ def test_a_run_gets_the_figures_it_has_data_for(tmp_path: Path) -> None:
     summary, columns = invented_run.summary(kept), invented_run.columns(kept)
     rest = invented_run.summary(None)
     one = cut(kept, slice(0, 1))
-    assert list(figures_of(summary, kept, columns)) == ["flight", "columns", "strip"]
-    assert list(figures_of(rest, one, invented_run.columns(one, pictures=1))) == ["columns"]
-    assert list(figures_of(rest)) == []
-    assert "of the cloud at rest" in "".join(words(figures_of(rest, None, invented_run.columns(one))["columns"]))
+    def names(told: Summary, track: Track | None = None, seen: Mapping[str, ColumnSeries] | None = None) -> list[str]:
+        return list(figures_of(Contents("", {}, told, track, seen or {})))
+
+    assert names(summary, kept, columns) == ["flight", "columns", "strip", "energies"]
+    assert names(rest, one, invented_run.columns(one, pictures=1)) == ["columns"]
+    assert names(rest) == []
+    at_rest = figures_of(Contents("", {}, rest, None, invented_run.columns(one)))["columns"]
+    assert "of the cloud at rest" in "".join(words(at_rest))
     assert {"x  1.705 µm"} <= set(words(flight_figure(rest, one)))  # sqrt(hbar/2mw) for 20 Hz
-    paths = write_figures(tmp_path, {"flight": flight_figure(rest, one)})
+    paths = write_figures(tmp_path, {"flight": png(flight_figure(rest, one))})
     assert [str(path.relative_to(tmp_path)) for path in paths] == ["figures/flight.png"] and paths[0].stat().st_size
     (tmp_path / "taken").write_text("")
     with pytest.raises(FileTrouble):
-        write_figures(tmp_path / "taken", {"flight": Figure()})
+        write_figures(tmp_path / "taken", {"flight": b""})
 
 
 def test_no_figure_loads_pyplot() -> None:

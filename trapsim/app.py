@@ -182,9 +182,12 @@ def _present(run: Run, options: argparse.Namespace) -> int:
         print(summary_text(run.summary), end="")
     where = [str(run.folder)]
     if not options.no_figures:
-        from trapsim.show.figures import figures_of, write_figures
+        from trapsim.record.store import read_run
+        from trapsim.show.figures import figures_of, png, write_figures
 
-        where += [str(p) for p in write_figures(run.folder, figures_of(run.summary, run.track, run.columns))]
+        kept = read_run(run.folder)
+        figures = {name: png(figure) for name, figure in figures_of(kept).items()}
+        where += [str(path) for path in write_figures(run.folder, figures)]
     if not options.quiet:
         print("\nResults are in\n  " + "\n  ".join(where), file=sys.stderr if options.json else sys.stdout)
     return 0

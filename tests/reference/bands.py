@@ -44,21 +44,20 @@ def landau_zener(s: float, alpha: float) -> float:
     return exp(-(pi**2) * s**2 / (32 * alpha))
 
 
-def driven(s: float, alpha: float, tau: float, p: float = 0.0, *, amplitudes: Array | None = None) -> Array:
-    """Amplitudes p + 2 n in the accelerated frame after a force alpha (E_R per spacing) for tau (hbar/E_R).
+def driven(s: float, alpha: float, tau: float, p: float = 0.0, *, waves: int = 8) -> Array:
+    """Amplitudes of p + 2 n in the accelerated frame after a force alpha (E_R per spacing) for tau (hbar/E_R).
 
-    The quasi-momentum grows as p + alpha tau/pi; starts in the lowest Bloch state unless told otherwise. DOP853.
+    The quasi-momentum grows as p + alpha tau/pi; starts in the lowest Bloch state. `waves` are kept on either side. DOP853.
     """
-    c0 = bloch(s, p)[1] if amplitudes is None else amplitudes
-    still = matrix(s, 0.0, kept=len(c0) // 2)
-    n = np.arange(len(c0)) - len(c0) // 2
-    coupling = still - np.diag((2 * n) ** 2)
+    coupling = matrix(s, kept=waves) - np.diag((2 * np.arange(-waves, waves + 1)) ** 2)
+    n = np.arange(-waves, waves + 1)
 
     def slope(t: float, c: Array) -> Array:
         return -1j * ((p + alpha * t / pi + 2 * n) ** 2 * c + coupling @ c)
 
-    solution = integrate.solve_ivp(slope, (0.0, tau), c0.astype(complex), method="DOP853", rtol=1e-10, atol=1e-12)
-    return solution.y[:, -1]
+    first = bloch(s, p, kept=waves)[1].astype(complex)
+    solution = integrate.solve_ivp(slope, (0.0, tau), first, method="DOP853", rtol=1e-9, atol=1e-11)
+    return np.pad(solution.y[:, -1], KEPT - waves)
 
 
 def lowest_share(amplitudes: Array, s: float, p: float) -> float:

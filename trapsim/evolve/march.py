@@ -33,6 +33,8 @@ FOLLOW = 1e-3
 FULL, FULL_TAIL, CHIRPED = 0.5, 1e-4, 0.1
 #: in flight the frame grows so that less than this share of what the guards allow comes near the edge
 HELD_BACK = 0.1
+#: share of an axis' highest wave number to which the phase at the cloud's edge may wind before the frame is settled again
+WOUND = 0.8
 #: by how much an axis is stretched to see what is not steered change
 STRETCH = 1e-4
 #: transform pairs a full profile costs: half a pair, and one derivative per direction
@@ -261,7 +263,7 @@ def _play(state: State, leg: Leg, *, pace: Pace, guards: Guards) -> Generator[Ti
             edge = np.where(guards.watched, edge_population(cloud.space, marginals), 0.0)
             books = replace(books, edge=np.maximum(books.edge, edge))
             crowded = not leg.trapped and edge.max() > max(HELD_BACK * guards.edge, 2 * law_start.edge)
-            moved = _has_moved(cloud, marginals, law_start, leg.moving)
+            moved = _has_moved(cloud, marginals, law_start, leg)
             _stop_at(cloud, marginals, edge, leg, guards)
             if now == leg.stop or (shifting and (not leg.trapped or books.steps % LOOK == 0)):
                 books = _watch_spectrum(cloud, books, leg, guards)
@@ -302,14 +304,21 @@ def _watch_spectrum(cloud: Cloud, books: Books, leg: Leg, guards: Guards) -> Boo
     return replace(books, spectrum=np.maximum(books.spectrum, share))
 
 
-def _has_moved(cloud: Cloud, marginals: list[Array], law: LawStart, moving: Sequence[bool]) -> bool:
+def _has_moved(cloud: Cloud, marginals: list[Array], law: LawStart, leg: Leg) -> bool:
+    """Whether a width in the frame has changed so much, or in flight so fast, that the frame no longer suits the cloud."""
     for j in range(3):
         axis = cloud.space.axis(j)
-        if not axis.uniform and moving[j]:
+        if not axis.uniform and leg.moving[j]:
             weighted = marginals[cloud.space.dim(j)] * axis.weights
             mean = weighted @ axis.x1(j)
             ratio = np.sqrt((weighted @ axis.x2(j) - mean**2) / law.var[j])
             if not 1 / (1 + MOVED) < ratio < 1 + MOVED:
                 return True
+            if leg.trapped:
+                continue
+            # a cloud that grows at another rate than its frame winds up its phase, most of all at its edge
+            rate = 2 * abs(np.log(ratio)) / (cloud.time - law.time)
+            wound = rate * cloud.frame.b[j] ** 2 / cloud.q * reach(axis.points, weighted, FULL_TAIL)
+            if wound > WOUND * axis.k_max:
+                return True
     return False
-

@@ -25,7 +25,7 @@ from trapsim.space.frame import Frame
 from trapsim.terms.part import ALL, Array, Part, steered
 
 #: the share of the box that those may fill
-INSIDE = 1.0
+INSIDE = 0.9
 
 
 class Interval(Protocol):

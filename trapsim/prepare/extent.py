@@ -6,7 +6,7 @@ from collections.abc import Sequence
 from dataclasses import dataclass, field, replace
 
 import numpy as np
-from scipy import fft, optimize
+from scipy import fft, optimize, special
 
 from trapsim.cloud.shapes import chemical_potential_guess
 from trapsim.constants import HBAR
@@ -15,7 +15,7 @@ from trapsim.evolve.guards import OUTER
 from trapsim.quantities import human
 from trapsim.space.axes import Array, Axis, Mirror, Radial, Wave
 from trapsim.space.space import Space
-from trapsim.terms.box import Box
+from trapsim.terms.box import EDGE, Box
 
 
 @dataclass(frozen=True)
@@ -54,11 +54,13 @@ class Accuracy:
 
 #: room around a box, in half lengths of it
 HEAD_START = 2.0
+#: finest length of a cloud in a box, and the widest spacing, in lengths over which it ends at the foot of the wall
+FOOT, COARSEST_FOOT = 0.95, 1.35
 
 ACCURACY = {
     "draft": Accuracy(2.2, 3e-4, 2.4, 4.0, 3.5, 0.5, 1e-6, 4e-3, 4e-3, 1e-2),
     "normal": Accuracy(1.4, 1e-4, 2.4, 5.5, 5.0, 1.5, 1e-7, 1e-4, 1e-4, 1e-3),
-    "fine": Accuracy(1.0, 1e-5, 0.8, 7.0, 6.0, 4.0, 1e-9, 2e-6, 1e-5, 1e-4),
+    "fine": Accuracy(1.0, 1e-5, 0.8, 7.0, 6.0, 4.0, 1e-9, 2e-6, 5e-5, 1e-4),
 }
 
 
@@ -163,25 +165,35 @@ def _tail_end(radius: float, tail: float) -> float:
 def box_lengths(lengths: Lengths, box: Box, q: float, accuracy: Accuracy, free: Array) -> Lengths:
     """The lengths of a cloud that a box holds along the directions `free` of other traps.
 
-    Into the wall it falls off over sqrt(q hbar/2 (height - mu)).
+    From where the wall is as high as the chemical potential the cloud ends within a foot of length (q/2 F)^(1/3), hbar F
+    the mean slope of the wall over two such lengths; into the full wall it falls off over sqrt(q hbar/2 (height - mu)).
     """
-    mu = max(lengths.mu, q * np.sum((np.pi / np.asarray(box.size)) ** 2) / 2)
-    height = box.strength * box.height / HBAR
+    height, soft = box.strength * box.height / HBAR, box.edge / EDGE
+    mu, turn = lengths.mu, -3.0
+    for _ in range(20):
+        # a cloud that does not climb far up soft walls has less room than between their half heights
+        within = np.maximum(np.asarray(box.size) + 2 * soft * turn, np.asarray(box.size) / 4)[free]
+        crowded = max(lengths.mu, 0.0) * np.prod(np.asarray(box.size)[free] / within)
+        mu = 0.5 * (mu + crowded + q * np.sum((np.pi / within) ** 2) / 2)
+        turn = float(special.ndtri(np.clip(mu / height, 1e-6, 0.9)))
     if height < 1.2 * mu:
         raise PlanError.at(
             "trap", f"walls of {human(box.height, 'energy')}",
             f"the cloud needs {human(HBAR * mu, 'energy')} and would spill over them",
             "make the walls higher, the box larger, or take fewer atoms",
         )  # fmt: skip
-    # at the foot of the wall, where it is as high as mu, the cloud ends within (q hbar/2 slope)^(1/3)
-    foot = (q * box.edge / (0.6 * height)) ** (1 / 3)
+    foot = soft
+    for _ in range(20):
+        slope = (height * special.ndtr(turn + 2 * foot / soft) - mu) / (2 * foot)
+        foot = 0.5 * (foot + (q / (2 * slope)) ** (1 / 3))
+    healing = np.sqrt(q / (2 * mu))
     decay = np.sqrt(q / (2 * (height - mu)))
     half, finest = lengths.half.copy(), lengths.finest.copy()
     for j in np.nonzero(free)[0]:
         wall = box.size[j] / 2
         # when it is let go, its rim runs off at twice the speed of sound before the frame has gathered speed
         half[j] = max(wall + 1.2 * box.edge + accuracy.tail * decay, HEAD_START * wall)
-        finest[j] = min(min(1.1, 1.5 / accuracy.spacing) * foot, box.size[j] / 8)
+        finest[j] = min(min(FOOT, COARSEST_FOOT / accuracy.spacing) * min(foot, healing), box.size[j] / 8)
     return replace(lengths, half=half, finest=finest, mu=mu)
 
 

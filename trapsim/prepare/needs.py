@@ -24,6 +24,8 @@ from trapsim.terms.part import Part, steered
 
 #: lattice orders kept beyond the highest that is populated, in pairs of recoils
 BEYOND = 1.5
+#: more room along a lattice whose orders fly apart: they run off before the frame has gathered speed
+WINGS = 1.25
 #: m, the step of differences of forces
 NEARBY = 1e-8
 #: grid points per detail of a user's own potential
@@ -47,7 +49,7 @@ def measure_up(
     if box is not None:
         lengths = box_lengths(lengths, box, q, accuracy, free)
     elif any(isinstance(p, Beam) for p in parts):
-        lengths = _within_rim(lengths, parts, timeline.origin)
+        lengths = _within_rim(lengths, parts, timeline.origin, omega)
     periodic = free if box is None else np.zeros(3, dtype=bool)
     return replace(lengths, half=np.where(extent > 0, extent / 2, lengths.half), periodic=periodic)
 
@@ -77,13 +79,13 @@ def _hessian(timeline: Timeline) -> Array:
     return np.array(columns) / (2 * NEARBY)
 
 
-def _within_rim(lengths: Lengths, parts: Sequence[Part], origin: Sequence[float]) -> Lengths:
+def _within_rim(lengths: Lengths, parts: Sequence[Part], origin: Sequence[float], omega: Array) -> Lengths:
     """Room that ends before the potential turns down again beyond its rim, as it does in a beam under gravity.
 
     Raises
     ------
     PlanError
-        When the rim is not clearly above the cloud's chemical potential.
+        When the rim is not clearly above what the zero point of the other directions leaves of the chemical potential.
     """
     half = lengths.half.copy()
     here = np.asarray(origin, dtype=float)
@@ -91,6 +93,7 @@ def _within_rim(lengths: Lengths, parts: Sequence[Part], origin: Sequence[float]
     for j in range(3):
         if not np.isfinite(half[j]):
             continue
+        needed = max(lengths.mu - (omega.sum() - omega[j]) / 2, omega[j] / 2)
         for side in (-1, 1):
             # a trap that is not a parabola lets the cloud reach further out than one
             out = np.linspace(0.0, 2 * half[j], SCAN)
@@ -99,13 +102,13 @@ def _within_rim(lengths: Lengths, parts: Sequence[Part], origin: Sequence[float]
             energy = (sum(p.energy(*place) for p in parts) - lowest) / HBAR
             top = int(np.argmax(energy))
             rim = top if top < SCAN - 1 and energy[-1] < energy[top] else SCAN - 1
-            if energy[rim] < 1.3 * lengths.mu:
+            if energy[rim] < 1.3 * needed:
                 raise PlanError.at(
                     "trap", f"a rim {human(HBAR * energy[rim], 'energy')} above its lowest point along {'xyz'[j]}",
-                    f"the cloud needs {human(HBAR * lengths.mu, 'energy')} and would leak over it",
+                    f"the cloud needs {human(HBAR * needed, 'energy')} and would leak over it",
                     "make the trap deeper, take fewer atoms, or levitate them with a gradient",
                 )  # fmt: skip
-            enough = np.nonzero(energy > 1.3 * lengths.mu)[0][0]
+            enough = np.nonzero(energy > 1.3 * needed)[0][0]
             half[j] = max(lengths.half[j], 1.3 * out[enough]) if rim == SCAN - 1 else min(half[j], out[rim])
     return replace(lengths, half=half)
 
@@ -126,6 +129,7 @@ def hold_orders(
         When two lattices of different spacing hold the cloud along one direction.
     """
     spacing, period, per = lengths.spacing.copy(), lengths.period.copy(), lengths.per_period.copy()
+    half = lengths.half.copy()
     growth = scales(timeline, omega, q, scattering_number(coupling, q, lengths.half, omega), moving)
     still = np.ones(3)
     acting = [(timeline.initial, timeline.initial.gripped(), still, still)]
@@ -152,7 +156,10 @@ def hold_orders(
             else:
                 highest = 2 * lattice.k * (_highest_order(lattice, stretch) + BEYOND)
                 spacing[j] = min(spacing[j], np.pi / (grown * highest))
-    return replace(lengths, spacing=spacing, period=period, per_period=per)
+    for j in np.nonzero(np.isfinite(spacing) & ~lengths.periodic)[0]:
+        if any(flags[j] for flags in moving) and np.any(omega):
+            half[j] *= WINGS
+    return replace(lengths, half=half, spacing=spacing, period=period, per_period=per)
 
 
 def scattering_number(coupling: float, q: float, half: Array, omega: Array) -> float:

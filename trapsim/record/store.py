@@ -22,6 +22,15 @@ from trapsim.measure.picture import Picture
 from trapsim.record.album import Seen
 from trapsim.record.files import read_checkpoint, reading, write_atomic, write_checkpoint
 from trapsim.record.series import DIRECTIONS, AxisRecord, ColumnSeries, Series, Track, WaveFunction, track_csv
+from trapsim.record.shelves import (
+    COUNTED,
+    put_flow,
+    put_momentum,
+    put_picture,
+    read_flow,
+    read_momentum,
+    read_picture,
+)
 from trapsim.record.summary import Summary
 
 __all__ = [
@@ -121,16 +130,22 @@ class _Group:
 
     group: h5py.Group
 
+    @property
+    def attrs(self) -> h5py.AttributeManager:
+        return self.group.attrs
+
     def scale(self, name: str, values: Any, units: str, long_name: str) -> None:
         """A dimension: its own values, unit and words."""
         self.put(name, values, (), units, long_name).make_scale(name)
 
-    def put(self, name: str, values: Any, dims: Sequence[str], units: str, long_name: str) -> h5py.Dataset:
+    def put(
+        self, name: str, values: Any, dims: Sequence[str], units: str, long_name: str, *, packed: bool = False
+    ) -> h5py.Dataset:
         if isinstance(values, str | list):
             made = self.group.create_dataset(name, data=np.array(values, dtype=object), dtype=_TEXT)
         else:
-            pictures = np.ndim(values) == 3 and np.asarray(values).dtype == np.float32 and len(values) > 0
-            packing = {"chunks": (1, *values.shape[1:]), "compression": "gzip", "shuffle": True} if pictures else {}
+            chunk = (1,) * (np.ndim(values) - 2) + np.shape(values)[-2:]
+            packing = {"chunks": chunk, "compression": "gzip", "shuffle": True} if packed and np.size(values) else {}
             made = self.group.create_dataset(name, data=values, **packing)
         made.attrs["units"], made.attrs["long_name"] = units, long_name
         for position, dim in enumerate(dims):
@@ -156,6 +171,12 @@ def _fill(file: h5py.File, contents: Contents) -> None:
         _put_columns(_Group(file.create_group(f"columns/{view}")), series)
     if contents.final is not None:
         _put_wave(_Group(file.create_group("final")), contents.final)
+    for name, picture in contents.pictures.items():
+        put_picture(_Group(_ordered(file, "pictures").create_group(name)), picture)
+    for seen in contents.momenta:
+        put_momentum(_Group(_ordered(file, "momentum").create_group(f"{seen.stage}_{seen.part}")), seen)
+    for view, plane in contents.flow.items():
+        put_flow(_Group(_ordered(file, "flow").create_group(view)), plane)
     notices = _Group(file.create_group("notices"))
     notices.scale("notice", np.arange(len(summary.warnings)), "1", "number of the notice")
     notices.put("code", [one.code for one in summary.warnings], ("notice",), "text", "the notice in one word")
@@ -183,25 +204,30 @@ def _put_track(group: _Group, track: Track) -> None:
 
 def _put_columns(group: _Group, series: ColumnSeries) -> None:
     _, rows, cols = series.values.shape
-    group.group.attrs.update(line_of_sight=series.view, right=series.right, up=series.up)
+    group.attrs.update(line_of_sight=series.view, right=series.right, up=series.up)
     group.scale("time", series.times, "s", "time since the start of the sequence")
     group.scale("row", np.arange(rows), "1", "number of the row, upwards")
     group.scale("column", np.arange(cols), "1", "number of the column, to the right")
-    place = "from the origin of the ground state"
-    group.put(f"{series.up}_lab", series.rows, ("time", "row"), "m", f"lab coordinate {series.up}, upwards, {place}")
-    group.put(f"{series.right}_lab", series.cols, ("time", "column"), "m", f"lab coordinate {series.right}, {place}")
+    group.put(f"{series.up}_lab", series.rows, ("time", "row"), "m", f"lab coordinate {series.up}, upwards, {COUNTED}")
+    group.put(f"{series.right}_lab", series.cols, ("time", "column"), "m", f"lab coordinate {series.right}, {COUNTED}")
     made = group.put(
         "column_density",
         np.asarray(series.values, dtype=np.float32),
         ("time", "row", "column"),
         "m^-2",
         f"atoms per area, seen along {series.view}",
+        packed=True,
     )
     made.attrs["coordinates"] = f"{series.up}_lab {series.right}_lab"
 
 
+def _ordered(file: h5py.File, name: str) -> h5py.Group:
+    """A group that keeps the order in which it was filled."""
+    return file[name] if name in file else file.create_group(name, track_order=True)
+
+
 def _put_wave(group: _Group, wave: WaveFunction) -> None:
-    group.group.attrs.update(time=wave.time, convention=_PSI)
+    group.attrs.update(time=wave.time, convention=_PSI)
     dims = [f"xi_{axis.name}" for axis in wave.axes]
     for dim, axis in zip(dims, wave.axes, strict=True):
         group.scale(dim, axis.points, "m", f"grid coordinate along {' and '.join(axis.name)}, in the moving frame")
@@ -227,6 +253,9 @@ def _contents(file: h5py.File, path: str) -> Contents:
         columns={view: _columns(group) for view, group in file.get("columns", {}).items()},
         final=_wave(file["final"]) if "final" in file else None,
         ground=_wave(file["ground"]) if "psi_real" in file["ground"] else None,
+        pictures={name: read_picture(name, group) for name, group in file.get("pictures", {}).items()},
+        momenta=tuple(read_momentum(group) for group in file.get("momentum", {}).values()),
+        flow={view: read_flow(group) for view, group in file.get("flow", {}).items()},
     )
 
 

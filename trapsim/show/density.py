@@ -11,7 +11,7 @@ from matplotlib.figure import Figure
 
 from trapsim.record.series import ColumnSeries
 from trapsim.record.summary import Summary
-from trapsim.show.look import DENSITY, INK, QUIET, RULE, SMALL, TYPE, WIDTH, dress, new_figure
+from trapsim.show.look import DENSITY, INK, QUIET, RULE, SMALL, TYPE, WIDTH, box, dress, new_figure
 from trapsim.show.numbers import brief, drawn, nice_length
 
 Array = np.ndarray
@@ -52,18 +52,18 @@ def window_of(series: ColumnSeries, indices: Sequence[int]) -> list[Window]:
     """
     boxes = []
     for p in indices:
-        right = _reach(series.cols[p], series.values[p].sum(axis=0))
-        up = _reach(series.rows[p], series.values[p].sum(axis=1))
+        right = reach(series.cols[p], series.values[p].sum(axis=0))
+        up = reach(series.rows[p], series.values[p].sum(axis=1))
         boxes.append((*right, *up))
-    half_right, half_up = max(box[1] for box in boxes), max(box[3] for box in boxes)
+    half_right, half_up = max(one[1] for one in boxes), max(one[3] for one in boxes)
     long, short = max(half_right, half_up), min(half_right, half_up)
     enlarged = max((n for n in ENLARGE if n <= long / short), default=1) if long > LONGEST * short else 1
     up_is_short = half_up <= half_right
     sides = (long, long / enlarged) if up_is_short else (long / enlarged, long)
-    return [Window(box[0], box[2], *sides, enlarged, up_is_short) for box in boxes]
+    return [Window(one[0], one[2], *sides, enlarged, up_is_short) for one in boxes]
 
 
-def _reach(places: Array, profile: Array) -> tuple[float, float]:
+def reach(places: Array, profile: Array) -> tuple[float, float]:
     """Middle and half-width, in um, of what can be seen in a profile."""
     places = places * 1e6
     bright = np.flatnonzero(profile > FAINTEST * profile.max()) if profile.max() > 0 else np.arange(len(places))
@@ -126,10 +126,10 @@ def _peak(image: Array) -> float:
 def columns_figure(summary: Summary, columns: Mapping[str, ColumnSeries], *, index: int = -1) -> Figure:
     """The cloud seen along x, y and z at one time, each with its side profiles, density scale and scale bar."""
     views = [view for view in "xyz" if view in columns and len(columns[view])]
-    height = 1.1 + CELL * -(-(len(views) + 1) // 2)
+    height = 0.75 + CELL * -(-(len(views) + 1) // 2)
     moment = float(columns[views[0]].times[index]) * 1e3
     figure = new_figure(height, summary.title or "Column densities", f"column density {_when(summary, moment)}")
-    corners = [(0.5 * WIDTH * (n % 2), height - 1.05 - CELL * (n // 2)) for n in range(len(views) + 1)]
+    corners = [(0.5 * WIDTH * (n % 2), height - 0.7 - CELL * (n // 2)) for n in range(len(views) + 1)]
     for view, corner in zip(views, corners, strict=False):
         _draw_view(figure, corner, columns[view], index)
     _write_facts(figure, corners[-1], summary, columns, index=index)
@@ -149,15 +149,15 @@ def _draw_view(figure: Figure, corner: tuple[float, float], series: ColumnSeries
     """One picture with all that belongs to it; `corner` is its upper left one, in inches."""
     left, top = corner[0] + 0.85, corner[1] - 0.3 - EDGE
     window = window_of(series, [index])[0]
-    ax = _box(figure, left, top - SIDE, SIDE, SIDE)
+    ax = box(figure, left, top - SIDE, SIDE, SIDE)
     draw_column(ax, series, index, window)
     dress(ax, ticks=4, rules=False)
     for side in ax.spines.values():
         side.set_visible(True)
     ax.set_xlabel(f"{series.right} (µm) →", size=TYPE, color=INK)
     ax.set_ylabel(f"{series.up} (µm) →", size=TYPE, color=INK)
-    above = _box(figure, left, top + 0.04, SIDE, EDGE)
-    beside = _box(figure, left + SIDE + 0.04, top - SIDE, EDGE, SIDE)
+    above = box(figure, left, top + 0.04, SIDE, EDGE)
+    beside = box(figure, left + SIDE + 0.04, top - SIDE, EDGE, SIDE)
     above.set_xlim(ax.get_xlim())
     beside.set_ylim(ax.get_ylim())
     _draw_profiles(above, beside, series, index)
@@ -165,13 +165,7 @@ def _draw_view(figure: Figure, corner: tuple[float, float], series: ColumnSeries
     if window.enlarged > 1:
         note += f"; {series.up if window.up_is_short else series.right} drawn {window.enlarged} times larger"
     above.set_title(note, loc="left", size=TYPE, weight="bold", color=INK)
-    _draw_density_scale(_box(figure, left, top - SIDE - 0.7, SIDE, 0.12), _peak(series.values[index] * 1e-12))
-
-
-def _box(figure: Figure, left: float, bottom: float, width: float, height: float) -> Axes:
-    """Axes placed in inches from the lower left corner of the page."""
-    wide, tall = figure.get_size_inches()
-    return figure.add_axes((left / wide, bottom / tall, width / wide, height / tall))
+    _draw_density_scale(box(figure, left, top - SIDE - 0.7, SIDE, 0.12), _peak(series.values[index] * 1e-12))
 
 
 def _draw_profiles(above: Axes, beside: Axes, series: ColumnSeries, index: int) -> None:
@@ -207,7 +201,7 @@ def _write_facts(
     figure: Figure, corner: tuple[float, float], summary: Summary, columns: Mapping[str, ColumnSeries], *, index: int
 ) -> None:
     """What the pictures do not say: atoms, sizes, how to read them."""
-    ax = _box(figure, corner[0] + 0.85, corner[1] - CELL + 0.3, 0.5 * WIDTH - 1.1, CELL - 0.6)
+    ax = box(figure, corner[0] + 0.85, corner[1] - CELL + 0.3, 0.5 * WIDTH - 1.1, CELL - 0.6)
     ax.axis("off")
     lines = []
     end = summary.end
@@ -257,13 +251,14 @@ def strip_figure(
     wanted = np.linspace(kept[0], kept[-1], count) if times is None else np.asarray(times)
     indices = list(dict.fromkeys(int(np.argmin(np.abs(kept - one))) for one in wanted))
     side = (WIDTH - 0.75 - 0.1 * len(indices)) / max(len(indices), 3)
-    height = 1.3 + (side + 0.32) * len(views)
-    subtitle = "the cloud at a few times after the start, one scale in each row"
+    height = 1.1 + (side + 0.32) * len(views)
+    which = "a few times after the start" if times is None else "the times asked for, after the start"
+    subtitle = f"the cloud at {which}, one scale in each row"
     figure = new_figure(height, summary.title or "Column densities", subtitle)
     for row, view in enumerate(views):
         series = columns[view]
         for column, (index, window) in enumerate(zip(indices, window_of(series, indices), strict=True)):
-            corner = (0.6 + column * (side + 0.1), height - 1.25 - row * (side + 0.32) - side)
+            corner = (0.6 + column * (side + 0.1), height - 1.0 - row * (side + 0.32) - side)
             ax = figure.add_axes((corner[0] / WIDTH, corner[1] / height, side / WIDTH, side / height))
             draw_column(ax, series, index, window)
             ax.set(xticks=[], yticks=[])

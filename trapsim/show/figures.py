@@ -1,49 +1,93 @@
-"""The figures of a run, by name: what `trapsim run` and `trapsim show` put into the result folder."""
+"""The figures of a run, by name: what `trapsim run` and `trapsim show` put into the result folder and on the page."""
 
 from __future__ import annotations
 
 from collections.abc import Mapping
 from pathlib import Path
 
+import numpy as np
 from matplotlib.figure import Figure
 
 from trapsim.record.files import write_atomic
-from trapsim.record.series import ColumnSeries, Track
-from trapsim.record.summary import Summary
+from trapsim.record.store import Contents
+from trapsim.show.cameras import camera_figure, draw_picture
+from trapsim.show.currents import draw_flow, flow_figure
 from trapsim.show.density import columns_figure, draw_column, draw_scale_bar, strip_figure, window_of
+from trapsim.show.energies import draw_energies, draw_ratios, energies_figure
 from trapsim.show.flight import draw_centre, draw_rates, draw_stages, draw_widths, flight_figure
 from trapsim.show.look import png
+from trapsim.show.orders import draw_momentum, draw_orders, momentum_figure, orders_figure
 
 __all__ = [
-    "columns_figure", "draw_centre", "draw_column", "draw_rates", "draw_scale_bar", "draw_stages", "draw_widths",
-    "figures_of", "flight_figure", "png", "strip_figure", "window_of", "write_figures",
+    "columns_figure", "camera_figure", "draw_centre", "draw_column", "draw_energies", "draw_flow", "draw_momentum",
+    "draw_orders", "draw_picture", "draw_rates", "draw_ratios", "draw_scale_bar", "draw_stages", "draw_widths",
+    "energies_figure", "figures_of", "flight_figure", "flow_figure", "momentum_figure", "orders_figure", "png",
+    "strip_figure", "times_asked_for", "window_of", "write_figures",
 ]  # fmt: skip
+#: The strip has so many pictures in a row.
+STRIP = 6
 
 
-def figures_of(
-    summary: Summary, track: Track | None = None, columns: Mapping[str, ColumnSeries] | None = None
-) -> dict[str, Figure]:
+def figures_of(kept: Contents) -> dict[str, Figure]:
     """All figures that a run has the data for.
 
     Returns
     -------
     dict of str to Figure
-        "flight" when there is a track of at least two samples, "columns" when column densities were kept, and
-        "strip" when they were kept at three times or more.
+        In the order in which one would look at them: "flight" and "energies" when there is a track of at least two
+        samples, "pictures_<camera>" of each camera, "columns" when column densities were kept, "strip" when they were
+        kept at three times or more, "momentum" and "orders" where there was a lattice to look along, "flow" where the
+        velocity at the end was kept.
     """
+    summary, track = kept.summary, kept.track
     made: dict[str, Figure] = {}
     if track is not None and len(track) > 1:
         made["flight"] = flight_figure(summary, track)
-    kept = {view: series for view, series in (columns or {}).items() if len(series)}
-    if kept:
-        made["columns"] = columns_figure(summary, kept)
-        if min(len(series) for series in kept.values()) >= 3:
-            made["strip"] = strip_figure(summary, kept)
+    for camera in dict.fromkeys(one.camera for one in kept.pictures.values()):
+        made[f"pictures_{camera}"] = camera_figure(summary, [p for p in kept.pictures.values() if p.camera == camera])
+    if kept.momenta:
+        made["momentum"] = momentum_figure(summary, kept.momenta, mass=_mass(kept))
+        made["orders"] = orders_figure(summary, kept.momenta)
+    columns = {view: series for view, series in kept.columns.items() if len(series)}
+    if columns:
+        made["columns"] = columns_figure(summary, columns)
+        if min(len(series) for series in columns.values()) >= 3:
+            made["strip"] = strip_figure(summary, columns, times=_strip_times(kept))
+    if track is not None and len(track) > 1:
+        made["energies"] = energies_figure(summary, track)
+    if kept.flow:
+        made["flow"] = flow_figure(summary, kept.flow, columns)
     return made
 
 
-def write_figures(folder: str | Path, figures: Mapping[str, Figure]) -> list[Path]:
-    """Write each figure as `figures/<name>.png` in the result folder.
+def _mass(kept: Contents) -> float:
+    """kg; without it, what fell cannot be taken off."""
+    return float(kept.plan.get("atoms", {}).get("mass", {}).get("value", 0.0))
+
+
+def times_asked_for(kept: Contents) -> list[float]:
+    """When the plan asks for pictures, s from the start of the sequence, up to where the run came."""
+    stages = kept.plan.get("sequence", ())
+    until = kept.summary.end.time_ms * 1e-3 if kept.summary.end is not None else 0.0
+    asked = {
+        1e-3 * told.start_ms + time
+        for told, stage in zip(kept.summary.stages, stages, strict=False)
+        for time in (stage.get("pictures") or {}).get("value", ())
+    }
+    return sorted(time for time in asked if time <= until * (1 + 1e-9))
+
+
+def _strip_times(kept: Contents) -> list[float] | None:
+    """The beginning, and the times asked for, the last one among them; None where nothing was asked for."""
+    asked = times_asked_for(kept)
+    if not asked:
+        return None
+    picked = np.unique(np.linspace(0, len(asked) - 1, STRIP - 1).round().astype(int))
+    return [0.0, *(asked[i] for i in picked)] if asked[0] > 0 else [asked[i] for i in picked]
+
+
+def write_figures(folder: str | Path, figures: Mapping[str, bytes]) -> list[Path]:
+    """Write each figure, a PNG, as `figures/<name>.png` in the result folder.
 
     Raises
     ------
@@ -53,6 +97,6 @@ def write_figures(folder: str | Path, figures: Mapping[str, Figure]) -> list[Pat
     paths = []
     for name, figure in figures.items():
         path = Path(folder) / "figures" / f"{name}.png"
-        write_atomic(path, png(figure))
+        write_atomic(path, figure)
         paths.append(path)
     return paths

@@ -31,26 +31,46 @@ SHORTEST = 0.006
 
 def flight_figure(summary: Summary, track: Track) -> Figure:
     """Three panels over one time axis: rms half-widths, expansion rates, and the centre of mass."""
-    height = 9.1
-    figure = new_figure(height, summary.title or "Sizes and path of the cloud", _subtitle(summary))
-    left, right, top, bottom = 0.095, 0.80, 1 - 1.62 / height, 0.68 / height
-    panels = figure.subplots(
-        3, 1, sharex=True,
-        gridspec_kw={"height_ratios": [1.3, 1, 1], "hspace": 0.3, "left": left, "right": right, "top": top,
-                     "bottom": bottom},
-    )  # fmt: skip
+    figure = new_figure(8.7, summary.title or "Sizes and path of the cloud", _subtitle(summary))
+    panels, names = panels_over_time(figure, summary.stages, (1.3, 1, 1))
     draw_widths(panels[0], track)
     draw_rates(panels[1], track)
     draw_centre(panels[2], track)
-    rows = [draw_stages(ax, summary.stages, names=ax is panels[0]) for ax in panels]
-    panels[0].set_title(panels[0].get_title(loc="left"), loc="left", pad=6 + ROW * rows[0], **TITLE)
     if "law_width" in track:
-        _explain_lines(figure)
+        explain_lines(figure)
+    finish(panels, track, names=names)
+    return figure
+
+
+def panels_over_time(
+    figure: Figure, stages: Sequence[StageEnd], heights: Sequence[float], *, right: float = 0.80
+) -> tuple[Sequence[Axes], float]:
+    """Panels above each other with the stages in them, their names over the first, just below the figure's title.
+
+    Returns
+    -------
+    panels : sequence of Axes
+    names : float
+        Points that the names take.
+    """
+    tall = figure.get_size_inches()[1]
+    panels = figure.subplots(
+        len(heights), 1, sharex=True, squeeze=False,
+        gridspec_kw={"height_ratios": heights, "hspace": 0.3, "left": 0.095, "right": right, "bottom": 0.68 / tall},
+    )[:, 0]  # fmt: skip
+    rows = [draw_stages(ax, stages, names=ax is panels[0]) for ax in panels]
+    names = ROW * rows[0]
+    figure.subplots_adjust(top=1 - (1.0 + names / 72) / tall)
+    return panels, names
+
+
+def finish(panels: Sequence[Axes], track: Track, *, names: float) -> None:
+    """The first title above the names of the stages, the whole track from left to right, and what that axis is."""
+    panels[0].set_title(panels[0].get_title(loc="left"), loc="left", pad=6 + names, **TITLE)
     span = float(np.ptp(track.time)) * 1e3 or 1.0
     begin = float(track.time[0]) * 1e3
     panels[-1].set_xlim(begin - 0.005 * span, begin + 1.005 * span)
     panels[-1].set_xlabel("time since the start of the sequence (ms)", color=INK, size=TYPE)
-    return figure
 
 
 def _subtitle(summary: Summary) -> str:
@@ -66,8 +86,8 @@ def draw_widths(ax: Axes, track: Track) -> None:
     dress(ax)
     ends = _draw(ax, track, "width", "expansion_rate", law=LAW)
     ax.set_ylim(bottom=0.0)
-    _words(ax, "How large: rms half-width", "half-width (µm)")
-    _write_ends(ax, ends, "µm")
+    entitle(ax, "How large: rms half-width", "half-width (µm)")
+    write_ends(ax, ends, "µm")
 
 
 def draw_rates(ax: Axes, track: Track) -> None:
@@ -76,8 +96,8 @@ def draw_rates(ax: Axes, track: Track) -> None:
     ends = _draw(ax, track, "width", "expansion_rate", law=LAW, slope=True, nothing=STILL_RATE)
     ax.axhline(0.0, color=QUIET, linewidth=0.8)
     _spread(ax, 5 * STILL_RATE)
-    _words(ax, "How fast it grows: expansion rate", "rate (mm/s)")
-    _write_ends(ax, ends, "mm/s", nothing=STILL_RATE)
+    entitle(ax, "How fast it grows: expansion rate", "rate (mm/s)")
+    write_ends(ax, ends, "mm/s", nothing=STILL_RATE)
 
 
 def draw_centre(ax: Axes, track: Track) -> None:
@@ -85,8 +105,8 @@ def draw_centre(ax: Axes, track: Track) -> None:
     dress(ax)
     ends = _draw(ax, track, "centre", "velocity", nothing=STILL_CENTRE)
     _spread(ax, 50 * STILL_CENTRE)
-    _words(ax, "Where it is: centre of mass, from where it rested", "centre (µm)")
-    _write_ends(ax, ends, "µm", nothing=STILL_CENTRE)
+    entitle(ax, "Where it is: centre of mass, from where it rested", "centre (µm)")
+    write_ends(ax, ends, "µm", nothing=STILL_CENTRE)
 
 
 def _spread(ax: Axes, least: float) -> None:
@@ -140,7 +160,7 @@ def _name_stages(ax: Axes, stages: Sequence[StageEnd], *, begin: float, span: fl
     return sum(bool(row) for row in rows)
 
 
-def _explain_lines(figure: Figure) -> None:
+def explain_lines(figure: Figure) -> None:
     """Say in the upper right corner which line is which."""
     lines = [Line2D([], [], color=QUIET, linewidth=2), Line2D([], [], color=QUIET, linewidth=1.6, dashes=DASHES)]
     figure.legend(
@@ -149,13 +169,14 @@ def _explain_lines(figure: Figure) -> None:
     )  # fmt: skip
 
 
-def _words(ax: Axes, title: str, label: str) -> None:
+def entitle(ax: Axes, title: str, label: str) -> None:
+    """A panel's title and what is upwards in it."""
     ax.set_title(title, loc="left", pad=6, **TITLE)
     ax.set_ylabel(label, size=TYPE, color=INK)
 
 
 @dataclass(frozen=True)
-class _End:
+class End:
     """What is written at the right end of a curve."""
 
     value: float
@@ -167,7 +188,7 @@ class _End:
 def _draw(
     ax: Axes, track: Track, name: str, rate: str, *, law: tuple[str, str] | None = None, slope: bool = False,
     nothing: float = 0.0,
-) -> list[_End]:  # fmt: skip
+) -> list[End]:  # fmt: skip
     """Curves of one observable, a colour and a mark per direction; what differs by less than `nothing` is one curve."""
     shown = track.series[rate if slope else name]
     time = track.time * 1e3
@@ -190,12 +211,12 @@ def _draw(
             t, curve = smooth(track.time, track[law[0]][:, j], track[law[1]][:, j], slope=slope)
             ax.plot(t * 1e3, curve * shown.factor, color=look.colour, linewidth=1.6, dashes=DASHES, zorder=5)
             if abs(present[-1, j]) > nothing:
-                beside = _gap(track[law[1] if slope else law[0]][-1, j], shown.values[-1, j])
-        ends.append(_End(float(present[-1, j]), names, look.colour, beside))
+                beside = gap(track[law[1] if slope else law[0]][-1, j], shown.values[-1, j])
+        ends.append(End(float(present[-1, j]), names, look.colour, beside))
     return ends
 
 
-def _gap(law: float, full: float) -> str:
+def gap(law: float, full: float) -> str:
     """How far the law is off at the end, where that can be said."""
     if not np.isfinite(law) or not full:
         return ""
@@ -210,7 +231,7 @@ def _marked(time: Array, *, offset: float) -> Array:
     return np.unique([int(np.argmin(np.abs(time - one))) for one in wanted])
 
 
-def _write_ends(ax: Axes, ends: Sequence[_End], unit: str, *, nothing: float = 0.0) -> None:
+def write_ends(ax: Axes, ends: Sequence[End], unit: str, *, nothing: float = 0.0, digits: int = 4) -> None:
     """The last values in the right margin, level with their curves as far as there is room."""
     low, high = ax.get_ylim()
     tall = ax.get_position().height * ax.figure.get_size_inches()[1]
@@ -218,7 +239,7 @@ def _write_ends(ax: Axes, ends: Sequence[_End], unit: str, *, nothing: float = 0
     gap = line * (2 if any(one.beside for one in ends) else 1)
     places = apart(np.array([(one.value - low) / (high - low) for one in ends]), gap, low=0.02, high=0.96)
     for one, place in zip(ends, places, strict=True):
-        number = drawn(one.value) if abs(one.value) > nothing else "0"
+        number = drawn(one.value, digits) if abs(one.value) > nothing else "0"
         ax.text(
             1.012, place, f"{one.names}  {number} {unit}", transform=ax.transAxes, color=one.colour, size=TYPE,
             weight="bold", va="center",

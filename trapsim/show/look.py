@@ -40,6 +40,10 @@ LOOKS: Mapping[str, Look] = {
     "z": Look("#2f9c95", "^"),
 }
 
+#: Colours beside those of the directions; lines in them are also dashed, dotted or marked differently.
+PLUM = "#8a4f9e"
+SAND = "#a08527"
+
 DENSITY = LinearSegmentedColormap.from_list(
     "paper to ink", ["#ffffff", "#dcebea", "#a3cfd0", "#5ea6b5", "#2f7699", "#1d4875", "#13244a", "#090d1e"]
 )
@@ -52,6 +56,12 @@ def new_figure(height: float, title: str, subtitle: str = "") -> Figure:
     figure.text(0.02, 1 - 0.16 / height, title, size=TYPE + 3, weight="bold", color=INK, va="top", parse_math=False)
     figure.text(0.02, 1 - 0.48 / height, subtitle, size=TYPE, color=QUIET, va="top")
     return figure
+
+
+def box(figure: Figure, left: float, bottom: float, width: float, height: float) -> Axes:
+    """Axes placed in inches from the lower left corner of the page."""
+    wide, tall = figure.get_size_inches()
+    return figure.add_axes((left / wide, bottom / tall, width / wide, height / tall))
 
 
 def dress(ax: Axes, *, ticks: int = 6, rules: bool = True) -> None:

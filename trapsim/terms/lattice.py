@@ -14,8 +14,9 @@ from trapsim.errors import Complaint
 from trapsim.fields import entry
 from trapsim.terms.part import ANYWHERE, About, Array, Part, Symmetry
 
-#: points per lattice period that hold a cloud bound in it, by depth in recoil energies
-POINTS_PER_PERIOD = ((10.0, 8), (20.0, 10), (np.inf, 12))
+#: points per lattice period that hold a cloud bound in it: at least FEWEST, and PER_DEPTH times the fourth root of the
+#: depth in recoil energies, as the cloud at a site is so much narrower; its energy is then good to 1e-7 recoil energies
+FEWEST, PER_DEPTH = 8, 5.0
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -107,7 +108,7 @@ class Lattice(Part):
     def points_per_period(self) -> int:
         """How many grid points hold a cloud that is bound in it."""
         recoils = self.strength * self.depth / self.recoil_energy
-        return next(points for depth, points in POINTS_PER_PERIOD if recoils <= depth)
+        return max(FEWEST, int(np.ceil(PER_DEPTH * recoils**0.25)))
 
     def nearest_minimum(self, x: float) -> float:
         """The minimum nearest to the lab coordinate x, m."""
