@@ -141,6 +141,20 @@ def test_the_reference_of_one_path():
     assert 'stage = "kick"' in reference("sequence") and 'stage = "hold"' in reference("sequence")
 
 
+def test_the_reference_tells_of_cameras():
+    assert reference("camera").startswith("[camera.NAME]")
+    assert reference("camera.pixel").splitlines()[0] == "  camera.pixel"
+
+
+CAMERA = '\n[camera.side]\nview = "y"\npixel = "6.5 um"\nmagnification = 2.0\nsize = [192, 64]\n'
+
+
+def test_the_schema_knows_cameras():
+    assert fits(tomllib.loads(SHORT + CAMERA), schema())
+    for old, new in [('"y"', '"w"'), ('pixel = "6.5 um"\n', ""), ("[192, 64]", "[192]"), ("2.0", "true")]:
+        assert not fits(tomllib.loads(SHORT + CAMERA.replace(old, new)), schema()), new
+
+
 @pytest.mark.parametrize(("path", "near"), [
     ("atoms.numbr", "atoms.number"), ("numeric", "numerics"), ("trap.harmonc.frequency", "trap.harmonic.frequency"),
 ])
@@ -216,7 +230,8 @@ def test_every_entry_of_every_class_stands_in_the_schema():
     stages = {s["properties"]["stage"]["const"]: s for s in whole["sequence"]["items"]["oneOf"]}
     for name, cls in tables().items():
         table, _, kind = name.partition(".")
-        here = {"trap": parts, "sequence": stages}.get(table, whole)[kind or table]
+        named = {"trap": parts, "sequence": stages, "camera": {"camera": whole["camera"]["additionalProperties"]}}
+        here = named.get(table, whole)[kind or table]
         fields = {f.name for f in dataclasses.fields(cls) if "entry" in f.metadata}
         assert fields <= set(here["properties"])
         needed = {f.name for f in dataclasses.fields(cls) if f.name in fields and f.default is dataclasses.MISSING}

@@ -47,6 +47,8 @@ class Entry:
         The class that describes a "table", or the long form of one of the "changes".
     way_out : str
         What to do about a value out of range, when there is more to say than the limit.
+    example : str
+        A value as it would be written, for messages: one of several, or all of them in brackets.
     """
 
     kind: str
@@ -61,6 +63,7 @@ class Entry:
     each: tuple[str, ...] = ()
     of: type | None = None
     way_out: str = ""
+    example: str = ""
 
 
 def entry(kind: str, about: str, *, default: Any = REQUIRED, **limits: Any) -> Any:

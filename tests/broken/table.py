@@ -119,6 +119,30 @@ SLIPS = {
     ),
     "half a point": Slip('accuracy = "draft"', 'accuracy = "draft"\npoints = [9, 9.5, 9]', "numerics.points[1]",
                          "write"),
+    "walls lower than the cloud": Slip(
+        f'"harmonic"\nfrequency = {DIPOLE}',
+        '"box"\nsize = ["30 um", "30 um", "30 um"]\nheight = "0.1 nK"\nedge = "1 um"', "trap", "higher",
+    ),
+    "beam too shallow for gravity": Slip(
+        f'"harmonic"\nfrequency = {DIPOLE}', '"beam"\nwaist = "50 um"\nwavelength = "1064 nm"\ndepth = "3 uK"',
+        "trap", "deeper",
+    ),
+    "beam that repels": Slip(
+        f'"harmonic"\nfrequency = {DIPOLE}', '"beam"\nwaist = "50 um"\nwavelength = "1064 nm"\ndepth = "-3 uK"',
+        "trap", "numerics.extent",
+    ),
+    "two lattices of different spacing": Slip(
+        "[gravity]", '[trap.a]\nkind = "lattice"\nspacing = "532 nm"\ndepth = "5 Er"\n'
+        '[trap.b]\nkind = "lattice"\nspacing = "700 nm"\ndepth = "5 Er"\n[gravity]', "trap", "same spacing",
+    ),
+    "an extent of half a lattice period too much": Slip(
+        "threads = 1", 'threads = 1\nextent = ["4.3 um", "auto", "auto"]\n'
+        '[trap.a]\nkind = "lattice"\nspacing = "532 nm"\ndepth = "5 Er"', "numerics.extent[0]", "4.256 um",
+    ),
+    "function without a function": Slip(
+        "[gravity]", '[trap.ring]\nkind = "function"\nname = "ring"\ndetail = "1 um"\n[gravity]', "trap.ring",
+        "functions=",
+    ),
     "number of atoms out of this world": Slip('"1e4"', '"1e300"', "plan", "exponent"),
     "frequency out of this world": Slip('["60 Hz"', '["1e300 Hz"', "plan.toml", "exponent"),
     "strength out of this world": Slip(DIPOLE, DIPOLE + "\nstrength = 1e-300", "plan", "exponent"),

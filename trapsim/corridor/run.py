@@ -219,6 +219,8 @@ class _Corridor:
         relaxed = ground_state(setup)
         cloud = Cloud(setup.space, setup.space.array(relaxed.u), setup.frame(), 0.0, setup.q)
         seen = self.recorder.begin(cloud, setup.timeline.initial)
+        if setup.legs:
+            self.album.look(cloud, setup.legs[0], centre=seen.centre, stage_ends=False, fallen={})
         figures = ground_figures(setup, relaxed, cloud, seen, self.law)
         ground = {"figures": figures.as_dict(), "pairs": relaxed.pairs, "seconds": time.perf_counter() - began,
                   "march_seconds": 0.0, "continuity": None}

@@ -11,6 +11,7 @@ from scipy import integrate
 from trapsim.prepare.setup import Setup
 from trapsim.prepare.stretch import Stretch
 from trapsim.terms.harmonic import Harmonic
+from trapsim.terms.lattice import Lattice
 from trapsim.terms.part import Array, steered
 
 THOMAS_FERMI = "Thomas-Fermi scaling law"
@@ -68,6 +69,16 @@ def _turned(stretch: Stretch) -> bool:
     return any(isinstance(p, Harmonic) and any(p.turn) for p in stretch.parts_at(stretch.start))
 
 
+def _first_light(stretches: list[Stretch]) -> Array:
+    """When a lattice first acts along each direction, s: from then on no scaling law holds there."""
+    first = np.full(3, np.inf)
+    for stretch in stretches:
+        for part in stretch.parts_at(0.5 * (stretch.start + stretch.stop)):
+            if isinstance(part, Lattice):
+                first[part.direction] = min(first[part.direction], stretch.start)
+    return first
+
+
 def scaling_law(setup: Setup) -> ScalingLaw | None:
     """The law for a plan's timeline; None where there is none (attraction at any time, nothing trapped, a turned trap).
 
@@ -102,6 +113,7 @@ def scaling_law(setup: Setup) -> ScalingLaw | None:
         return slope
 
     y = np.concatenate([np.ones(3), np.zeros(3)])
+    lit = _first_light(stretches)
     pieces = []
     for step in setup.timeline.steps:
         stretch = step.stretch
@@ -119,7 +131,8 @@ def scaling_law(setup: Setup) -> ScalingLaw | None:
         for begin, end, solution in pieces:
             if begin <= t <= end:
                 now = solution(t)
-                return start * now[:3], start * now[3:]
+                told = np.where(t > lit, np.nan, start)
+                return told * now[:3], told * now[3:]
         return start.copy(), 0 * start
 
     return ScalingLaw(model, radius, mu, at)

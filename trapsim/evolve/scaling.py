@@ -26,6 +26,9 @@ from trapsim.terms.part import ALL, Array, Part, steered
 
 #: the share of the box that those may fill
 INSIDE = 0.9
+#: orders that overlap beat, and between their fringes current over density says nothing: both are averaged over this
+#: share of the cloud first
+SMOOTH = 1 / 8
 
 
 class Interval(Protocol):
@@ -115,7 +118,10 @@ def _holding(cloud: Cloud, seen: Profile, j: int, tail: float, front: float) -> 
     fastest = reach(axis.k, seen.spectrum[d] * axis.spectral_weights, tail)
     furthest = reach(axis.points, seen.density[d] * axis.weights, tail)
     inside = np.abs(axis.points) <= furthest
-    places, flow = axis.points[inside], seen.flow[d][inside]
+    places, density = axis.points[inside], (seen.density[d] * axis.weights)[inside]
+    window = np.ones(max(int(SMOOTH * len(places)), 1))
+    current, around = (np.convolve(f, window, "same") for f in (density * seen.flow[d][inside], density))
+    flow = np.divide(current, around, out=np.zeros_like(current), where=around > 0)
     outward = np.max(bdot * np.abs(places) + (q / b) * np.sign(places) * flow)
     spread = np.sqrt(max(fastest**2 - np.max(np.abs(flow)) ** 2, 0.0))
     velocity = max(outward, 0.0) + q * spread / b + front

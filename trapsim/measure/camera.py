@@ -18,13 +18,16 @@ class Camera:
         "angle", "turns the line of sight about the picture's upward direction, towards the picture's right",
         default=0.0,
     )
-    pixel: float = entry("length", "side of a pixel on the sensor", above=0.0)
-    magnification: float = entry("number", "sensor over atoms", above=0.0)
-    size: tuple[int, int] = entry("whole", "pixels to the right and upwards", count=2, low=1, default=(512, 512))
+    pixel: float = entry("length", "side of a pixel on the sensor", above=0.0, example='"6.5 um"')
+    magnification: float = entry("number", "sensor over atoms", above=0.0, example="2.0")
+    size: tuple[int, int] = entry(
+        "whole", "pixels to the right and upwards", count=2, low=1, default=(512, 512), example="512"
+    )
     follow: bool = entry("flag", "keeps the cloud's centre of mass in the middle", default=False)
     aim: Triple = entry("length", "what is in the middle, in the lab, unless it follows", default=ORIGIN, count=3)
     wavelength: float | None = entry(
-        "length", "of the resonant probe; by default the probe line of the species", default=None, above=0.0
+        "length", "of the resonant probe; by default the probe line of the species", default=None, above=0.0,
+        example='"780.24 nm"',
     )
 
     def complaints(self, place: str) -> list[Complaint]:

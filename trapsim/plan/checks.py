@@ -83,7 +83,7 @@ def check_hold(trap: Mapping[str, Part], gravity: Gravity | None, numerics: Nume
     for part in trap.values():
         pull, curvature = _of_unit_mass(part).steer(ORIGIN)
         holds |= part.confines & (np.asarray(curvature) > 0)
-        if isinstance(part, Box | Beam) and part.strength > 0:
+        if part.strength > 0 and (isinstance(part, Box) or (isinstance(part, Beam) and part.full_depth > 0)):
             # a box holds the atoms without a curvature, a beam where they come to rest, which is looked for later
             holds |= True
         fall = fall + (np.zeros(3) if part.confines else np.asarray(pull))

@@ -10,6 +10,7 @@ from typing import Any
 
 from trapsim.errors import PlanError
 from trapsim.fields import REQUIRED, Entry
+from trapsim.measure.camera import Camera
 from trapsim.plan.kinds import PARTS, STAGES
 from trapsim.plan.parse import example, listed, nearest
 from trapsim.plan.plan import Numerics, Plan, Track
@@ -41,6 +42,7 @@ def tables() -> dict[str, type]:
         **{f"trap.{kind}": cls for kind, cls in PARTS.items()},
         "gravity": Gravity,
         **{f"sequence.{kind}": cls for kind, cls in STAGES.items()},
+        "camera": Camera,
         "numerics": Numerics,
         "track": Track,
     }
@@ -89,7 +91,8 @@ def reference(path: str | None = None) -> str:
 def _section(name: str, cls: type) -> str:
     """One table: how it is opened in the file, what it is, its entries."""
     table, _, kind = name.partition(".")
-    opening = {"trap": f'[trap.NAME]  kind = "{kind}"', "sequence": f'[[sequence]]  stage = "{kind}"'}
+    opening = {"trap": f'[trap.NAME]  kind = "{kind}"', "sequence": f'[[sequence]]  stage = "{kind}"',
+               "camera": "[camera.NAME]"}
     first = inspect.getdoc(cls).partition("\n")[0]
     lines = [opening.get(table, f"[{name}]"), f"    {first}", *(_lines(spot) for spot in spots(cls))]
     return "\n".join(lines) + "\n"
@@ -164,6 +167,7 @@ def schema() -> dict[str, Any]:
             "trap": {"type": "object", "propertyNames": named, "additionalProperties": {"oneOf": parts}},
             "gravity": _table(Gravity),
             "sequence": {"type": "array", "items": {"oneOf": stages}},
+            "camera": {"type": "object", "propertyNames": named, "additionalProperties": _table(Camera)},
             "numerics": _table(Numerics),
             "track": _table(Track),
         },

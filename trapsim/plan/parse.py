@@ -20,8 +20,8 @@ class Context:
 
     Parameters
     ----------
-    units : mapping of str to float
-        Units that mean something only here (recoils), in SI.
+    units : mapping of str to mapping
+        Units that mean something only here (recoils), by kind of entry, in SI.
     targets : mapping of str to Entry
         What a stage may change, by path.
     unsure : frozenset of str
@@ -29,14 +29,14 @@ class Context:
     target : Entry or None
         What the change being read is a change of.
     units_of : mapping of str to mapping
-        Units that mean something only for the part of that name.
+        The `units` of the part of that name.
     """
 
-    units: Mapping[str, float] = field(default_factory=dict)
+    units: Mapping[str, Mapping[str, float]] = field(default_factory=dict)
     targets: Mapping[str, Entry] = field(default_factory=dict)
     unsure: frozenset[str] = frozenset()
     target: Entry | None = None
-    units_of: Mapping[str, Mapping[str, float]] = field(default_factory=dict)
+    units_of: Mapping[str, Mapping[str, Mapping[str, float]]] = field(default_factory=dict)
 
 
 NOWHERE = Context()
@@ -151,11 +151,21 @@ def _one(raw: Any, about: Entry, path: str, context: Context) -> Reading:
             return _wrong(path, raw, "a whole number", f"write {example(about)}")
         return _within(raw, 0.0, raw, about, path)
     try:
-        value, sigma = quantities.parse(raw, about.kind, context.units)
+        value, sigma = quantities.parse(raw, about.kind, context.units.get(about.kind, quantities.NO_UNITS))
     except QuantityError as trouble:
         words = [f'"{word}"' for word in (*about.words, *about.each)]
-        return _wrong(path, raw, " or ".join([trouble.rule, *words]), trouble.way_out)
+        return _wrong(path, raw, " or ".join([trouble.rule, *words]), _way_out(raw, trouble, about, context))
     return _within(value, sigma, raw, about, path)
+
+
+def _way_out(raw: Any, trouble: QuantityError, about: Entry, context: Context) -> str:
+    """What to do about a number that cannot be read, with an example that fits."""
+    recoils = isinstance(raw, str) and raw.strip().endswith("Er") and about.kind == "energy"
+    if recoils and "energy" not in context.units:
+        return f"Er is the recoil energy of a lattice, known from its wavelength or spacing; {trouble.way_out}"
+    if about.example.startswith('"') and trouble.way_out.startswith("write it like"):
+        return f"write it like {about.example}"
+    return trouble.way_out
 
 
 def _within(value: Any, sigma: float, raw: Any, about: Entry, path: str) -> Reading:
@@ -246,11 +256,15 @@ def _bad_word(raw: str, about: Entry, path: str) -> Reading:
 
 
 def _how_many(about: Entry) -> str:
-    return "a list of values" if about.count is None else f"{about.count} values, one each along x, y, z"
+    if about.count is None:
+        return "a list of values"
+    return f"{about.count} values" + (", one each along x, y, z" if about.count == 3 else f": {about.about}")
 
 
 def example(about: Entry) -> str:
     """One value that this entry accepts, as it would be written."""
+    if about.example:
+        return about.example
     if about.kind == "target":
         return '"..."'
     if about.kind == "table":
@@ -272,6 +286,6 @@ def example(about: Entry) -> str:
 def _line(name: str, about: Entry) -> str:
     """The entry as one line of a plan, with an example value."""
     one = example(about)
-    if about.count == 1:
+    if about.count == 1 or one.startswith("["):
         return f"{name} = {one}"
     return f"{name} = [{one}, ...]" if about.count is None else f"{name} = [{', '.join([one] * about.count)}]"

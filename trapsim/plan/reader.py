@@ -208,7 +208,7 @@ def _atoms(tree: Tree, keep: Any, complaints: list[Complaint]) -> Atoms | None:
 def _changeable(trap: Any, mass: float) -> Context:
     """What a stage may change, also in parts that are not written well."""
     targets: dict[str, Entry] = {}
-    units: dict[str, Mapping[str, float]] = {}
+    units: dict[str, Mapping[str, Mapping[str, float]]] = {}
     unsure = set()
     for name, table in trap.items() if isinstance(trap, Mapping) else ():
         kind = table.get("kind") if isinstance(table, Mapping) else None

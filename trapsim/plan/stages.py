@@ -136,7 +136,7 @@ class Ramp(Stage):
                 wrong += _exponential(spot, change, unused=own is not None and shape != "exponential")
             complaints += wrong + _centre_taken(target, spot, parts) + self._is_off(target, spot, switches)
             to[target] = change
-        return dataclasses.replace(stage, to=to), complaints
+        return dataclasses.replace(stage, to=to), complaints + _unfit(to, place, parts)
 
     def _is_off(self, target: str, spot: str, switches: Switches) -> list[Complaint]:
         """A ramp of a part that has never been on changes nothing."""
@@ -180,7 +180,7 @@ class Pulse(Stage):
         for name in sorted({target.partition(".")[0] for target in to}):
             if switches.now.get(name, 1.0) == 0.0:
                 to.setdefault(f"{name}.strength", _flash(name, to))
-        return dataclasses.replace(stage, to=to), complaints
+        return dataclasses.replace(stage, to=to), complaints + _unfit(to, place, parts)
 
     def switched(self, switches: Switches, parts: Mapping[str, Part]) -> Switches:
         return Switches(switches.now, switches.after(_strengths(self.to)).ever)
@@ -195,7 +195,8 @@ class Kick(Stage):
 
     velocity: Triple | None = entry("velocity", "velocity added along x, y, z", count=3, default=None)
     recoils: float | None = entry(
-        "number", "in place of the velocity: that many photon recoils of a lattice, along its axis", default=None
+        "number", "in place of the velocity: that many photon recoils of a lattice, along its axis", default=None,
+        example="2",
     )
     of: str | None = entry("text", "the lattice whose recoils are meant", default=None)
 
@@ -213,10 +214,12 @@ class Kick(Stage):
                 complaints.append(Complaint(f"{place}.of", f'"{self.of}"', "this goes with recoils", "leave it out"))
             return stage, complaints
         lattices = {name: part for name, part in parts.items() if isinstance(part, Lattice)}
+        if self.of in switches.now and (self.of not in parts or parts[self.of].complaints("")):
+            return stage, complaints  # a part that is not in order has complaints of its own
         if self.of not in lattices:
-            known = ", ".join(lattices) or "none"
-            complaints.append(Complaint(f"{place}.of", f'"{self.of}"' if self.of else "", "the name of a lattice",
-                                        f"lattices of this plan: {known}"))
+            way_out = f"lattices of this plan: {', '.join(lattices)}" if lattices else "this plan has none: give a velocity"
+            complaints.append(Complaint(f"{place}.of", f'"{self.of}"' if self.of else "",
+                                        "recoils are those of a lattice, by its name", way_out))
             return stage, complaints
         lattice = lattices[self.of]
         velocity = [0.0, 0.0, 0.0]
@@ -273,6 +276,18 @@ def _flash(name: str, to: Mapping[str, Change]) -> Change:
 def _strengths(to: Mapping[str, Change]) -> dict[str, float]:
     """The new strengths among some changes, by part."""
     return {t.partition(".")[0]: change.value for t, change in to.items() if t.endswith(".strength")}
+
+
+def _unfit(to: Mapping[str, Change], place: str, parts: Mapping[str, Part]) -> list[Complaint]:
+    """What does not fit together in parts after their changes, and did before."""
+    complaints = []
+    for name, part in parts.items():
+        values = {t.partition(".")[2]: change.value for t, change in to.items() if t.partition(".")[0] == name}
+        changed = dataclasses.replace(part, **values)
+        # the same complaint stands at the part itself when it was there before
+        before = {c.rule for c in part.complaints("")}
+        complaints += [c for c in changed.complaints(f"{place}.to.{name}") if c.rule not in before]
+    return complaints
 
 
 def _timed(change: Change, spot: str, total: float) -> tuple[Change, list[Complaint]]:

@@ -77,6 +77,10 @@ def read_cameras(raw: Any, atoms: Atoms | None, keep: Any, complaints: list[Comp
     if not isinstance(raw, Mapping):
         complaints.append(Complaint("camera", shown(raw), "every camera has a name of its own", "write [camera.side]"))
         return {}
+    if raw and not any(isinstance(table, Mapping) for table in raw.values()):
+        rule, way_out = "every camera has a name of its own", "write [camera.side], then its entries"
+        complaints.append(Complaint("camera", listed(raw), rule, way_out))
+        return {}
     cameras: dict[str, Camera] = {}
     for name, table in raw.items():
         place = f"camera.{name}"

@@ -258,6 +258,7 @@ def _commensurate(j: int, half: float, spacing: float, lengths: Lengths, asked: 
             )  # fmt: skip
         periods = round(periods)
     per = max(int(lengths.per_period[j]), int(np.ceil(period / spacing)) if np.isfinite(spacing) else 1)
+    per = fft.next_fast_len(per)  # a large prime would spoil every number of periods
     if asked:
         per = asked / (periods if fixed else round(asked * 2 * half / (asked * period)))
         if per != int(per):

@@ -27,30 +27,38 @@ class Beam(Part):
 
     direction: str | Triple = entry(
         "number", "where the light goes: \"x\", \"y\", \"z\", or three numbers such as [1, 1, 0]", count=3,
-        words=("x", "y", "z"), default="x",
+        words=("x", "y", "z"), default="x", example="[1, 1, 0]",
     )
-    waist: float = entry("length", "radius at the focus where the intensity is 1/e^2 of its peak", above=0.0, ramp=True)
-    wavelength: float = entry("length", "of the light", above=0.0)
+    waist: float = entry(
+        "length", "radius at the focus where the intensity is 1/e^2 of its peak", above=0.0, ramp=True,
+        example='"50 um"',
+    )
+    wavelength: float = entry("length", "of the light", above=0.0, example='"1064 nm"')
     focus: Triple = entry("length", "where the focus is", default=ORIGIN, count=3, ramp=True)
-    depth: float | None = entry("energy", "how deep it is at the focus", default=None, ramp=True)
+    depth: float | None = entry("energy", "how deep it is at the focus", default=None, ramp=True, example='"5 uK"')
     power: float | None = entry(
-        "power", "of the light, together with the polarisability", default=None, low=0.0, ramp=True
+        "power", "of the light, together with the polarisability", default=None, low=0.0, ramp=True,
+        example='"100 mW"',
     )
     polarisability: float | None = entry(
-        "polarisability", "of the atoms at this wavelength, in atomic units", default=None
+        "polarisability", "of the atoms at this wavelength, in atomic units", default=None, example='"687 au"'
     )
 
     def complaints(self, place: str) -> list[Complaint]:
         out = []
         if not isinstance(self.direction, str) and not any(self.direction):
-            out.append(Complaint(f"{place}.direction", "[0, 0, 0]", "light goes somewhere", "write \"x\" or [1, 1, 0]"))
-        both = self.depth is not None, self.power is not None or self.polarisability is not None
-        if both in ((False, False), (True, True)) or (both[1] and None in (self.power, self.polarisability)):
-            out.append(Complaint(
-                f"{place}.depth", "" if self.depth is None else "a depth as well",
-                "a beam has either a depth, or a power and a polarisability",
-                'write depth = "5 uK", or power = "100 mW" and polarisability = "687 au"',
-            ))  # fmt: skip
+            out.append(Complaint(f"{place}.direction", "[0, 0, 0]", "this points nowhere", "write \"x\" or [1, 1, 0]"))
+        light = {"power": self.power, "polarisability": self.polarisability}
+        given = [name for name, value in light.items() if value is not None]
+        if (self.depth is None) == (not given):
+            got = f"a depth and a {given[0]}" if given else "neither"
+            out.append(Complaint(f"{place}.depth", got, "a beam has either a depth, or a power and a polarisability",
+                                 'write depth = "5 uK", or power = "100 mW" and polarisability = "687 au"'))
+        elif len(given) == 1:
+            (lacking,) = set(light) - set(given)
+            example = {"power": "100 mW", "polarisability": "687 au"}[lacking]
+            out.append(Complaint(f"{place}.{lacking}", "", f"a {given[0]} goes with a {lacking}: both make the depth",
+                                 f'write {lacking} = "{example}", or a depth in place of both'))
         return out
 
     def along(self) -> Array:

@@ -28,10 +28,10 @@ class Box(Part):
     axis: str = entry("choice", "of the cylinder", default="x", choices=("x", "y", "z"))
     size: Triple = entry(
         "length", "full size along x, y, z where the wall has half its height; across a cylinder, its diameter twice",
-        count=3, above=0.0, ramp=True,
+        count=3, above=0.0, ramp=True, example='"40 um"',
     )
-    height: float = entry("energy", "of the walls", above=0.0, ramp=True)
-    edge: float = entry("length", "from 10 to 90 % of the wall's height", above=0.0, ramp=True)
+    height: float = entry("energy", "of the walls", above=0.0, ramp=True, example='"200 nK"')
+    edge: float = entry("length", "from 10 to 90 % of the wall's height", above=0.0, ramp=True, example='"1 um"')
     centre: Triple = entry("length", "the middle of the box", default=ORIGIN, count=3, ramp=True)
 
     @property

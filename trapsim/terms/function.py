@@ -21,7 +21,7 @@ class Function(Part):
     kind: ClassVar[str] = "function"
 
     name: str = entry("text", "says which function this is; enters the key of the result, so change it with the function")
-    detail: float = entry("length", "the shortest length over which it changes", above=0.0)
+    detail: float = entry("length", "the shortest length over which it changes", above=0.0, example='"1 um"')
     holds: bool = entry(
         "flag", "whether it can hold the cloud where it is, so that the frame stands while it is on", default=False
     )

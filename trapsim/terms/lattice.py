@@ -27,18 +27,22 @@ class Lattice(Part):
 
     axis: str = entry("choice", "the direction along which it is periodic", default="x", choices=("x", "y", "z"))
     wavelength: float | None = entry(
-        "length", "of the light, for two beams head to head: the period is half of it", default=None, above=0.0
+        "length", "of the light, for two beams head to head: the period is half of it", default=None, above=0.0,
+        example='"1064 nm"',
     )
     spacing: float | None = entry(
-        "length", "the period, for beams at an angle: wavelength/(2 sin(angle/2))", default=None, above=0.0
+        "length", "the period, for beams at an angle: wavelength/(2 sin(angle/2))", default=None, above=0.0,
+        example='"700 nm"',
     )
     depth: float = entry(
-        "energy", "peak to peak; also in Er, the recoil energy of one photon of that spacing", low=0.0, ramp=True
+        "energy", "peak to peak; also in Er, the recoil energy of one photon of that spacing", low=0.0, ramp=True,
+        example='"12 Er"', way_out='no depth is negative: phase = "90 deg" swaps hills and valleys',
     )
-    phase: float = entry("angle", "where it is: a minimum at x = -spacing phase/pi", default=0.0, ramp=True)
+    phase: float = entry("angle", "where it is: a minimum at x = -spacing phase/pi", default=0.0, ramp=True,
+                         example='"90 deg"')
     detuning: float = entry(
-        "frequency", "moves it towards +axis at detuning times spacing; the phase is continuous over the stages",
-        default=0.0, ramp=True,
+        "frequency", "moves it towards +axis at detuning times spacing, its phase continuous over the stages; also in Er",
+        default=0.0, ramp=True, example='"4 Er"',
     )
     mass: float = 0.0  #: kg, of the atoms; set when the plan is read
     travel: float = 0.0  #: rad, what the detuning has added up to; set by the timeline
@@ -68,15 +72,16 @@ class Lattice(Part):
         return (HBAR * self.k) ** 2 / (2 * self.mass)
 
     @classmethod
-    def units(cls, table: Mapping[str, Any], mass: float) -> Mapping[str, float]:
-        """The recoil energy Er, from the spacing as it was written; empty when that cannot be read."""
+    def units(cls, table: Mapping[str, Any], mass: float) -> Mapping[str, Mapping[str, float]]:
+        """The recoil energy Er (Er/h of a frequency), from the spacing as written; none when that cannot be read."""
         for name, share in (("spacing", 1.0), ("wavelength", 0.5)):
             if name in table:
                 try:
                     period = share * quantities.parse(table[name], "length").value
                 except quantities.UnreadableQuantity:
                     return {}
-                return {"Er": (HBAR * np.pi / period) ** 2 / (2 * mass)} if period > 0 else {}
+                recoil = (HBAR * np.pi / period) ** 2 / (2 * mass) if period > 0 else 0.0
+                return {"energy": {"Er": recoil}, "frequency": {"Er": recoil / HBAR}} if recoil else {}
         return {}
 
     def complaints(self, place: str) -> list[Complaint]:

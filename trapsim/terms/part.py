@@ -72,7 +72,8 @@ class Part:
     quadratic: ClassVar[bool] = False
 
     strength: float = entry(
-        "number", "multiplies the part's potential energy: 1 as written, 0 off", default=1.0, low=0.0, ramp=True
+        "number", "multiplies the part's potential energy: 1 as written, 0 off", default=1.0, low=0.0, ramp=True,
+        example="1",
     )
 
     def energy(self, x: Array, y: Array, z: Array) -> Array:
@@ -95,8 +96,8 @@ class Part:
         return 2 * np.pi * float(np.max(speed)) / self.finest()
 
     @classmethod
-    def units(cls, table: Mapping[str, Any], mass: float) -> Mapping[str, float]:
-        """Units that mean something only in this part's table (raw text), in SI, for atoms of a mass in kg."""
+    def units(cls, table: Mapping[str, Any], mass: float) -> Mapping[str, Mapping[str, float]]:
+        """Units of this part's table (raw text) alone, by kind of entry, in SI, for atoms of a mass in kg."""
         return {}
 
     def complaints(self, place: str) -> list[Complaint]:
