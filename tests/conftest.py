@@ -10,6 +10,7 @@ for _name in ("OMP_NUM_THREADS", "OPENBLAS_NUM_THREADS"):
 from collections.abc import Callable  # noqa: E402
 
 import pytest  # noqa: E402
+from ready import CONFIGS, Play  # noqa: E402
 
 import trapsim  # noqa: E402
 
@@ -31,3 +32,14 @@ def solved() -> Callable[[trapsim.Plan], trapsim.Run]:
         return runs[plan.march_key]
 
     return solve
+
+
+@pytest.fixture
+def play(solved: Callable[[trapsim.Plan], trapsim.Run]) -> Play:
+    """A ready plan by name, with changes, at accuracy draft."""
+
+    def play(name: str, changes: dict[str, object] | None = None) -> trapsim.Run:
+        quick = {"numerics.accuracy": "draft", "numerics.threads": 1}
+        return solved(trapsim.read_plan(CONFIGS / f"{name}.toml", quick | (changes or {})))
+
+    return play

@@ -6,9 +6,15 @@ Gaussian (textbook), and the ballistic path for the centre. The law beside it is
 
 from __future__ import annotations
 
+import dataclasses
+
 import numpy as np
 from scipy import constants
 
+from trapsim.measure.flow import FlowPlane
+from trapsim.measure.momentum import Momentum
+from trapsim.measure.picture import Picture, resonant_cross_section
+from trapsim.record.album import Seen
 from trapsim.record.series import AxisRecord, ColumnSeries, Track, WaveFunction
 from trapsim.record.store import Contents
 from trapsim.record.summary import (
@@ -19,6 +25,7 @@ from trapsim.record.summary import (
     MarchEffort,
     Notice,
     Numerics,
+    PictureFigures,
     StageEnd,
     Summary,
     moment_of,
@@ -26,6 +33,12 @@ from trapsim.record.summary import (
 
 MASS = 86.909 * constants.atomic_mass
 HOLD = 2e-3
+#: One photon of 1064 nm, 1/m.
+RECOIL = 2 * np.pi / 1064e-9
+#: Shares of the orders -1, 0, 1, and the velocity that gravity had given along z by then, m/s.
+SHARES, FALLEN = (0.2, 0.7, 0.1), -0.05
+#: What uniform forces had done to the orders at the first look: nothing yet.
+FIRST = (0.15, 0.75, 0.1)
 STAGES = (("hold", "hold", 0.0, 2.0), ("nudge", "kick", 2.0, 0.0), ("release", "release", 2.0, 20.0))
 
 
@@ -142,7 +155,86 @@ def wave() -> WaveFunction:
     return WaveFunction(0.022, values, axes, *(np.array(one) for one in frame))
 
 
+def pictures(kept: Track, *, pixel: float = 2e-6, size: tuple[int, int] = (80, 60)) -> dict[str, Picture]:
+    """The Gaussian cloud seen along y at two times, x to the right and z upwards, the camera on the centre of mass."""
+    sigma = resonant_cross_section(780.241e-9)
+    out = {}
+    for index, name in ((-3, "side_early"), (-1, "side_late")):
+        (wide, _, tall), (x0, _, z0) = kept["width"][index], kept["centre"][index]
+        x, z = (pixel * (np.arange(n) - (n - 1) / 2) for n in size)
+        height = sigma * kept["atoms"][index] / (2 * np.pi * wide * tall)
+        od = height * np.exp(-(z[:, None] ** 2) / (2 * tall**2) - x[None, :] ** 2 / (2 * wide**2))
+        out[name] = Picture(name, "side", float(kept.time[index]), x + x0, z + z0, od, pixel**2 / sigma, "x", "z")
+    return out
+
+
+def momenta() -> tuple[Seen, ...]:
+    """Gaussians of 0.05 recoils at the even recoils along z, at the end of the second and of the third stage."""
+    out = []
+    for stage, shares, fallen in ((1, FIRST, 0.0), (2, SHARES, FALLEN)):
+        k = RECOIL * np.linspace(-16, 16, 6401)
+        offset = MASS * fallen / constants.hbar
+        wide = 0.05 * RECOIL
+        orders = dict(zip(("-1", "0", "1"), shares, strict=True))
+        away = {n: (k - offset - 2 * int(n) * RECOIL) / wide for n in orders}
+        density = sum(p * np.exp(-(away[n] ** 2) / 2) for n, p in orders.items()) / (np.sqrt(2 * np.pi) * wide)
+        out.append(Seen(stage, "light", RECOIL, fallen, Momentum(2, k, density), orders))
+    return tuple(out)
+
+
+def flow(kept: Track, *, points: int = 25) -> dict[str, FlowPlane]:
+    """A free Gaussian flows as its width grows, v = (rate/width) x; in lab coordinates, unknown where nothing is."""
+    origin = np.array([0.0, 0.0, -17.25e-6])
+    out = {}
+    for view, (r, u) in {"x": (1, 2), "y": (0, 2), "z": (0, 1)}.items():
+        width, rate, centre = kept["width"][-1], kept["expansion_rate"][-1], kept["centre"][-1] + origin
+        line = np.linspace(-5, 5, points)
+        density = np.exp(-(line[:, None] ** 2 + line[None, :] ** 2) / 2)
+        x, y = width[r] * line, width[u] * line
+        right, up = (np.where(density > 1e-4, v, np.nan) for v in np.meshgrid(rate[r] * line, rate[u] * line))
+        out[view] = FlowPlane(view, x + centre[r], y + centre[u], 1e15 * density, right, up)
+    return out
+
+
+def plan() -> dict[str, object]:
+    """The plan as it was understood: a hold, a kick of 4 mm/s along x, a release, and pictures after 5 and 20 ms."""
+    quantity = lambda value, unit: {"value": value, "unit": unit}  # noqa: E731
+    hz = [2 * np.pi * f for f in (20.0, 120.0, 120.0)]
+    return {
+        "title": "Invented",
+        "atoms": {"number": 1e5, "species": "Rb-87", "mass": quantity(MASS, "kg")},
+        "trap": {"dipole": {"kind": "harmonic", "strength": 1.0, "frequency": quantity(hz, "rad/s")}},
+        "gravity": {"direction": "-z", "value": quantity(constants.g, "m/s^2")},
+        "sequence": [
+            {"stage": "hold", "name": "hold", "pictures": quantity([], "s"), "duration": quantity(HOLD, "s")},
+            {"stage": "kick", "name": "nudge", "velocity": quantity([4e-3, 0.0, 0.0], "m/s")},
+            {"stage": "release", "name": "release", "off": ["dipole"], "switch_off": None,
+             "pictures": quantity([5e-3, 20e-3], "s"), "duration": quantity(20e-3, "s")},
+        ],
+    }  # fmt: skip
+
+
+def told(picture: Picture) -> PictureFigures:
+    """The figures of a picture."""
+    (x, y), (wide, tall) = picture.moments()
+    return PictureFigures(
+        picture.name, picture.camera, 1e3 * picture.time, 1e3 * (picture.time - HOLD), picture.atoms,
+        float(picture.optical_density.max()), (1e6 * wide, 1e6 * tall), (1e6 * x, 1e6 * y),
+    )  # fmt: skip
+
+
 def contents() -> Contents:
+    """All of it in one."""
     kept = track()
-    plan = {"title": "Invented", "atoms": {"number": 1e5}}
-    return Contents('title = "Invented µ"\n', plan, summary(kept), kept, columns(kept), wave(), wave())
+    taken, seen, whole = pictures(kept), momenta(), summary(kept)
+    orders = {one.stage: {one.part: one.orders} for one in seen}
+    stages = tuple(
+        dataclasses.replace(stage, end=dataclasses.replace(stage.end, orders=orders.get(n)))
+        for n, stage in enumerate(whole.stages)
+    )
+    whole = dataclasses.replace(
+        whole, stages=stages, end=stages[-1].end, pictures=tuple(told(one) for one in taken.values())
+    )
+    return Contents(
+        'title = "Invented µ"\n', plan(), whole, kept, columns(kept), wave(), wave(), taken, seen, flow(kept)
+    )

@@ -9,7 +9,7 @@ import numpy as np
 import motion
 import trapsim
 from reference.planewaves import KEPT, Recoil
-from trapsim.cloud.cloud import Cloud, unfolded
+from trapsim.cloud.cloud import Cloud
 
 Array = np.ndarray
 
@@ -90,12 +90,12 @@ def off(found: dict[str, float], expected: dict[str, float]) -> float:
 
 def amplitudes(cloud: Cloud) -> Array:
     """Amplitudes of exp(2 i n k x) in a cloud that is periodic along x and one function across; a common phase is free."""
-    cloud = unfolded(cloud)
-    axis, d = cloud.space.axis(0), cloud.space.dim(0)
+    phi, space = cloud.space.unfolded(cloud.phi)
+    axis, d = space.axis(0), space.dim(0)
     per_site = axis.n * SPACING / (2 * axis.half_extent)
     n = np.arange(-int(per_site / 2 - 0.5), int(per_site / 2 - 0.5) + 1)
     x = cloud.frame.lab(axis.points, 0)
-    lines = np.moveaxis(np.asarray(cloud.phi), d, 0).reshape(axis.n, -1)
+    lines = np.moveaxis(phi, d, 0).reshape(axis.n, -1)
     found = np.exp(-2j * RECOIL.k * np.outer(n, x)) @ lines
     left, _, _ = np.linalg.svd(found, full_matrices=False)
     out = np.zeros(2 * KEPT + 1, dtype=complex)

@@ -20,7 +20,7 @@ from trapsim.app import main
 MASS = 86.909180531 * constants.atomic_mass
 #: g / (2 pi f)^2 along z, um: the sag of a cloud in a trap of 90 Hz
 SAG = -9.80665 / (2 * math.pi * 90) ** 2 * 1e6
-FIGURES = {f"figures/{name}.png" for name in ("flight", "columns", "strip", "energies", "flow")}
+FIGURES = {f"figures/{name}.png" for name in ("flight", "columns", "strip", "energies", "flow")} | {"page.html"}
 RESULT = {".lock", "plan.json", "run.h5", "summary.json", "track.csv"}
 
 

@@ -67,7 +67,7 @@ def test_a_marked_folder_belongs_to_its_plan(tmp_path):
 def test_a_result_of_other_physics_is_not_taken_for_one_of_this(tmp_path, monkeypatch):
     place.mark(tmp_path, PLAN)
     monkeypatch.setattr(place, "PHYSICS_VERSION", 99)
-    with pytest.raises(PlanError, match="physics: 1 / 99"):
+    with pytest.raises(PlanError, match="physics: 2 / 99"):
         place.claim(tmp_path, PLAN)
 
 

@@ -37,7 +37,7 @@ FIGURES = {f"figures/{name}.png" for name in ("flight", "columns", "strip", "ene
 
 
 def test_run_draws_figures_that_are_pictures(finished):
-    assert files(finished) == {".lock", "plan.json", "run.h5", "summary.json", "track.csv"} | FIGURES
+    assert files(finished) == {".lock", "plan.json", "run.h5", "summary.json", "track.csv"} | FIGURES | {"page.html"}
     for name in FIGURES:
         raw = (finished / name).read_bytes()
         # PNG signature, ISO/IEC 15948, 5.2

@@ -34,7 +34,10 @@ from trapsim.record.store import (
 )
 from trapsim.record.summary import ErrorEstimate, Moment, Summary, moment_of
 
-GROUPS = ["/", "plan", "ground", "track", "columns/x", "columns/y", "columns/z", "final", "notices"]
+GROUPS = [
+    "/", "plan", "ground", "track", "columns/x", "columns/y", "columns/z", "pictures/side_late", "momentum/2_light",
+    "flow/y", "final", "notices",
+]  # fmt: skip
 
 
 @pytest.fixture(scope="module")
@@ -184,6 +187,34 @@ def test_what_is_written_is_read_back_bit_by_bit(folder: Path, contents: Content
             assert same_bits(a.points, b.points) and same_bits(a.weights, b.weights)
 
 
+def test_pictures_momenta_and_flow_are_read_back_bit_by_bit(folder: Path, contents: Contents) -> None:
+    again = read_run(folder)
+    assert list(again.pictures) == list(contents.pictures) and list(again.flow) == list(contents.flow)
+    pairs = [(contents.pictures[name], again.pictures[name]) for name in contents.pictures]
+    pairs += [(contents.flow[view], again.flow[view]) for view in contents.flow]
+    pairs += [(one.momentum, other.momentum) for one, other in zip(contents.momenta, again.momenta, strict=True)]
+    for kept, read in pairs:
+        for one in dataclasses.fields(kept):
+            a, b = getattr(kept, one.name), getattr(read, one.name)
+            assert same_bits(a, b) if isinstance(a, np.ndarray) else (type(a), a) == (type(b), b), one.name
+    for kept, read in zip(contents.momenta, again.momenta, strict=True):
+        for name in ("stage", "part", "recoil", "fallen", "orders"):
+            assert getattr(kept, name) == getattr(read, name)
+        assert list(read.orders) == ["-1", "0", "1"]
+
+
+def test_a_lean_picture_and_a_lattice_without_orders_are_kept_too(tmp_path: Path, contents: Contents) -> None:
+    lean = dataclasses.replace(
+        contents.pictures["side_late"], optical_density=np.zeros((60, 80), dtype=np.float32), name="lean"
+    )
+    none = dataclasses.replace(contents.momenta[0], orders={})
+    write_run(tmp_path, dataclasses.replace(contents, pictures={"lean": lean, "a_later": lean}, momenta=(none,)))
+    again = read_run(tmp_path)
+    assert list(again.pictures) == ["lean", "a_later"]  # in their order
+    assert again.pictures["lean"].optical_density.dtype == np.float32
+    assert again.momenta[0].orders == {}
+
+
 def test_every_dimension_has_a_scale_and_every_dataset_a_unit_and_a_name(folder: Path) -> None:
     seen = []
 
@@ -225,13 +256,38 @@ def test_xarray_opens_each_group(folder: Path, group: str) -> None:
                 assert float((whole * last[f"{side}_lab"]).sum() / whole.sum()) == pytest.approx(
                     middle[side], abs=1e-12
                 )
+        elif group.startswith("pictures"):
+            assert seen.optical_density.dims == ("y", "x") and seen.attrs["right"] == "x" and seen.attrs["up"] == "z"
+            whole = float(seen.optical_density.sum() * seen.attrs["atoms_per_od"])
+            assert whole == pytest.approx(1e5, rel=1e-6)  # all atoms are on it
+            # the camera is on the cloud: kicked by 4 mm/s and fallen for 20 ms
+            assert float(seen.x.mean()) == pytest.approx(80e-6, rel=1e-9)
+            assert float(seen.y.mean()) == pytest.approx(-0.5 * constants.g * 0.02**2, rel=1e-9)
+        elif group.startswith("momentum"):
+            assert seen.density.dims == ("wave_number",) and seen.attrs["direction"] == "z"
+            assert float(seen.density.integrate("wave_number")) == pytest.approx(1.0, rel=1e-9)
+            assert dict(zip(seen.order.values.tolist(), seen.share.values.tolist(), strict=True)) == {
+                -1: 0.2, 0: 0.7, 1: 0.1
+            }  # fmt: skip
+            # the mean momentum is 2 (0.1 - 0.2) recoils and what gravity gave
+            mean = float((seen.density * seen.wave_number).integrate("wave_number"))
+            fallen = invented_run.MASS * seen.attrs["fallen_velocity"] / constants.hbar
+            assert mean == pytest.approx(-0.2 * seen.attrs["recoil_wave_number"] + fallen, rel=1e-9)
+        elif group.startswith("flow"):
+            assert seen.velocity_right.dims == ("y", "x") and seen.attrs["up"] == "z"
+            # v = x w^2 t/(1 + (w t)^2) for the free Gaussian (textbook), counted from the cloud's middle
+            w, t = 2 * math.pi * 20.0, 0.02
+            here = seen.isel(x=15, y=12)
+            flows = float(here.x - seen.x.mean()) * w**2 * t / (1 + (w * t) ** 2)
+            assert float(here.velocity_right) == pytest.approx(flows, rel=1e-9)
+            assert bool(seen.velocity_up.isel(x=0, y=0).isnull())
         elif group == "final":
             assert seen.psi_real.dims == ("xi_x", "xi_yz") and float(seen.centre.sel(direction="z")) == -2e-3
         elif group == "ground":
             assert seen.attrs["chemical_potential_hz"] == pytest.approx(130.0)  # half of 20 + 120 + 120 Hz
             assert "healing_length_um" not in seen.attrs
         elif group == "plan":
-            assert json.loads(str(seen.resolved.values)) == {"title": "Invented", "atoms": {"number": 1e5}}
+            assert json.loads(str(seen.resolved.values)) == invented_run.plan()
             assert str(seen.text.values) == 'title = "Invented µ"\n'
         elif group == "notices":
             assert list(seen.code.values) == ["ideal gas"]
@@ -245,6 +301,7 @@ def test_a_run_without_sequence_track_or_pictures_is_kept_too(tmp_path: Path) ->
     again = read_run(tmp_path)
     assert again.summary == only and again.summary.end is None
     assert again.track is None and again.final is None and again.ground is None and again.columns == {}
+    assert again.pictures == {} and again.momenta == () and again.flow == {}
     with xarray.open_dataset(tmp_path / "run.h5", engine="h5netcdf", group="notices") as seen:
         assert seen.sizes == {"notice": 0}
 

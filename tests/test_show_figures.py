@@ -8,7 +8,6 @@ import os
 import re
 import subprocess
 import sys
-from collections.abc import Mapping
 from pathlib import Path
 
 import numpy as np
@@ -24,12 +23,13 @@ import invented_run
 from trapsim.errors import FileTrouble
 from trapsim.record.series import ColumnSeries, Track
 from trapsim.record.store import Contents
-from trapsim.record.summary import StageEnd, Summary
+from trapsim.record.summary import StageEnd
 from trapsim.show.curves import alike, apart, smooth
 from trapsim.show.density import columns_figure, strip_figure, window_of
 from trapsim.show.figures import figures_of, write_figures
 from trapsim.show.flight import draw_centre, draw_widths, flight_figure
 from trapsim.show.look import DENSITY, LOOKS, png
+from trapsim.show.wording import times_asked_for
 
 
 def words(figure: Figure) -> list[str]:
@@ -332,24 +332,46 @@ def test_a_figure_is_at_least_900_pixels_wide_and_always_the_same() -> None:
 
 
 def test_a_run_gets_the_figures_it_has_data_for(tmp_path: Path) -> None:
-    kept = invented_run.track()
-    summary, columns = invented_run.summary(kept), invented_run.columns(kept)
+    whole = invented_run.contents()
+    names = ["flight", "pictures_side", "momentum", "orders", "columns", "strip", "energies", "flow"]
+    assert list(figures_of(whole)) == names
+    kept = whole.track
     rest = invented_run.summary(None)
     one = cut(kept, slice(0, 1))
-    def names(told: Summary, track: Track | None = None, seen: Mapping[str, ColumnSeries] | None = None) -> list[str]:
-        return list(figures_of(Contents("", {}, told, track, seen or {})))
-
-    assert names(summary, kept, columns) == ["flight", "columns", "strip", "energies"]
-    assert names(rest, one, invented_run.columns(one, pictures=1)) == ["columns"]
-    assert names(rest) == []
-    at_rest = figures_of(Contents("", {}, rest, None, invented_run.columns(one)))["columns"]
-    assert "of the cloud at rest" in "".join(words(at_rest))
+    columns = invented_run.columns(one, pictures=1)
+    assert list(figures_of(Contents("", {}, rest, one, columns))) == ["columns"]
+    assert list(figures_of(Contents("", {}, rest))) == []
+    assert "of the cloud at rest" in "".join(words(figures_of(Contents("", {}, rest, columns=columns))["columns"]))
     assert {"x  1.705 µm"} <= set(words(flight_figure(rest, one)))  # sqrt(hbar/2mw) for 20 Hz
     paths = write_figures(tmp_path, {"flight": png(flight_figure(rest, one))})
-    assert [str(path.relative_to(tmp_path)) for path in paths] == ["figures/flight.png"] and paths[0].stat().st_size
+    assert [str(path.relative_to(tmp_path)) for path in paths] == ["figures/flight.png"]
+    assert paths[0].read_bytes()[:8] == b"\x89PNG\r\n\x1a\n"
     (tmp_path / "taken").write_text("")
     with pytest.raises(FileTrouble):
         write_figures(tmp_path / "taken", {"flight": b""})
+
+
+def test_the_strip_shows_the_times_that_were_asked_for() -> None:
+    """The plan asks for pictures 5 and 20 ms after the release at 2 ms: 7 and 22 ms after the start."""
+    whole = invented_run.contents()
+    assert times_asked_for(whole.plan, whole.summary) == pytest.approx([7e-3, 22e-3], rel=1e-12)
+    every = dataclasses.replace(whole, columns=invented_run.columns(whole.track, pictures=18))
+    titles = [ax.get_title() for ax in figures_of(every)["strip"].axes if ax.get_title()]
+    times = [float(one.removesuffix(" ms")) for one in titles]
+    near = [1e3 * min(whole.track.time, key=lambda one: abs(one - wanted)) for wanted in (0.0, 7e-3, 22e-3)]
+    assert times == pytest.approx(near, rel=1e-3)
+    # a run that stopped after the hold was asked for nothing yet
+    stopped = dataclasses.replace(whole.summary, end=whole.summary.stages[0].end)
+    assert times_asked_for(whole.plan, stopped) == []
+
+
+def test_there_is_no_wide_gap_below_the_title() -> None:
+    kept = invented_run.track()
+    figure = flight_figure(invented_run.summary(kept), kept)
+    FigureCanvasAgg(figure).draw()
+    subtitle = next(one for one in figure.texts if "followed until" in one.get_text()).get_window_extent()
+    title = next(t for t in figure.axes[0].findobj(Text) if t.get_text().startswith("How large")).get_window_extent()
+    assert 0 < (subtitle.y0 - title.y1) / figure.dpi < 0.35  # inches
 
 
 def test_no_figure_loads_pyplot() -> None:

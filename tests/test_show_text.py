@@ -126,3 +126,28 @@ def test_what_is_not_estimated_is_said_to_be_so(summary: Summary) -> None:
     numerics = dataclasses.replace(summary.numerics, error=ErrorEstimate())
     text = summary_text(dataclasses.replace(summary, numerics=numerics))
     assert "not estimated" in text and "+-" not in text
+
+
+def test_orders_and_pictures_are_told() -> None:
+    """Populations 20, 70 and 10 %; 4 mm/s and free fall for 20 ms; sqrt(hbar/2mw) sqrt(1 + (wt)^2) for 20 and 120 Hz."""
+    text = summary_text(invented_run.contents().summary)
+    told = "-1 20.0 %, 0 70.0 %, +1 10.0 %"
+    assert text.count(told) == 2 and "orders of light" in text  # with its stage, and at the end
+    assert "-1 15.0 %, 0 75.0 %, +1 10.0 %" in text
+    after = "side_late: 22 ms, 20 ms of flight"
+    assert row(text, "atoms, peak optical", after=after).split()[-2].rstrip(",") == "100000"
+    assert row(text, "half-width, centre (um)", after=after).split()[-4:] == ["4.612,", "10.52;", "80.00,", "-1961"]
+    assert max(len(line) for line in text.splitlines()) <= 110
+
+
+def test_many_orders_are_wrapped_and_faint_ones_left_out() -> None:
+    summary = invented_run.contents().summary
+    many = {"light": {str(n): 0.04 for n in range(-12, 13)} | {"13": 1e-5}}
+    text = summary_text(dataclasses.replace(summary, end=dataclasses.replace(summary.end, orders=many)))
+    assert "-12 4.0 %" in text and "+12 4.0 %" in text and "+13" not in text
+    assert max(len(line) for line in text.splitlines()) <= 110
+
+
+def test_without_lattice_or_camera_neither_is_mentioned(summary: Summary) -> None:
+    text = summary_text(summary)
+    assert "orders" not in text and "pictures" not in text.lower()

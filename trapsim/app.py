@@ -99,7 +99,7 @@ def _parser() -> argparse.ArgumentParser:
 
     check = command("check", "look a plan over: derived quantities, instant prediction, validity, cost", _check)
     run = command("run", "play a plan and write the result folder", _run)
-    show = command("show", "print a result and draw its figures again", _show)
+    show = command("show", "print a result, and draw its figures and its page again", _show)
     keys = command("keys", "the plan file's reference", _keys)
     for sub in (check, run):
         sub.add_argument("plan", metavar="PLAN", help="a plan file (TOML)")
@@ -112,7 +112,7 @@ def _parser() -> argparse.ArgumentParser:
     show.add_argument("result", metavar="RESULT", help="a result folder")
     for sub in (run, show):
         sub.add_argument("--json", action="store_true", help="the summary as JSON on standard output, nothing else")
-        sub.add_argument("--no-figures", action="store_true", help="draw no figures")
+        sub.add_argument("--no-figures", action="store_true", help="draw no figures and no page")
     keys.add_argument("path", metavar="PATH", nargs="?", help="a table or an entry, such as trap or sequence.ramp")
     keys.add_argument("--schema", action="store_true", help="the JSON schema, for editors")
     return parser
@@ -173,7 +173,7 @@ def _show(options: argparse.Namespace) -> int:
 
 
 def _present(run: Run, options: argparse.Namespace) -> int:
-    """Print the summary, draw the figures, say where everything is."""
+    """Print the summary, draw the figures and the page, say where everything is."""
     if options.json:
         print(json.dumps(run.summary.as_dict(), indent=2, allow_nan=False))
     elif not options.quiet:
@@ -184,10 +184,12 @@ def _present(run: Run, options: argparse.Namespace) -> int:
     if not options.no_figures:
         from trapsim.record.store import read_run
         from trapsim.show.figures import figures_of, png, write_figures
+        from trapsim.show.page import write_page
 
         kept = read_run(run.folder)
         figures = {name: png(figure) for name, figure in figures_of(kept).items()}
         where += [str(path) for path in write_figures(run.folder, figures)]
+        where.append(str(write_page(run.folder, kept, figures)))
     if not options.quiet:
         print("\nResults are in\n  " + "\n  ".join(where), file=sys.stderr if options.json else sys.stdout)
     return 0

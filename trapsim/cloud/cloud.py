@@ -42,12 +42,6 @@ class Cloud:
         return replace(self, phi=self.space.array(self.phi))
 
 
-def unfolded(cloud: Cloud) -> Cloud:
-    """The same cloud with both sides of every mirror axis."""
-    phi, space = cloud.space.unfolded(cloud.phi)
-    return cloud if space is cloud.space else replace(cloud, phi=phi, space=space)
-
-
 def regauge(cloud: Cloud, *, bdot: Array | None = None, Xdot: Array | None = None) -> Cloud:
     """The same wave function in a frame with another rate of scale or velocity; exact, no resampling.
 

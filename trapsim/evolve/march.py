@@ -96,7 +96,9 @@ def _law_start(cloud: Cloud, seen: Profile, leg: Leg, guards: Guards) -> LawStar
         front = 2 * float(sound)
     tail = None if leg.trapped else HELD_BACK * guards.edge
     squeeze = _squeeze(cloud, seen, leg) if leg.trapped else None
-    law = measure_law(cloud, seen, tail=tail, moving=leg.moving, front=front, squeeze=squeeze)
+    law = measure_law(
+        cloud, seen, tail=tail, moving=leg.moving, split=leg.split, front=front, squeeze=squeeze
+    )
     return replace(law, edge=float(np.where(guards.watched, edge_population(cloud.space, seen.density), 0.0).max()))
 
 

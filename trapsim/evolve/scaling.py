@@ -20,15 +20,15 @@ from scipy import integrate
 
 from trapsim.cloud.cloud import Cloud
 from trapsim.constants import HBAR
+from trapsim.measure.momentum import momentum
 from trapsim.measure.observables import Profile, reach
 from trapsim.space.frame import Frame
 from trapsim.terms.part import ALL, Array, Part, steered
 
 #: the share of the box that those may fill
 INSIDE = 0.9
-#: orders that overlap beat, and between their fringes current over density says nothing: both are averaged over this
-#: share of the cloud first
-SMOOTH = 1 / 8
+#: atoms nearer to that limit are taken to be this share of it away
+CLOSE = 0.3
 
 
 class Interval(Protocol):
@@ -75,6 +75,7 @@ def measure_law(
     *,
     tail: float | None,
     moving: Sequence[bool] = ALL,
+    split: Sequence[bool] = (False, False, False),
     front: float = 0.0,
     squeeze: Array | None = None,
 ) -> LawStart:
@@ -86,6 +87,8 @@ def measure_law(
         A also holds the fastest and furthest atoms in the box, all but this share; None does not ask for it (in a trap).
     moving : three flags
         Directions in which the frame moves; in the others A and i are zero.
+    split : three flags
+        Directions in which light may have split the cloud into orders.
     front : float
         Velocity of atoms that run ahead of the rest, m/s, which A must hold as well.
     squeeze : (3,), optional
@@ -103,29 +106,51 @@ def measure_law(
             A[j] -= squeeze[j] * cloud.frame.b[j] ** 4
         i[j] = cloud.q * seen.quartic / (2 * seen.norm * seen.var[j])
         if tail is not None:
-            A[j] = max(A[j], _holding(cloud, seen, j, tail, front))
+            furthest = reach(axis.points, seen.density[cloud.space.dim(j)] * axis.weights, tail)
+            if split[j]:
+                # orders that fly apart are held by where they go; their spread of k is that of a cloud far narrower
+                A[j] = _holding(cloud, j, _fastest(cloud, j, tail) + front, furthest)
+            else:
+                # where a flow carries the atoms, the fastest are furthest out and the frame keeps up with them
+                A[j] = max(A[j], _holding(cloud, j, _outward(cloud, seen, j, tail, furthest) + front))
     return LawStart(cloud.time, cloud.frame, A, i, seen.var)
 
 
-def _holding(cloud: Cloud, seen: Profile, j: int, tail: float, front: float) -> float:
-    """The A that keeps the fastest atoms inside the part of the box that is not watched, 1/s^2.
+def _holding(cloud: Cloud, j: int, velocity: float, furthest: float | None = None) -> float:
+    """The A that keeps atoms inside the part of the box that is not watched, 1/s^2.
 
-    In the end b' = sqrt(bdot^2 + A/b^2), and atoms of velocity v sit at xi = v/b'. Their velocity is that of the flow at
-    its fastest, with the spread of k that is not part of the flow on top.
+    With A alone b^2 = b0^2 + 2 b0 bdot t + (bdot^2 + A/b0^2) t^2, and atoms of a velocity (m/s) end up at velocity t < b L
+    with the limit L. Those that start with it from `furthest` (grid, m) ask for more: b0 furthest + velocity t < b L at
+    any time, one parabola below another.
     """
+    b, bdot = cloud.frame.b[j], cloud.frame.bdot[j]
+    limit = INSIDE * cloud.space.axis(j).half_extent
+    needed = (velocity / limit) ** 2
+    if furthest is not None:
+        behind = max(furthest * velocity / limit**2 - bdot, 0.0)
+        needed += behind**2 / max(1 - (furthest / limit) ** 2, CLOSE**2)
+    return float(b**2 * max(needed - max(bdot, 0.0) ** 2, 0.0))
+
+
+def _outward(cloud: Cloud, seen: Profile, j: int, tail: float, furthest: float) -> float:
+    """The highest velocity away from the centre, m/s: that of the flow at its fastest, with the spread of k on top."""
     axis, d = cloud.space.axis(j), cloud.space.dim(j)
     b, bdot, q = cloud.frame.b[j], cloud.frame.bdot[j], cloud.q
     fastest = reach(axis.k, seen.spectrum[d] * axis.spectral_weights, tail)
-    furthest = reach(axis.points, seen.density[d] * axis.weights, tail)
     inside = np.abs(axis.points) <= furthest
-    places, density = axis.points[inside], (seen.density[d] * axis.weights)[inside]
-    window = np.ones(max(int(SMOOTH * len(places)), 1))
-    current, around = (np.convolve(f, window, "same") for f in (density * seen.flow[d][inside], density))
-    flow = np.divide(current, around, out=np.zeros_like(current), where=around > 0)
+    places, flow = axis.points[inside], seen.flow[d][inside]
     outward = np.max(bdot * np.abs(places) + (q / b) * np.sign(places) * flow)
     spread = np.sqrt(max(fastest**2 - np.max(np.abs(flow)) ** 2, 0.0))
-    velocity = max(outward, 0.0) + q * spread / b + front
-    return float(b**2 * max((velocity / (INSIDE * axis.half_extent)) ** 2 - max(bdot, 0.0) ** 2, 0.0))
+    return max(outward, 0.0) + q * spread / b
+
+
+def _fastest(cloud: Cloud, j: int, tail: float) -> float:
+    """The highest velocity from the frame's, m/s, from the momenta themselves.
+
+    Orders that overlap beat, and between their fringes current over density says nothing.
+    """
+    spread = momentum(cloud, j)
+    return cloud.q * reach(spread.k - cloud.frame.Xdot[j] / cloud.q, spread.density, tail)
 
 
 class MovingLaw:

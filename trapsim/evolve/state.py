@@ -37,6 +37,8 @@ class Leg:
         function itself.
     brief : bool
         Whether it is a pulse: its steps are always those of a flight.
+    split : three bools
+        Directions in which light may have split the cloud into orders, so that it has no flow to speak of.
     unwalled : bool
         Whether a box held the cloud before and no longer does.
     landings : tuple of float
@@ -57,6 +59,7 @@ class Leg:
     trapped: bool
     moving: tuple[bool, bool, bool] = ALL
     brief: bool = False
+    split: tuple[bool, bool, bool] = (False, False, False)
     unwalled: bool = False
     landings: tuple[float, ...] = ()
     kick: Triple = ORIGIN

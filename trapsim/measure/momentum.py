@@ -14,9 +14,9 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from trapsim.cloud.cloud import Cloud, unfolded
+from trapsim.cloud.cloud import Cloud
 from trapsim.measure.observables import reach
-from trapsim.space.axes import Array, Wave
+from trapsim.space.axes import Array, Mirror, Wave
 from trapsim.terms.lattice import Lattice
 
 #: orders kept in tables: those with more than this share of the atoms
@@ -65,15 +65,16 @@ def momentum(cloud: Cloud, direction: int) -> Momentum:
     ValueError
         When the direction shares a radial axis or is uniform.
     """
-    cloud = unfolded(cloud)
     space = cloud.space
     axis = space.axis(direction)
-    if not isinstance(axis, Wave) or axis.uniform:
+    if not isinstance(axis, Wave | Mirror) or axis.uniform:
         raise ValueError(f"direction {'xyz'[direction]} has no wave axis of its own")
     d = space.dim(direction)
     frame, q = cloud.frame, cloud.q
     b, bdot, drift = frame.b[direction], frame.bdot[direction], frame.Xdot[direction] / q
     lines = np.moveaxis(np.asarray(cloud.phi), d, -1)
+    if isinstance(axis, Mirror):
+        axis, lines = axis.unfolded(), np.concatenate([lines[..., ::-1], lines], axis=-1)
     weights = _other_weights(cloud, d)
     spectrum = np.fft.fft(lines, axis=-1)
     width_k = reach(axis.k, _marginal(np.abs(spectrum) ** 2, weights), TAIL)

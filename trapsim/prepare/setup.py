@@ -24,6 +24,7 @@ from trapsim.record.album import Shot
 from trapsim.space.frame import Frame
 from trapsim.space.space import Array, Space
 from trapsim.terms.box import Box
+from trapsim.terms.lattice import Lattice
 from trapsim.terms.part import remainder, steered
 
 AXES = "xyz"
@@ -226,10 +227,16 @@ def _legs(
             name=stage.name, kind=stage.kind, stage=step.stage, start=stretch.start, stop=stretch.stop, space=space,
             interval=stretch, trapped=_held(step), moving=flags, brief=stage.kind == "pulse" and bool(stretch.gripped()),
             landings=tuple(sorted({t for t in wanted if stretch.start < t < stretch.stop})), kick=step.kick,
-            last=step.last, unwalled=walled and not _walls(stretch),
+            last=step.last, unwalled=walled and not _walls(stretch), split=_split(plan, step),
         ))  # fmt: skip
         walled = walled or _walls(stretch)
     return tuple(legs)
+
+
+def _split(plan: Plan, step: Step) -> tuple[bool, bool, bool]:
+    """Directions along which a lattice acts or has acted."""
+    lit = {part.direction for name, part in plan.trap.items() if isinstance(part, Lattice) and name in step.fallen}
+    return tuple(j in lit for j in range(3))
 
 
 def plan_shots(plan: Plan, timeline: Timeline) -> tuple[Shot, ...]:

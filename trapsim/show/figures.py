@@ -17,12 +17,13 @@ from trapsim.show.energies import draw_energies, draw_ratios, energies_figure
 from trapsim.show.flight import draw_centre, draw_rates, draw_stages, draw_widths, flight_figure
 from trapsim.show.look import png
 from trapsim.show.orders import draw_momentum, draw_orders, momentum_figure, orders_figure
+from trapsim.show.wording import times_asked_for
 
 __all__ = [
     "columns_figure", "camera_figure", "draw_centre", "draw_column", "draw_energies", "draw_flow", "draw_momentum",
     "draw_orders", "draw_picture", "draw_rates", "draw_ratios", "draw_scale_bar", "draw_stages", "draw_widths",
     "energies_figure", "figures_of", "flight_figure", "flow_figure", "momentum_figure", "orders_figure", "png",
-    "strip_figure", "times_asked_for", "window_of", "write_figures",
+    "strip_figure", "window_of", "write_figures",
 ]  # fmt: skip
 #: The strip has so many pictures in a row.
 STRIP = 6
@@ -65,21 +66,9 @@ def _mass(kept: Contents) -> float:
     return float(kept.plan.get("atoms", {}).get("mass", {}).get("value", 0.0))
 
 
-def times_asked_for(kept: Contents) -> list[float]:
-    """When the plan asks for pictures, s from the start of the sequence, up to where the run came."""
-    stages = kept.plan.get("sequence", ())
-    until = kept.summary.end.time_ms * 1e-3 if kept.summary.end is not None else 0.0
-    asked = {
-        1e-3 * told.start_ms + time
-        for told, stage in zip(kept.summary.stages, stages, strict=False)
-        for time in (stage.get("pictures") or {}).get("value", ())
-    }
-    return sorted(time for time in asked if time <= until * (1 + 1e-9))
-
-
 def _strip_times(kept: Contents) -> list[float] | None:
     """The beginning, and the times asked for, the last one among them; None where nothing was asked for."""
-    asked = times_asked_for(kept)
+    asked = times_asked_for(kept.plan, kept.summary)
     if not asked:
         return None
     picked = np.unique(np.linspace(0, len(asked) - 1, STRIP - 1).round().astype(int))

@@ -54,6 +54,12 @@ def percent(part: float) -> str:
     return f"{part * 100:+.0f} %" if abs(part) >= 0.0995 else f"{round(part * 100, 2):+.2g} %"
 
 
+def percentage(share: float) -> str:
+    """A share in per cent, "22.9 %", "0.24 %"."""
+    value = 100 * share
+    return f"{value:.1f} %" if value >= 0.995 else f"{value:.2f} %"
+
+
 def drawn(value: float | None, digits: int = 4) -> str:
     """So many significant figures for a drawing: plain digits whatever the size, and the minus sign of print."""
     text = figures(value, digits)

@@ -13,7 +13,7 @@ from trapsim.constants import HBAR
 from trapsim.record.album import Seen
 from trapsim.record.summary import Summary
 from trapsim.show.look import BAND, DENSITY, INK, LOOKS, QUIET, SMALL, TYPE, WIDTH, box, dress, new_figure
-from trapsim.show.numbers import brief, drawn, signed
+from trapsim.show.numbers import brief, drawn, percentage, signed
 
 Array = np.ndarray
 #: Orders with less than this share of the atoms are neither named nor given room.
@@ -125,12 +125,6 @@ def _name_orders(ax: Axes, seen: Seen) -> None:
 def _order(name: str) -> str:
     """An order with its sign: +1, 0, −1."""
     return signed(f"{int(name):+d}") if int(name) else "0"
-
-
-def percentage(share: float) -> str:
-    """A share of the atoms in per cent, three figures at most."""
-    value = 100 * share
-    return f"{value:.1f} %" if value >= 0.995 else f"{value:.2f} %"
 
 
 def orders_figure(summary: Summary, momenta: Sequence[Seen]) -> Figure:

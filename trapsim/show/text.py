@@ -2,11 +2,11 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Sequence
+from collections.abc import Iterable, Mapping, Sequence
 from textwrap import wrap
 
-from trapsim.record.summary import Ground, Law, LegSpace, Moment, Numerics, StageEnd, Summary
-from trapsim.show.numbers import MISSING, brief, figures, four, percent, with_error
+from trapsim.record.summary import Ground, Law, LegSpace, Moment, Numerics, PictureFigures, StageEnd, Summary
+from trapsim.show.numbers import MISSING, brief, figures, four, percent, percentage, with_error
 
 SAFETY = (
     "This is a calculation, not a permit. Before you use a pulse, power, current or field from it, check it against "
@@ -23,7 +23,9 @@ _NAME = 30
 _CELL = 22
 #: In lab units: less than this is rounding noise.
 _NOTHING = 1e-6
-_STATUS = {
+#: Orders with less than this share of the atoms are not worth a word.
+FAINT = 5e-4
+STATUS = {
     "complete": "complete",
     "interrupted": "interrupted: the state is saved, the same command goes on from there",
     "stopped": "stopped before the end of the sequence",
@@ -43,12 +45,14 @@ def summary_text(summary: Summary) -> str:
         Lines of at most about a hundred characters, ending with a newline.
     """
     head = summary.title or "Untitled plan"
-    lines = [head, "=" * len(head), f"{_STATUS.get(summary.status, summary.status)}", ""]
+    lines = [head, "=" * len(head), f"{STATUS.get(summary.status, summary.status)}", ""]
     lines += _ground(summary.ground)
     if summary.stages:
         lines += ["", *_stages(summary.stages)]
     if summary.end is not None:
         lines += ["", *_end(summary)]
+    if summary.pictures:
+        lines += ["", *_pictures(summary.pictures)]
     lines += ["", *_numerics(summary.numerics)]
     if summary.warnings:
         lines += ["", "Warnings"]
@@ -87,10 +91,10 @@ def _ground(ground: Ground) -> list[str]:
 
 
 def _along(values: Sequence[float | None]) -> list[str]:
-    return [f"{name} {_small(value)}" for name, value in zip("xyz", values, strict=True)]
+    return [f"{name} {small(value)}" for name, value in zip("xyz", values, strict=True)]
 
 
-def _small(value: float | None) -> str:
+def small(value: float | None) -> str:
     """Four figures; rounding noise is written as 0."""
     return "0" if value is not None and abs(value) < _NOTHING else four(value)
 
@@ -109,6 +113,7 @@ def _stages(stages: Sequence[StageEnd]) -> list[str]:
         lines.append(_row("   half-width (um)", _along(one.end.width_um)))
         lines.append(_row("   centre (um)", _along(one.end.centre_um)))
         lines.append(_row("   velocity (mm/s)", _along(one.end.velocity_mm_per_s)))
+        lines += _orders(one.end, indent="   ")
     return lines
 
 
@@ -120,16 +125,16 @@ def _end(summary: Summary) -> list[str]:
     lines = [
         f"The cloud at the end: {brief(end.time_ms)} ms after the start{flight}",
         _row("", ["along x", "along y", "along z"]),
-        _row("half-width (um)", _with_errors(end.width_um, relative=error.width_relative)),
+        _row("half-width (um)", with_errors(end.width_um, relative=error.width_relative)),
         *_beside(end.law, "width_um", end.width_um),
-        _row("expansion rate (mm/s)", _with_errors(end.expansion_rate_mm_per_s, relative=error.rate_relative)),
+        _row("expansion rate (mm/s)", with_errors(end.expansion_rate_mm_per_s, relative=error.rate_relative)),
         *_beside(end.law, "expansion_rate_mm_per_s", end.expansion_rate_mm_per_s),
-        _row("centre (um)", _with_errors(end.centre_um, absolute=error.centre_um)),
-        _row("velocity (mm/s)", [_small(one) for one in end.velocity_mm_per_s]),
+        _row("centre (um)", with_errors(end.centre_um, absolute=error.centre_um)),
+        _row("velocity (mm/s)", [small(one) for one in end.velocity_mm_per_s]),
         _row("velocity spread (mm/s)", [four(one) for one in end.velocity_spread_mm_per_s]),
         _row("expansion energy (nK)", [four(one) for one in end.expansion_energy_nk]),
     ]
-    return lines + _totals(end)
+    return lines + _totals(end) + _orders(end)
 
 
 def _totals(end: Moment) -> list[str]:
@@ -144,14 +149,15 @@ def _totals(end: Moment) -> list[str]:
     lines = [_row("atoms", [brief(end.atoms)])]
     if ratios:
         lines.append(_row("aspect ratios", [ratios]))
-    parts = ", ".join(f"{name} {_small(value)}" for name, value in energies if value is not None)
+    parts = ", ".join(f"{name} {small(value)}" for name, value in energies if value is not None)
     lines.append(_row("energy / k_B (nK)", [parts or MISSING]))
     return lines
 
 
-def _with_errors(
+def with_errors(
     values: Sequence[float | None], *, relative: float | None = None, absolute: float | None = None
 ) -> list[str]:
+    """Numbers with their errors, relative or absolute; rounding noise is written as 0."""
     cells = []
     for value in values:
         error = absolute if relative is None or value is None else abs(value) * relative
@@ -161,24 +167,53 @@ def _with_errors(
 
 
 def _beside(law: Law | None, name: str, full: Sequence[float | None]) -> list[str]:
+    """What the instant model says, as a row below the full calculation."""
+    return [_row(f"   {law.model}", law_beside(law, name, full))] if law is not None else []
+
+
+def law_beside(law: Law, name: str, full: Sequence[float | None]) -> list[str]:
     """What the instant model says, and how far that is from the full calculation."""
-    if law is None:
-        return []
     cells = []
     for said, value in zip(getattr(law, name), full, strict=True):
         gap = f" ({percent(said / value - 1)})" if said is not None and value else ""
         cells.append(four(said) + gap)
-    return [_row(f"   {law.model}", cells)]
+    return cells
+
+
+def orders_row(orders: Mapping[str, float]) -> str:
+    """Populations of diffraction orders from the lowest on: "-1 22.9 %, 0 51.3 %, +1 22.9 %"; the faint ones left out."""
+    shown = sorted((int(name), share) for name, share in orders.items() if share >= FAINT)
+    return ", ".join(f"{f'{n:+d}' if n else '0'} {percentage(share)}" for n, share in shown)
+
+
+def _orders(end: Moment, *, indent: str = "") -> list[str]:
+    lines = []
+    for part, orders in (end.orders or {}).items():
+        told = wrap(orders_row(orders), _LINE - _NAME) or [MISSING]
+        lines += [_row(f"{indent}orders of {part}" if n == 0 else "", [line]) for n, line in enumerate(told)]
+    return lines
+
+
+def _pictures(pictures: Sequence[PictureFigures]) -> list[str]:
+    """What each picture shows: atoms, peak optical density, sizes and places to the right and up."""
+    lines = ["The pictures, sizes and places to the right and up"]
+    for one in pictures:
+        flight = f", {brief(one.flight_ms)} ms of flight" if one.flight_ms is not None else ""
+        lines.append(f"  {one.name}: {brief(one.time_ms)} ms{flight}")
+        size, place = (", ".join(small(value) for value in pair) for pair in (one.width_um, one.centre_um))
+        lines.append(_row("   atoms, peak optical density", [f"{brief(one.atoms)}, {four(one.peak_optical_density)}"]))
+        lines.append(_row("   half-width, centre (um)", [f"{size}; {place}"]))
+    return lines
 
 
 def _numerics(numerics: Numerics) -> list[str]:
     """Grid, effort and the books that were kept."""
     error = numerics.error
     lines = ["How it was computed"]
-    lines.append(_row("axes and points", [_grid(numerics)]))
-    told: tuple[str, str] = (_grid(numerics), "")
+    lines.append(_row("axes and points", [grid_words(numerics)]))
+    told: tuple[str, str] = (grid_words(numerics), "")
     for leg in numerics.legs:  # only what changes from leg to leg
-        grid, told_grid, told_why = _grid(leg), *told
+        grid, told_grid, told_why = grid_words(leg), *told
         if grid != told_grid:
             lines.append(_row(f"   from {brief(leg.start_ms)} ms, {leg.name}", [grid]))
         if leg.reason and leg.reason != told_why:
@@ -202,7 +237,7 @@ def _numerics(numerics: Numerics) -> list[str]:
     return lines
 
 
-def _grid(space: Numerics | LegSpace) -> str:
+def grid_words(space: Numerics | LegSpace) -> str:
     return ", ".join(f"{d} {kind} {n}" for d, kind, n in zip("xyz", space.axes, space.points, strict=True))
 
 
