@@ -70,6 +70,11 @@ class ColumnViews:
         self.finer = [a.finer() if isinstance(a, Radial) else a for a in space.axes]
         self._onto_finer = space.axes[0].basis(self.finer[0].points) if isinstance(space.axes[0], Radial) else None
         self._lines = [midpoints(a.half_extent, n) for a, n in zip(self.finer, self.samples, strict=True)]
+        #: per axis, the matrix from samples to the raster: the side view on a radial axis, else the axis' own series
+        self._onto = [
+            a.project(line) if isinstance(a, Radial) else a.basis(line)
+            for a, line in zip(self.finer, self._lines, strict=True)
+        ]
 
     def density(self, cloud: Cloud) -> Array:
         """|phi|^2 on the finer points."""
@@ -121,7 +126,7 @@ class ColumnViews:
         if isinstance(axis, Radial):
             spread = profile  # a round cloud was spread over the raster's own line
         else:
-            spread = profile @ axis.basis(rows).T
+            spread = profile @ self._onto[self.space.dim(up)].T
         middle = frame.X[right] * cosine - frame.X[along] * sine
         # grid measures along and right cancel against the density's own; up is left
         return Column(s + middle, frame.lab(rows, up), spread.T / frame.b[up], view, cloud.time)
@@ -172,11 +177,8 @@ class ColumnViews:
         dims = [d for d in range(len(self.space.axes)) if d != gone]
         if dims != [self.space.dim(up), self.space.dim(right)]:
             rest = rest.T
-        rows, columns = (self._ontomidpoints(self.space.dim(j)) for j in (up, right))
+        rows, columns = (self._onto[self.space.dim(j)] for j in (up, right))
         return rows @ rest @ columns.T
-
-    def _ontomidpoints(self, d: int) -> Array:
-        return self.finer[d].basis(self._lines[d])
 
     def _round(self, profile: Array) -> Array:
         """A round cloud seen along its axis: a profile in r, spread over the raster."""
@@ -184,9 +186,7 @@ class ColumnViews:
 
     def _side(self, density: Array, up: int, right: int, along: int) -> Array:
         """A round cloud seen from the side: the Fourier slice of the radial axis, the other axis' own series."""
-        side = self.finer[0].project(self._lines[0]) @ density
-        other = self._ontomidpoints(1)
-        values = side @ other.T
+        values = self._onto[0] @ density @ self._onto[1].T
         across = next(j for j in self.space.axes[0].covers if j != along)
         return values if across == up else values.T
 
