@@ -168,7 +168,7 @@ def averaged(s: float, alpha: float, tau: float, weak: float = 2.0) -> Array:
     return sum(w * np.abs(bands.driven(s, alpha, tau, p)) ** 2 for p, w in spread(s, weak).T)
 
 
-@pytest.mark.parametrize("periods", [1.0, 0.8])
+@pytest.mark.parametrize("periods", [1.0, pytest.param(0.8, marks=pytest.mark.slow)])
 def test_a_cloud_under_a_force_oscillates_with_blochs_period(solved: Solved, periods: float) -> None:
     s, alpha = 4.0, 0.6
     run = solved(pulled(s, alpha, periods))
@@ -209,11 +209,28 @@ def test_a_slowly_loaded_cloud_released_at_once_shows_its_bloch_state(
     solved: Solved, s: float, number: float, a: str
 ) -> None:
     run = solved(motion.cloud(
-        motion.stage("ramp", 2e-3, shape='"smooth"', to=f'{{ "light.depth" = "{s} Er" }}'), motion.stage("release", 3e-3),
+        motion.stage("ramp", 2e-3, shape='"smooth"', to=f'{{ "light.depth" = "{s} Er" }}'), motion.stage("release", 1e-3),
         frequency=(2, 30, 30), a=a, number=number, parts=light.lattice(0, strength=1),
     ))  # fmt: skip
     # plane waves, diagonalised
     assert light.off(light.orders(run), bands.populations(s)) < 1e-3
+
+
+@pytest.mark.slow
+@pytest.mark.parametrize(
+    ("s", "microseconds", "number", "frequency"), [(15, 45, 1e4, (20, 100, 100)), (16, 45, 1e4, (20, 100, 100))]
+)
+def test_dense_clouds_fly_out_of_a_strong_flash_within_their_grid(
+    solved: Solved, s: float, microseconds: float, number: float, frequency: Sequence[float]
+) -> None:
+    tau = 1e-6 * microseconds / RECOIL.time
+    run = solved(motion.cloud(
+        motion.stage("release", 1e-4), light.pulse(tau), motion.stage("hold", 12e-3), frequency=frequency, number=number,
+        parts=light.lattice(s),
+    ))  # fmt: skip
+    # the matrix of orders; the mean field moves some atoms about afterwards
+    assert light.off(light.orders(run, 1), planewaves.pulsed(s, tau)) < 0.01
+    assert sum(light.orders(run).values()) == pytest.approx(1, abs=1e-3)
 
 
 @pytest.mark.slow
