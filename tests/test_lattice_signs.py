@@ -16,7 +16,7 @@ import light
 import motion
 import trapsim
 from light import RECOIL, SPACING
-from reference import planewaves
+from reference import bands, planewaves
 from trapsim.constants import HBAR
 from trapsim.prepare.setup import prepare
 from trapsim.prepare.timeline import build_timeline
@@ -155,6 +155,51 @@ def test_orders_are_told_in_free_fall(solved: Solved) -> None:
     # over 4 us the fall in the lattice matters little, and before it the atoms fell for 0.1 ms, 0.23 recoils
     assert light.off(one, other) < 0.02
     assert one["1"] > 0.05
+
+
+def kick(recoils: float) -> str:
+    return motion.stage("kick", velocity=f'["{recoils * RECOIL.velocity!r} m/s", "0 m/s", "0 m/s"]')
+
+
+@pytest.mark.parametrize("p", [-1.4, 2.6])
+def test_a_kick_after_the_light_leaves_every_atom_in_its_order(solved: Solved, p: float) -> None:
+    """A second flash meets the atoms as they then move, and changes orders by what that light does alone."""
+    s, tau = 20.0, 0.05
+    flash, wait = light.pulse(tau), light.wait(0.3)
+    first = planewaves.pulse(planewaves.start(), s, tau)
+    second = planewaves.pulse(planewaves.flight(first, 0.3, p), s, tau, p)
+    for stages, expected in (((flash, kick(p), wait), first), ((flash, kick(p), wait, flash), second)):
+        run = solved(light.plane_wave(*stages, parts=light.lattice(s), sites=10))
+        # matrix exponential
+        assert light.off(light.orders(run), planewaves.populations(expected)) < 1e-4
+    assert run.summary.stages[1].kind == "kick" and light.orders(run, 1) == pytest.approx(light.orders(run, 0), abs=1e-9)
+    # not all is in one order, so that orders counted from elsewhere are told apart
+    assert planewaves.populations(first)["0"] < 0.9
+
+
+@pytest.mark.parametrize("kicked_first", [True, False])
+def test_a_kick_as_the_lattice_lets_go_is_taken_off_before_and_after(solved: Solved, kicked_first: bool) -> None:
+    """A lattice that is on from the start has acted before the sequence begins."""
+    s, release = 5.0, motion.stage("release", 1e-4)
+    stages = (kick(1.4), release) if kicked_first else (release, kick(1.4), light.wait(0.1))
+    run = solved(light.plane_wave(*stages, parts=light.lattice(s, strength=1), sites=10))
+    # plane waves, diagonalised
+    assert light.off(light.orders(run), bands.populations(s)) < 1e-4
+
+
+def test_what_a_trap_takes_back_of_a_fall_or_a_kick_is_not_taken_off() -> None:
+    """At rest in a trap nothing falls, whatever gravity does; half a period after a kick all goes the other way."""
+    omega, speed = 2 * pi * 100, 4e-3
+    stages = (
+        light.pulse(0.01), motion.stage("hold", 3e-3),
+        motion.stage("kick", velocity=f'["{speed!r} m/s", "0 m/s", "0 m/s"]'), motion.stage("hold", pi / omega),
+        motion.stage("release", 2e-3),
+    )  # fmt: skip
+    parts = light.lattice(5) + '[gravity]\ndirection = "-x"\n'
+    steps = build_timeline(motion.cloud(*stages, frequency=(100, 100, 100), parts=parts)).steps
+    found = [step.fallen["light"][0] for step in steps]
+    # Newton's laws
+    assert found == pytest.approx([0, 0, speed, -speed, -speed - 9.80665 * 2e-3], abs=1e-9)
 
 
 def test_the_depth_is_from_top_to_bottom() -> None:

@@ -136,7 +136,7 @@ def order_shares(seen: Momentum, lattice: Lattice, *, fallen: float) -> dict[str
         Along the lattice's axis.
     lattice : Lattice
     fallen : float
-        Velocity gained from uniform forces since the lattice first acted, m/s; taken off.
+        Velocity gained from forces and kicks since the lattice first acted, m/s; taken off.
 
     Returns
     -------
@@ -152,7 +152,7 @@ def order_shares(seen: Momentum, lattice: Lattice, *, fallen: float) -> dict[str
 
 
 def order_places(seen: Momentum, lattice: Lattice, *, fallen: float) -> Mapping[str, float]:
-    """Mean velocity of each visible order, m/s, uniform forces taken off."""
+    """Mean velocity of each visible order, m/s, what forces and kicks gave taken off."""
     k, v = lattice.k, lattice.recoil_velocity
     offset = fallen / v * k
     out = {}

@@ -7,7 +7,7 @@ and a stretch answers for its closed interval with the values of its inside: not
 from __future__ import annotations
 
 import math
-from collections.abc import Mapping, Sequence
+from collections.abc import Collection, Mapping, Sequence
 from dataclasses import dataclass, field, replace
 
 import numpy as np
@@ -33,7 +33,7 @@ class Step:
     """A stretch together with the stage it belongs to and the kick at its start.
 
     `stands` are the directions in which a box or a lattice holds the cloud where it is; `fallen` the velocities (3,)
-    that uniform forces have given since each lattice first acted, at the end of the step.
+    that forces and kicks have given to the classical centre since each lattice first acted, at the end of the step.
     """
 
     stretch: Stretch
@@ -104,6 +104,7 @@ class _Builder:
         self.first_on = frozenset(n for n, p in self.parts.items() if p.strength > 0)
         self.travel: dict[str, float] = {}
         self.fallen: dict[str, Array] = {}
+        self._gain(self.parts, {}, np.zeros(3))
         at_rest = {n: replace(p, centre=(0.0, 0.0, 0.0)) if getattr(p, "centre", None) == HELD else p
                    for n, p in self.parts.items()}
         origin = equilibrium(self._stretch(0.0, 0.0, {}, at_rest).parts_at(0.0))
@@ -140,7 +141,8 @@ class _Builder:
             self.state[3:] += stage.velocity
             self.path.append(self.state.copy())
             stretch = self._stretch(start, start, {})
-            return [Step(stretch, index, True, True, stage.velocity, frozenset(), dict(self.fallen))]
+            fallen = self._gain(self.parts, {}, np.array(stage.velocity))
+            return [Step(stretch, index, True, True, stage.velocity, frozenset(), fallen)]
         before = (dict(self.parts), self.scattering)
         courses = self._courses(stage, start, stop)
         windows = self._windows(stage, start, stop)
@@ -156,8 +158,9 @@ class _Builder:
             stretch = self._stretch(t0, t1, running)
             leaving = stage.off if isinstance(stage, Release) else ()
             stands = stretch.gripped(leaving) if stage.kind in STANDING else frozenset()
-            steps.append(Step(stretch, index, t0 == start, t1 == stop, ORIGIN, stands, self._fall(stretch, stands)))
-            self._follow(stretch, stands)
+            gained = self._follow(stretch, stands)
+            fallen = self._gain(stretch.parts, stretch.courses, gained)
+            steps.append(Step(stretch, index, t0 == start, t1 == stop, ORIGIN, stands, fallen))
             for name, part in self.parts.items():
                 if isinstance(part, Lattice):
                     self.travel[name] = self.travel.get(name, 0.0) + stretch.moved_on(name, t1)
@@ -240,27 +243,28 @@ class _Builder:
                 self._met.add(name)
                 self.parts[name] = replace(part, centre=tuple(self.state[:3]))
 
-    def _fall(self, stretch: Stretch, stands: frozenset[int]) -> dict[str, Array]:
-        """Add what uniform forces do in a stretch to every lattice that has acted or acts now."""
-        free = np.array([j not in stands for j in range(3)], dtype=float)
-        middle, half = (stretch.start + stretch.stop) / 2, (stretch.stop - stretch.start) / (2 * np.sqrt(3))
-        pushes = [
-            sum((p.steer(ORIGIN)[0] for p in stretch.parts_at(t) if not p.confines), np.zeros(3))
-            for t in (middle - half, middle + half)
-        ]
-        gained = free * (stretch.stop - stretch.start) * (pushes[0] + pushes[1]) / (2 * self.plan.atoms.mass)
-        acting = {n for n, p in stretch.parts.items() if isinstance(p, Lattice) and p.strength > 0}
-        acting |= {c.partition(".")[0] for c in stretch.courses if c.endswith(".strength")}
-        for name, part in stretch.parts.items():
-            if isinstance(part, Lattice) and (name in self.fallen or name in acting):
+    def _gain(self, parts: Mapping[str, Part], courses: Collection[str], gained: Array) -> dict[str, Array]:
+        """Add a velocity (3,) to every lattice that has acted or acts now, and say what each has by then."""
+        for name, part in parts.items():
+            if not isinstance(part, Lattice):
+                continue
+            acts = part.strength * part.depth > 0 or not {f"{name}.strength", f"{name}.depth"}.isdisjoint(courses)
+            if acts or name in self.fallen:
                 self.fallen[name] = self.fallen.get(name, np.zeros(3)) + gained
         return dict(self.fallen)
 
-    def _follow(self, stretch: Stretch, stands: frozenset[int]) -> None:
-        """Carry the classical centre through a stretch; where a part holds the cloud, it stands."""
+    def _follow(self, stretch: Stretch, stands: frozenset[int]) -> Array:
+        """Carry the classical centre through a stretch; where a part holds the cloud, it stands.
+
+        Returns
+        -------
+        (3,)
+            Velocity gained on the way, m/s.
+        """
         mass = self.plan.atoms.mass
         free = np.array([j not in stands for j in range(3)], dtype=float)
         self.state[3:] *= free
+        before = self.state[3:].copy()
 
         def slope(t: float, y: Array) -> Array:
             force, _ = steered(stretch.parts_at(t), y[:3])
@@ -271,6 +275,7 @@ class _Builder:
         )
         self.state = solution.y[:, -1]
         self.path.append(self.state.copy())
+        return self.state[3:] - before
 
     def _report_left_over(self, stage: Stage, path: str, course: Course) -> None:
         left = course.left_over()

@@ -54,7 +54,7 @@ class Seen:
     recoil : float
         Wave number of one photon of that lattice, 1/m.
     fallen : float
-        Velocity that uniform forces have given since the lattice first acted, m/s.
+        Velocity that forces and kicks have given since the lattice first acted, m/s.
     momentum : Momentum
     orders : mapping of str to float
     """
@@ -102,7 +102,7 @@ class Album:
             Of mass, m.
         stage_ends : bool
         fallen : mapping of str to (3,)
-            Velocities from uniform forces since each lattice first acted.
+            Velocities from forces and kicks since each lattice first acted.
         """
         for shot in self.shots:
             if shot.time == cloud.time and shot.name not in self.pictures:

@@ -61,7 +61,7 @@ def momentum_figure(summary: Summary, momenta: Sequence[Seen], *, mass: float) -
         above.set_ylabel("share per recoil", size=TYPE, color=INK)
         below.set_ylabel("in decades", size=TYPE, color=INK)
         fallen = seen[-1].fallen * 1e3
-        off = f"; {signed(brief(fallen))} mm/s from uniform forces taken off" if abs(fallen) > 1e-6 else ""
+        off = f"; {signed(brief(fallen))} mm/s from forces and kicks taken off" if abs(fallen) > 1e-6 else ""
         below.set_xlabel(f"momentum along {along} (photon recoils){off}", size=TYPE, color=INK)
     return figure
 
@@ -71,7 +71,7 @@ def _stage(summary: Summary, index: int) -> str:
 
 
 def in_recoils(seen: Seen, *, mass: float) -> tuple[Array, Array]:
-    """Momentum in photon recoils, what uniform forces gave taken off, and the share of the atoms per recoil."""
+    """Momentum in photon recoils, what forces and kicks gave taken off, and the share of the atoms per recoil."""
     return (seen.momentum.k - mass * seen.fallen / HBAR) / seen.recoil, seen.momentum.density * seen.recoil
 
 
