@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -150,17 +150,28 @@ def summarise(
             error=ErrorEstimate(error.width, error.rate, None if error.centre is None else 1e6 * error.centre),
         ),
         pictures=tuple(_picture_figures(p, timeline.released) for p in album.pictures.values()),
-        warnings=tuple(notices),
+        warnings=(*notices, *_outside(album.pictures.values())),
     )  # fmt: skip
 
 
 def _picture_figures(picture: Picture, released: float | None) -> PictureFigures:
     centre, width = picture.moments()
     flight = None if released is None or picture.time < released else 1e3 * (picture.time - released)
+    atoms, peak = (0.0, 0.0) if picture.empty else (picture.atoms, float(picture.optical_density.max()))
     return PictureFigures(
-        picture.name, picture.camera, 1e3 * picture.time, flight, picture.atoms, float(picture.optical_density.max()),
-        tuple(1e6 * width), tuple(1e6 * centre),
+        picture.name, picture.camera, 1e3 * picture.time, flight, atoms, peak, tuple(1e6 * width), tuple(1e6 * centre)
     )
+
+
+def _outside(pictures: Iterable[Picture]) -> list[Notice]:
+    """What to say of pictures that the cloud is not on."""
+    return [
+        Notice(
+            "outside", f"picture {p.name}: the cloud is outside it, no atom is on it; change aim or size of camera "
+            f"{p.camera}, or let it follow the cloud",
+        )
+        for p in pictures if p.empty
+    ]  # fmt: skip
 
 
 def printable(text: str) -> str:

@@ -11,6 +11,8 @@ from trapsim.measure.camera import Camera
 from trapsim.measure.columns import Column
 from trapsim.space.axes import Array
 
+#: a picture with fewer atoms than this shows none: what is left is the rounding of sums over the cloud
+NOTHING = 1e-3
 
 @dataclass(frozen=True)
 class Picture:
@@ -46,8 +48,18 @@ class Picture:
         """Atoms on the picture."""
         return float(self.optical_density.sum() * self.atoms_per_od)
 
+    @property
+    def empty(self) -> bool:
+        """Whether the cloud is outside the picture."""
+        return self.atoms < NOTHING
+
     def moments(self) -> tuple[Array, Array]:
-        """Centre and rms half-widths (right, up) on the picture, m; the pixel's own width is not taken off."""
+        """Centre and rms half-widths (right, up) on the picture, m; the pixel's own width is not taken off.
+
+        Not a number where no atom is on it.
+        """
+        if self.empty:
+            return np.full(2, np.nan), np.full(2, np.nan)
         total = self.optical_density.sum()
         across, upwards = self.optical_density.sum(axis=0) / total, self.optical_density.sum(axis=1) / total
         centre = np.array([across @ self.x, upwards @ self.y])

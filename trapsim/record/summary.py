@@ -155,7 +155,7 @@ class MarchEffort(_Record):
 
 @dataclass(frozen=True)
 class PictureFigures(_Record):
-    """What a picture shows; widths and centre are to the right and upwards, at the atoms."""
+    """What a picture shows; widths and centre are to the right and upwards, at the atoms, and null where none is."""
 
     name: str
     camera: str

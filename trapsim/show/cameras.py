@@ -80,8 +80,8 @@ def windows_of(pictures: Sequence[Picture]) -> list[Window]:
     """The piece around the cloud in each picture: of one size in all of them, square on paper, inside the sensor."""
     around = []
     for one in pictures:
-        seen = np.maximum(one.optical_density, 0.0)
-        around.append((reach(one.x, seen.sum(axis=0)), reach(one.y, seen.sum(axis=1)), seen.max() > 0))
+        seen = np.maximum(one.optical_density, 0.0) * (not one.empty)
+        around.append((reach(one.x, seen.sum(axis=0)), reach(one.y, seen.sum(axis=1)), not one.empty))
     sizes = [(right[1], up[1]) for right, up, any_atoms in around if any_atoms] or [(np.inf, np.inf)]
     half_right, half_up = (max(one) for one in zip(*sizes, strict=True))
     half_right, half_up = max(half_right, THINNEST * half_up), max(half_up, THINNEST * half_right)
@@ -143,13 +143,15 @@ def _when(picture: Picture, told: PictureFigures | None) -> str:
 
 def _amount(picture: Picture, summary: Summary) -> str:
     """How many atoms are on the picture, and of how many when the cloud is not wholly on it."""
+    if picture.empty:
+        return "the cloud is outside this picture"
     whole = summary.end.atoms if summary.end is not None else picture.atoms
     some = f" of {brief(whole)}" if picture.atoms < WHOLE * whole else ""
     return f"{brief(picture.atoms)}{some} atoms, peak optical density {drawn(_peak(picture), 3)}"
 
 
 def _peak(picture: Picture) -> float:
-    return max(float(picture.optical_density.max()), 0.0)
+    return 0.0 if picture.empty else max(float(picture.optical_density.max()), 0.0)
 
 
 def draw_picture(ax: Axes, picture: Picture, window: Window) -> None:
@@ -175,8 +177,8 @@ def draw_picture(ax: Axes, picture: Picture, window: Window) -> None:
 
 def _draw_sides(above: Axes, beside: Axes, picture: Picture) -> None:
     """Atoms per length along both sides of the sensor."""
-    right = picture.optical_density.sum(axis=0) * picture.atoms_per_od / _side(picture.x)
-    up = picture.optical_density.sum(axis=1) * picture.atoms_per_od / _side(picture.y)
+    seen = picture.optical_density * picture.atoms_per_od * (not picture.empty)
+    right, up = seen.sum(axis=0) / _side(picture.x), seen.sum(axis=1) / _side(picture.y)
     above.fill_between(picture.x * 1e6, right, color=DENSITY(0.5), linewidth=0, step="mid")
     beside.fill_betweenx(picture.y * 1e6, up, color=DENSITY(0.5), linewidth=0, step="mid")
     above.set_ylim(0, (right.max() or 1.0) * 1.05)
