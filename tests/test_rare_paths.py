@@ -132,3 +132,17 @@ def test_a_held_centre_holds_against_gravity_but_not_against_a_pulse() -> None:
     w = 2 * pi * 40
     assert end.centre_um[0] == pytest.approx(3e6 / w**2 * (1 - cos(w * 1e-3)), rel=1e-6)
     assert end.centre_um[2] == pytest.approx(0, abs=1e-6)
+
+
+@pytest.mark.parametrize("frame", ["lab", "moving"])
+def test_a_push_that_comes_up_from_nothing_moves_the_cloud(frame: str) -> None:
+    """On a grid that stands the wave function itself must feel it, though there is no force at the start."""
+    omega, far = 2 * pi * 130, 0.3e-6
+    push = (
+        '[trap.push]\nkind = "gradient"\nstrength = 0\n'
+        f'acceleration = ["0 m/s^2", "0 m/s^2", "{far * omega**2!r} m/s^2"]\n'
+    )
+    ramp = stage("ramp", duration=f'"{pi / 2 / omega!r} s"', shape='"linear"', to='{ "push.strength" = 1 }')
+    run = trapsim.run(plan(ramp, more=push, numerics=f'frame = "{frame}"'))
+    # Kohn's theorem and Newton: z = far (s - sin(omega t)/(omega T)), s = t/T
+    assert run.track["centre"][-1][2] == pytest.approx(far * (1 - 2 / pi), rel=1e-3)

@@ -105,9 +105,12 @@ def _samples(stretch: Stretch) -> Sequence[float]:
 
 def _pushed(stretch: Stretch, place: Triple, held: frozenset[int]) -> frozenset[int]:
     """Those of the directions in which the frame stands along which a steerable force acts at a place."""
-    force, curvature = steered(stretch.parts_at(stretch.start), place)
-    weak = NOTHING * np.abs(curvature).max()
-    return frozenset(j for j in held if abs(force[j]) > weak)
+    out: frozenset[int] = frozenset()
+    for t in _samples(stretch):
+        force, curvature = steered(stretch.parts_at(t), place)
+        weak = NOTHING * np.abs(curvature).max()
+        out |= {j for j in held if abs(force[j]) > weak}
+    return out
 
 
 def _round_about(stretch: Stretch, place: Array, moved: frozenset[int]) -> frozenset[int]:
