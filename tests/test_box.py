@@ -51,7 +51,8 @@ class Plain:
     flown: bruteforce.Seen
 
 
-GRID = bruteforce.Grid((44, 36, 36), (30e-6, 26e-6, 26e-6), motion.RB)
+#: with a quarter fewer points its energies are off by 1e-4
+GRID = bruteforce.Grid((56, 48, 48), (30e-6, 26e-6, 26e-6), motion.RB)
 
 
 @cache
@@ -70,26 +71,28 @@ def plain(shape: str, gravity: bool = False) -> Plain:
     return Plain(bruteforce.look(GRID, u, g), bruteforce.look(GRID, flown, g))
 
 
-def test_the_plain_run_keeps_its_energy_and_knows_its_virial_theorem() -> None:
+def test_the_plain_run_keeps_its_energy() -> None:
     seen = plain("cuboid")
     before, after = (s.kinetic.sum() + s.interaction for s in (seen.rest, seen.flown))
-    assert after == pytest.approx(before, rel=1e-5)
+    assert after == pytest.approx(before, rel=1e-5, abs=0)
 
 
 @pytest.mark.parametrize("accuracy", ["draft", "normal", "fine"])
 @pytest.mark.parametrize("shape", ["cuboid", "cylinder"])
 def test_a_cloud_in_a_soft_box_and_after_it_is_let_go(solved: Solved, shape: str, accuracy: str) -> None:
     tolerance = {"draft": 2e-3, "normal": 2e-4, "fine": 2e-5}[accuracy]
+    # an energy of its own is less exact than what they are together, which flies away
+    each = {"draft": 2e-3, "normal": 1e-3, "fine": 2e-5}[accuracy]
     run = solved(plan(shape, motion.stage("release", FLIGHT), accuracy=accuracy))
     exact, track = plain(shape), run.track
     # a plain run on a fixed grid
-    assert track["width"][0] == pytest.approx(exact.rest.width, rel=tolerance)
-    assert track["width"][-1] == pytest.approx(exact.flown.width, rel=tolerance)
-    assert track["kinetic"][0] == pytest.approx(exact.rest.kinetic, rel=2 * tolerance)
-    assert track["interaction"][0] == pytest.approx(exact.rest.interaction, rel=2 * tolerance)
+    assert track["width"][0] == pytest.approx(exact.rest.width, rel=tolerance, abs=0)
+    assert track["width"][-1] == pytest.approx(exact.flown.width, rel=tolerance, abs=0)
+    assert track["kinetic"][0] == pytest.approx(exact.rest.kinetic, rel=each, abs=0)
+    assert track["interaction"][0] == pytest.approx(exact.rest.interaction, rel=each, abs=0)
     release = exact.rest.kinetic.sum() + exact.rest.interaction
     for i in (0, -1):
-        assert track["kinetic"][i].sum() + track["interaction"][i] == pytest.approx(release, rel=2 * tolerance)
+        assert track["kinetic"][i].sum() + track["interaction"][i] == pytest.approx(release, rel=tolerance, abs=0)
     assert run.summary.numerics.axes == (
         ("mirror", "radial", "radial") if shape == "cylinder" else ("mirror",) * 3
     )
