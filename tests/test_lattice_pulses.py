@@ -69,7 +69,7 @@ def test_recoil_units_are_the_printed_ones(
     mass = units.MASSES[atom]
     own = Lattice(wavelength=wavelength * 1e-9, depth=0.0, mass=mass)
     recoil = planewaves.Recoil(mass, wavelength * 1e-9 / 2)
-    assert (own.recoil_energy, own.recoil_velocity) == pytest.approx((recoil.energy, recoil.velocity), rel=1e-12)
+    assert (own.recoil_energy, own.recoil_velocity) == pytest.approx((recoil.energy, recoil.velocity), rel=1e-12, abs=0)
     # independent calculation
     assert 1e-3 * recoil.hertz == pytest.approx(kilohertz, abs=6e-6)
     assert 1e9 * recoil.kelvin == pytest.approx(nanokelvin, rel=1e-5)
@@ -127,13 +127,11 @@ def test_two_flashes_a_talbot_time_apart(solved: Solved, share: float, theta: fl
 
 
 @pytest.mark.parametrize(("s", "tau", "printed"), planewaves.SHORT_PULSES[::2])
-def test_a_flash_on_a_narrow_cloud_and_where_its_orders_fly(
-    solved: Solved, s: float, tau: float, printed: tuple[float, ...]
-) -> None:
+def test_a_flash_on_a_narrow_cloud_and_where_its_orders_fly(s: float, tau: float, printed: tuple[float, ...]) -> None:
     flight = 15e-3
     camera = '[camera.side]\nview = "y"\npixel = "4 um"\nmagnification = 2.0\nsize = [600, 64]\nwavelength = "780.241 nm"'
     stages = (light.pulse(tau), motion.stage("hold", flight, pictures='["15 ms"]'))
-    run = solved(released(*stages, s=s, numerics=f'{camera}\n'))
+    run = trapsim.run(released(*stages, s=s, numerics=camera))
     found = light.orders(run)
     assert light.off(found, planewaves.averaged(s, tau, NARROW)) < 1e-5
     # independent calculation for a plane wave at rest
@@ -148,7 +146,7 @@ def test_a_flash_on_a_narrow_cloud_and_where_its_orders_fly(
         assert across[near].sum() / across.sum() == pytest.approx(found[str(n)], abs=1e-4)
 
 
-@pytest.mark.parametrize("s", [1.0, 4.0])
+@pytest.mark.parametrize("s", [2.0, 4.0])
 def test_a_bragg_pi_pulse_on_a_narrow_cloud(solved: Solved, s: float) -> None:
     run = solved(released(light.pulse(2 * pi / s, detuning=4.0), s=s))
     # matrix exponential, averaged over the Gaussian spread of wave numbers

@@ -34,11 +34,11 @@ def beam(depth: float, **more: object) -> Beam:
 def test_the_waist_is_where_the_intensity_is_one_over_e_squared() -> None:
     one = beam(MICROKELVIN)
     assert one.energy(0.0, 0.0, 0.0) == -MICROKELVIN
-    assert one.energy(0.0, WAIST, 0.0) == pytest.approx(-MICROKELVIN * np.exp(-2), rel=1e-14)
+    assert one.energy(0.0, WAIST, 0.0) == pytest.approx(-MICROKELVIN * np.exp(-2), rel=1e-10, abs=0)
     # a Rayleigh range along the beam the peak is halved and the waist is sqrt(2) larger
     rayleigh = pi * WAIST**2 / WAVELENGTH
-    assert one.energy(rayleigh, 0.0, 0.0) == pytest.approx(-MICROKELVIN / 2, rel=1e-14)
-    assert one.energy(rayleigh, 0.0, sqrt(2) * WAIST) == pytest.approx(-MICROKELVIN / 2 * np.exp(-2), rel=1e-14)
+    assert one.energy(rayleigh, 0.0, 0.0) == pytest.approx(-MICROKELVIN / 2, rel=1e-10, abs=0)
+    assert one.energy(rayleigh, 0.0, sqrt(2) * WAIST) == pytest.approx(-MICROKELVIN / 2 * np.exp(-2), rel=1e-10, abs=0)
 
 
 @pytest.mark.parametrize("direction", ["x", "y", "z", (1.0, 1.0, 0.0), (1.0, -2.0, 3.0)])
@@ -49,8 +49,8 @@ def test_light_goes_where_its_direction_says(direction: object) -> None:
     one = beam(MICROKELVIN, direction=direction, focus=tuple(focus))
     across = np.cross(along, [0.3, 0.5, -0.7])
     across *= WAIST / np.linalg.norm(across)
-    assert one.energy(*(focus + 0.1e-3 * along)) == pytest.approx(one.energy(*(focus - 0.1e-3 * along)), rel=1e-12)
-    assert one.energy(*(focus + across)) == pytest.approx(-MICROKELVIN * np.exp(-2), rel=1e-12)
+    assert one.energy(*(focus + 0.1e-3 * along)) == pytest.approx(one.energy(*(focus - 0.1e-3 * along)), rel=1e-12, abs=0)
+    assert one.energy(*(focus + across)) == pytest.approx(-MICROKELVIN * np.exp(-2), rel=1e-12, abs=0)
 
 
 def test_trap_frequencies_are_those_of_the_harmonic_expansion() -> None:
@@ -59,28 +59,33 @@ def test_trap_frequencies_are_those_of_the_harmonic_expansion() -> None:
     assert not force.any()
     rayleigh = pi * WAIST**2 / WAVELENGTH
     # Grimm et al.: omega_r^2 = 4 U/(m w^2), omega_z^2 = 2 U/(m z_R^2)
-    assert curvature[1:] == pytest.approx([4 * 30 * MICROKELVIN / WAIST**2] * 2, rel=1e-12)
-    assert curvature[0] == pytest.approx(2 * 30 * MICROKELVIN / rayleigh**2, rel=1e-12)
+    assert curvature[1:] == pytest.approx([4 * 30 * MICROKELVIN / WAIST**2] * 2, rel=1e-12, abs=0)
+    assert curvature[0] == pytest.approx(2 * 30 * MICROKELVIN / rayleigh**2, rel=1e-12, abs=0)
 
 
-places = st.tuples(st.floats(-3e-3, 3e-3), st.floats(-60e-6, 60e-6), st.floats(-60e-6, 60e-6))
+#: m along the beam and across it, from the focus
+places = st.tuples(st.floats(-9e-3, 9e-3), st.floats(-60e-6, 60e-6), st.floats(-60e-6, 60e-6))
 
 
 @pytest.mark.parametrize("direction", ["x", (1.0, 1.0, 0.0), (1.0, -2.0, 3.0)])
 @given(place=places)
 def test_force_and_curvature_are_the_derivatives_of_the_energy(direction: object, place: tuple[float, ...]) -> None:
     one = beam(30 * MICROKELVIN, direction=direction, focus=(1e-6, 2e-6, -3e-6))
-    force, curvature = one.steer(place)
-    h = 1e-7
+    along = one.along()
+    aside = np.cross(along, [0.36, 0.48, 0.8])
+    aside /= np.linalg.norm(aside)
+    place = np.array(one.focus) + place[0] * along + place[1] * aside + place[2] * np.cross(along, aside)
+    force, curvature = one.steer(tuple(place))
+    h = 1e-6
     for j in range(3):
         step = np.zeros(3)
         step[j] = h
         # differences of fourth order
-        f = [one.energy(*(np.array(place) + n * step)) for n in (-2, -1, 0, 1, 2)]
+        f = [one.energy(*(place + n * step)) for n in (-2, -1, 0, 1, 2)]
         slope = (f[0] - 8 * f[1] + 8 * f[3] - f[4]) / (12 * h)
         bend = (-f[0] + 16 * f[1] - 30 * f[2] + 16 * f[3] - f[4]) / (12 * h**2)
-        assert -force[j] == pytest.approx(slope, abs=1e-7 * 30 * MICROKELVIN / WAIST)
-        assert curvature[j] == pytest.approx(bend, abs=1e-4 * 30 * MICROKELVIN / WAIST**2)
+        assert -force[j] == pytest.approx(slope, abs=1e-6 * 30 * MICROKELVIN / WAIST)
+        assert curvature[j] == pytest.approx(bend, abs=1e-5 * 30 * MICROKELVIN / WAIST**2)
 
 
 def test_what_is_left_has_neither_slope_nor_curvature_at_the_centre() -> None:

@@ -30,7 +30,7 @@ def test_half_the_height_is_met_at_half_the_size_and_the_edge_is_10_to_90_percen
     assert wall(-half) == pytest.approx(0.5, abs=1e-12)
     assert wall(0.0) == pytest.approx(0.0, abs=1e-12)
     inner, outer = (optimize.brentq(lambda u, s=s: wall(u) - s, half - 3e-6, half + 3e-6, xtol=1e-15) for s in (0.1, 0.9))
-    assert outer - inner == pytest.approx(box.edge, rel=1e-9)
+    assert outer - inner == pytest.approx(box.edge, rel=1e-9, abs=0)
 
 
 def test_the_profile_is_the_integral_of_a_normal_distribution() -> None:
@@ -64,7 +64,7 @@ def test_a_cylinder_is_round_about_its_axis(axis: str) -> None:
 def test_strength_multiplies_it_and_it_steers_nothing() -> None:
     place = (np.array([19e-6]), ZERO, ZERO)
     half = Box(size=SIZE, height=HEIGHT, edge=1.5e-6, strength=0.5)
-    assert half.energy(*place) == pytest.approx(0.5 * CUBOID.energy(*place), rel=1e-14)
+    assert half.energy(*place) == pytest.approx(0.5 * CUBOID.energy(*place), rel=1e-14, abs=0)
     assert not np.any(CUBOID.steer((1e-6, 2e-6, 3e-6)))
     assert gripped([CUBOID]) == frozenset({0, 1, 2})
     assert gripped([Box(size=SIZE, height=HEIGHT, edge=1.5e-6, strength=0.0)]) == frozenset()

@@ -28,9 +28,9 @@ def test_beams_at_an_angle_are_told_by_their_spacing_and_the_recoil_follows_it()
     angle = pi / 3
     spacing = 1064e-9 / (2 * sin(angle / 2))
     tilted = Lattice(spacing=spacing, depth=1e-30, mass=MASS)
-    assert spacing == pytest.approx(1064e-9, rel=1e-12)
-    assert tilted.recoil_energy == pytest.approx(LATTICE.recoil_energy / 4, rel=1e-12)
-    assert tilted.recoil_energy == pytest.approx(Recoil(MASS, spacing).energy, rel=1e-12)
+    assert spacing == pytest.approx(1064e-9, rel=1e-12, abs=0)
+    assert tilted.recoil_energy == pytest.approx(LATTICE.recoil_energy / 4, rel=1e-12, abs=0)
+    assert tilted.recoil_energy == pytest.approx(Recoil(MASS, spacing).energy, rel=1e-12, abs=0)
 
 
 @pytest.mark.parametrize("axis", ["x", "y", "z"])
@@ -39,7 +39,7 @@ def test_it_varies_along_its_axis_only(axis: str) -> None:
     place = [np.array([0.1e-6]), np.array([0.7e-6]), np.array([-0.4e-6])]
     other = [p if i == j else p + 1e-3 for i, p in enumerate(place)]
     assert part.energy(*other) == part.energy(*place)
-    assert part.energy(*place) == pytest.approx(1e-30 * sin(pi * place[j][0] / 532e-9 + 0.3) ** 2, rel=1e-12)
+    assert part.energy(*place) == pytest.approx(1e-30 * sin(pi * place[j][0] / 532e-9 + 0.3) ** 2, rel=1e-12, abs=0)
     symmetry = part.symmetry()
     assert symmetry.round_about == frozenset({j})
     assert gripped([part]) == frozenset({j})
@@ -50,15 +50,15 @@ def test_it_varies_along_its_axis_only(axis: str) -> None:
     for n in range(-3, 4):
         centre = about.x + n * about.period
         left, right = (part.energy(*[np.array([centre + s * 77e-9])] * 3) for s in (-1, 1))
-        assert left == pytest.approx(right, rel=1e-9)
-    assert about.period == pytest.approx(266e-9)
+        assert left == pytest.approx(right, rel=1e-9, abs=0)
+    assert about.period == pytest.approx(266e-9, rel=1e-12, abs=0)
 
 
 def test_the_nearest_minimum_is_one_and_is_near() -> None:
     for x in np.linspace(-2e-6, 2e-6, 17):
         there = LATTICE.nearest_minimum(float(x))
         assert abs(there - x) <= 266e-9 * (1 + 1e-12)
-        assert LATTICE.energy(np.array([there]), ZERO, ZERO)[0] < 1e-58
+        assert LATTICE.energy(np.array([there]), ZERO, ZERO)[0] < 1e-46
 
 
 def test_what_is_left_to_the_wave_function_is_all_of_it() -> None:
@@ -85,5 +85,5 @@ def test_enough_points_per_period_for_the_ground_state(s: float) -> None:
 def test_how_fast_it_changes_for_an_atom_that_flies_past() -> None:
     moving = Lattice(wavelength=1064e-9, depth=1e-30, detuning=2 * pi * 5e3, mass=MASS)
     # an atom at 0.2 m/s meets sites of 532 nm at 376 kHz
-    assert LATTICE.rate(np.array([0.2, 0.0, 0.0])) == pytest.approx(2 * pi * 0.2 / 532e-9, rel=1e-12)
-    assert moving.rate(np.zeros(3)) == pytest.approx(2 * pi * 5e3, rel=1e-12)
+    assert LATTICE.rate(np.array([0.2, 0.0, 0.0])) == pytest.approx(2 * pi * 0.2 / 532e-9, rel=1e-12, abs=0)
+    assert moving.rate(np.zeros(3)) == pytest.approx(2 * pi * 5e3, rel=1e-12, abs=0)
