@@ -88,7 +88,10 @@ def pictures_table(pictures: Sequence[PictureFigures]) -> Html | None:
     rows = []
     for one in pictures:
         # a nanometre is nothing to a camera
-        size, place = (", ".join(small(round(value, 3)) for value in pair) for pair in (one.width_um, one.centre_um))
+        size, place = (
+            ", ".join(small(None if value is None else round(value, 3)) for value in pair)
+            for pair in (one.width_um, one.centre_um)
+        )
         cells = (brief(one.time_ms), brief(one.flight_ms), brief(one.atoms), four(one.peak_optical_density), size, place)
         rows.append([one.name, *numbers(cells)])
     return table(head, rows, kind="numbers")
