@@ -37,7 +37,7 @@ HOLD = 2e-3
 RECOIL = 2 * np.pi / 1064e-9
 #: Shares of the orders -1, 0, 1, and the velocity that gravity had given along z by then, m/s.
 SHARES, FALLEN = (0.2, 0.7, 0.1), -0.05
-#: What uniform forces had done to the orders at the first look: nothing yet.
+#: What forces and kicks had done to the orders at the first look: nothing yet.
 FIRST = (0.15, 0.75, 0.1)
 STAGES = (("hold", "hold", 0.0, 2.0), ("nudge", "kick", 2.0, 0.0), ("release", "release", 2.0, 20.0))
 

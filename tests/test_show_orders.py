@@ -56,7 +56,7 @@ def test_the_figure_names_orders_lattices_and_what_was_taken_off(momenta: tuple)
     seen = words(momentum_figure(summary, (*momenta, *second), mass=invented_run.MASS))
     assert {"light, along z: at the end of release", "green, along z: at the end of release"} <= set(seen)
     assert {"−1: 20.0 %", "0: 70.0 %", "+1: 10.0 %", "dashed: at the end of nudge"} <= set(seen)
-    assert "momentum along z (photon recoils); −50 mm/s from uniform forces taken off" in seen
+    assert "momentum along z (photon recoils); −50 mm/s from forces and kicks taken off" in seen
     assert not [one for one in seen if "e-" in one or "10^" in one or "\\times" in one]
 
 
