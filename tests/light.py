@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from dataclasses import replace
 
 import numpy as np
 
@@ -86,6 +87,12 @@ def orders(run: trapsim.Run, stage: int | None = None) -> dict[str, float]:
 def off(found: dict[str, float], expected: dict[str, float]) -> float:
     """The largest difference of two sets of populations."""
     return max(abs(found.get(n, 0.0) - expected.get(n, 0.0)) for n in {*found, *expected})
+
+
+def whole(cloud: Cloud) -> Cloud:
+    """The same cloud with both sides of every mirror axis."""
+    phi, space = cloud.space.unfolded(cloud.phi)
+    return replace(cloud, phi=phi, space=space)
 
 
 def amplitudes(cloud: Cloud) -> Array:

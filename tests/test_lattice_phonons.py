@@ -15,7 +15,6 @@ import light
 import motion
 import trapsim
 from reference import units
-from trapsim.cloud.cloud import unfolded
 from trapsim.prepare.setup import prepare
 
 D, LENGTH, FLASH, PHI = 10e-6, 20e-6, 2e-6, 0.01
@@ -42,7 +41,7 @@ def test_an_imprint_of_phase_rings_at_bogoliubovs_frequency(axis: str, number: f
     eps = sqrt(e0 * (e0 + 2 * gn))
     times = [share * pi / eps for share in (0.1, 0.5, 1.0, 1.5, 2.2)]
     setup = prepare(imprinted(axis, number, times))
-    clouds = [unfolded(t.state.cloud) for t in motion.play(setup, motion.begin(setup)) if t.reason != "step"]
+    clouds = [light.whole(t.state.cloud) for t in motion.play(setup, motion.begin(setup)) if t.reason != "step"]
     assert clouds[-1].space.words().count("uniform") == 2
     scale = 2 * PHI * e0 / eps
     for t, cloud in zip(times, clouds[-len(times):], strict=True):

@@ -13,7 +13,7 @@ import pytest
 import light
 import motion
 from reference import units
-from trapsim.cloud.cloud import Cloud, unfolded
+from trapsim.cloud.cloud import Cloud
 from trapsim.measure.momentum import Momentum, momentum, order_places, order_shares
 from trapsim.prepare.setup import prepare
 from trapsim.space.axes import Mirror, Radial, Wave
@@ -31,7 +31,7 @@ def direct(cloud: Cloud, j: int, k: Array, *, finer: int = 24) -> Array:
 
     psi = B^(-1/2) phi exp{ (i/q) [ bdot y^2/(2 b) + Xdot y ] }, as the frame is defined.
     """
-    cloud = unfolded(cloud)
+    cloud = light.whole(cloud)
     axis, d, frame = cloud.space.axis(j), cloud.space.dim(j), cloud.frame
     length, n = 2 * axis.half_extent, axis.n * finer
     xi = (np.arange(n) + 0.5) / n * length - length / 2
