@@ -121,7 +121,7 @@ class ColumnViews:
         if isinstance(axis, Radial):
             spread = profile  # a round cloud was spread over the raster's own line
         else:
-            spread = profile @ axis.basis(rows).T
+            spread = profile @ axis.density_basis(rows).T
         middle = frame.X[right] * cosine - frame.X[along] * sine
         # grid measures along and right cancel against the density's own; up is left
         return Column(s + middle, frame.lab(rows, up), spread.T / frame.b[up], view, cloud.time)
@@ -176,7 +176,7 @@ class ColumnViews:
         return rows @ rest @ columns.T
 
     def _ontomidpoints(self, d: int) -> Array:
-        return self.finer[d].basis(self._lines[d])
+        return self.finer[d].density_basis(self._lines[d])
 
     def _round(self, profile: Array) -> Array:
         """A round cloud seen along its axis: a profile in r, spread over the raster."""
