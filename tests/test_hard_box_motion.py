@@ -1,7 +1,7 @@
 """Motion between perfectly reflecting walls: revivals, mirrors, bounces, and what opening them costs.
 
-Source of the revivals: D. L. Aronstein and C. R. Stroud, Phys. Rev. A 55, 4526 (1997), abstract; E_n = (n pi hbar/L)^2/2m is
-textbook. All else is closed form.
+Source of the revivals: D. L. Aronstein and C. R. Stroud, Phys. Rev. A 55, 4526 (1997), abstract; E_n = (n pi hbar/L)^2/2m
+is textbook. All else is closed form.
 """
 
 from __future__ import annotations

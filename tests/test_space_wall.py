@@ -101,7 +101,19 @@ def test_the_mean_wave_number_of_two_modes_is_that_of_quantum_mechanics() -> Non
     # (psi_1 + i psi_2)/sqrt(2): <k> = Im int psi* psi' = -8/(3 L) (closed form), touching both walls
     axis = Wall((0,), 96, HALF)
     seen = profile(box_cloud((mode(axis, 1) + 1j * mode(axis, 2)) / np.sqrt(2)))
-    assert seen.k_mean[0] == pytest.approx(-8 / (3 * LENGTH), rel=1e-6)
+    assert seen.k_mean[0] == pytest.approx(-8 / (3 * LENGTH), rel=1e-12)
+
+
+@pytest.mark.parametrize("n", [12, 25])
+def test_moments_of_the_lowest_mode_are_exact_on_few_points(n: int) -> None:
+    axis = Wall((0,), n, HALF)
+    first, second = mode(axis, 1), mode(axis, 2)
+    # <x^2> = L^2 (1/12 - 1/(2 pi^2)); <x> of (1 + 2)/sqrt(2) is -16 L/(9 pi^2); closed forms
+    assert axis.weights * first**2 @ axis.x2(0) == pytest.approx(LENGTH**2 * (1 / 12 - 1 / (2 * pi**2)), rel=1e-13)
+    assert axis.weights * (first + second) ** 2 / 2 @ axis.x1(0) == pytest.approx(-16 * LENGTH / (9 * pi**2), rel=1e-13)
+    # <x k>_sym of (1 + i 3)/sqrt(2): Im int psi* x psi' = int x (psi_1 psi_3' - psi_3 psi_1')/2 = 3/4 (closed form)
+    seen = profile(box_cloud((mode(Wall((0,), n, HALF), 1) + 1j * mode(Wall((0,), n, HALF), 3)) / np.sqrt(2), n))
+    assert seen.cov[0] == pytest.approx(0.75, rel=1e-12)
 
 
 def test_a_cloud_at_its_walls_is_not_at_an_edge() -> None:

@@ -73,7 +73,7 @@ def profile(cloud: Cloud) -> Profile:
         twist = np.conj(cloud.phi) * space.gradient(cloud.phi, d)
         twists = space.marginals(twist.imag)[d]
         lever = float(np.dot(twists, axis.weights * axis.lever)) / norm
-        drift = float(np.dot(twists, axis.weights)) / norm if axis.carries_velocity else 0.0
+        drift = float(np.dot(twists, axis.weights * axis.drift)) / norm
         flow[d] = np.divide(twists, density[d], out=np.zeros(axis.n), where=density[d] > FAINT * density[d].max())
         for j in axis.covers:
             weighted = density[d] * axis.weights / norm

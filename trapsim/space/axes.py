@@ -36,6 +36,7 @@ class Wave(Axis):
         self.k = 2 * np.pi * np.fft.fftfreq(n, spacing)
         self.spectral_weights = np.full(n, spacing / n)
         self.lever = self.points
+        self.drift = 1.0
         self.fftw = COMPLEX if n > 1 else None
         self.round_trip = float(n)
         self.carries_velocity = n > 1
@@ -158,7 +159,8 @@ class Wall(Axis):
     """Between two perfectly reflecting walls, where the field vanishes; sines on half-cell midpoints.
 
     Its points are those of the wave axis of the same length; the walls are half a spacing beyond the outermost. The
-    field is odd about either wall, so that its gradient and its density are even there: series of cosines.
+    field is odd about either wall, so that its gradient and its density are even there: series of cosines. Moments are
+    the integrals of these series, since a plain sum of x^2 n is no better than the fourth power of the spacing.
 
     Parameters
     ----------
@@ -185,17 +187,31 @@ class Wall(Axis):
         self.k = np.pi * np.arange(1, n + 1) / (2 * self.half_extent)
         self.spectral_weights = np.full(n, spacing / (2 * n))
         self.spectral_weights[-1] /= 2
-        self.lever = self.points
         self.round_trip = 2.0 * n
         # the series of samples f: (1/2n) [ 2 sum_m Y_m sin(k_m s) + Y_n sin(k_n s) ], s from the wall, Y = forward f
         self._forward = 2 * np.sin(np.outer(self.k, self.points + self.half_extent))
         self._shares = np.where(np.arange(1, n + 1) == n, 1.0, 2.0) / (2 * n)
         self.gradient_matrix = np.ascontiguousarray(self.slopes(self.points))
+        self._cosines = self.k - self.k[0]
+        self._to_cosines = np.cos(np.outer(self._cosines, self.points + self.half_extent))
+        self._to_cosines *= np.where(self._cosines == 0, 1.0, 2.0)[:, None] / n
+        # integrals of 1 and x with each sine, of x and x^2 with each cosine, from wall to wall
+        length, k, even = 2 * self.half_extent, self.k, np.arange(1, n + 1) % 2 == 0
+        sines = (self._shares[:, None] * self._forward) / spacing
+        self.drift = np.where(even, 0.0, 2 / k) @ sines
+        self.lever = np.where(even, -length / k, 0.0) @ sines
+        k, even = np.where(self._cosines > 0, self._cosines, np.inf), np.arange(n) % 2 == 0
+        self._x1 = np.where(even, 0.0, -2 / k**2) @ self._to_cosines / spacing
+        self._x2 = (np.where(even, 2 * length / k**2, 0.0) + (self._cosines == 0) * length**3 / 12) @ self._to_cosines
+        self._x2 /= spacing
 
     def x1(self, j: int) -> Array:
-        return self.points
+        return self._x1
 
     def x2(self, j: int) -> Array:
+        return self._x2
+
+    def square(self, j: int) -> Array:
         return self.points**2
 
     def k2(self, j: int) -> Array:
@@ -211,11 +227,9 @@ class Wall(Axis):
     def density_basis(self, x: Array) -> Array:
         """The cosine series on each point, zero beyond the walls."""
         x = np.asarray(x, dtype=float)
-        k = self.k - self.k[0]
-        shares = np.where(k == 0, 1.0, 2.0) / self.n
-        series = np.cos(np.outer(x + self.half_extent, k)) * shares[None, :]
+        series = np.cos(np.outer(x + self.half_extent, self._cosines))
         series[np.abs(x) > self.half_extent] = 0.0
-        return series @ np.cos(np.outer(k, self.points + self.half_extent))
+        return series @ self._to_cosines
 
     def slopes(self, x: Array) -> Array:
         """(len(x), n): the derivative of the sine series between the walls and at them."""

@@ -7,9 +7,9 @@ A member of the family says, for arrays of n samples along it:
 3. `k` (n,) 1/m and `spectral_weights` (n,): weighted sums of |spectrum|^2 give the same norm;
 4. its transform: either a one-dimensional transform of FFTW (`fftw` names the way there and the way back) whose round
    trip multiplies by `round_trip`, or a pair of real matrices (`forward_matrix`, `inverse_matrix`);
-5. `x1(j)`, `x2(j)`, `k2(j)` (n,): the powers of x_j and k_j whose weighted sums are <x_j>, <x_j^2> and <k_j^2>; the
-   mean of k_j is zero unless it `carries_velocity`, and then that of the gradient;
-6. `lever` (n,): x_j d/dx_j = lever * gradient for every covered direction j;
+5. `x1(j)`, `x2(j)`, `k2(j)` (n,): what makes weighted sums of density and spectrum <x_j>, <x_j^2> and <k_j^2>; and
+   `square(j)`, x_j^2 itself on the points;
+6. `lever`, `drift` (n,): what makes weighted sums of Im(f* df) <x_j k_j> and <k_j> for every covered direction j;
 7. `basis(x)` (len(x), n): the matrix that evaluates the samples' own series anywhere; zero outside; and
    `density_basis(x)`, the same for samples of a density.
 """
@@ -35,6 +35,7 @@ class Axis:
     k: Array
     spectral_weights: Array
     lever: Array
+    drift: Array | float = 0.0
     half_extent: float
     spacing: float
     fftw: tuple[str, str] | None = None
@@ -76,6 +77,9 @@ class Axis:
 
     def x2(self, j: int) -> Array:
         raise TypeError(f"{type(self).__name__} does not say x2")
+
+    def square(self, j: int) -> Array:
+        return self.x2(j)
 
     def k2(self, j: int) -> Array:
         raise TypeError(f"{type(self).__name__} does not say k2")

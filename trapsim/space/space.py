@@ -100,10 +100,10 @@ class Space:
 
     def quadratic(self, coefficients: Sequence[float]) -> Array:
         """sum_j c_j x_j^2 on the points."""
-        return sum(self.along(d, v) for d, v in enumerate(self.per_axis(coefficients, "x2")))
+        return sum(self.along(d, v) for d, v in enumerate(self.per_axis(coefficients, "square")))
 
     def per_axis(self, coefficients: Sequence[float], power: str) -> list[Array]:
-        """Per array dimension, the sum over its directions of c_j times x1, x2 or k2."""
+        """Per array dimension, the sum over its directions of c_j times x1, x2, square or k2."""
         return [sum(coefficients[j] * getattr(a, power)(j) for j in a.covers) for a in self.axes]
 
     # transforms
