@@ -11,6 +11,7 @@ from math import pi
 
 import numpy as np
 import pytest
+from scipy import special
 
 import boxes
 from boxes import Q
@@ -87,6 +88,45 @@ def test_a_frame_that_comes_to_rest_between_walls_leaves_the_kick_to_the_packet(
     assert last.frame.Xdot[0] == 0 and last.frame.X[0] == 0
     assert Q * seen.k_mean[0] == pytest.approx(1.5e-3, rel=1e-7)
     assert seen.mean[0] == pytest.approx(3 * UM, abs=1e-12)
+
+
+def test_between_walls_a_cloud_moves_as_with_its_odd_image_in_a_periodic_box() -> None:
+    """The method of images: no wall is needed where the wave function is odd about it, whatever the mean field."""
+    points, time, c = 48, 5e-3, 1e-14
+    walls = boxes.space([SIZE], points)
+    # the image stands on the other side of the upper wall; seen from there the axis is twice as long
+    wide = Space([Wave((0,), 2 * points, SIZE), *walls.axes[1:]])
+    phi = packet(walls, [2 * UM], [0.3e-3], 2 * UM)
+    image = np.concatenate([phi, -phi[::-1]])
+    ends = []
+    for space, start, share in ((walls, phi, 1.0), (wide, image, 2.0)):
+        ticks = boxes.play(start, space, [boxes.leg(space, 0.0, time, c=c * share)])
+        ends.append([t.state.copy().cloud for t in ticks][-1])
+    one, both = (e.phi.ravel() for e in ends)
+    assert np.abs(np.sqrt(2) * both[:points] - one).max() < 1e-10 * np.abs(one).max()
+    assert np.abs(both[:points] + both[::-1][:points]).max() < 1e-10 * np.abs(both).max()
+    # the mean field matters
+    ideal = list(boxes.play(phi, walls, [boxes.leg(walls, 0.0, time)]))[-1].state.cloud.phi.ravel()
+    assert walls.integral(np.abs(ideal - one).reshape(walls.shape) ** 2) > 0.01
+
+
+def test_a_dark_soliton_in_the_middle_of_a_box_stays_and_turns_its_phase_with_the_chemical_potential() -> None:
+    # the lowest odd state is one period of Jacobi's sn: psi = A sn(4 K s/L | m), g = 16 K (K - E)/L, mu = 8 K^2 (1 + m)/L^2
+    # in units hbar = m = 1 (Carr, Clark and Reinhardt, value from memory): each half holds the ground state of half a box
+    m = 0.9
+    complete, second = special.ellipk(m), special.ellipe(m)
+    space = boxes.space([SIZE], 128)
+    sn, _, _, _ = special.ellipj(4 * complete * (space.coordinates()[0] + SIZE / 2) / SIZE, m)
+    across = 1e-12  # m^2, of the two directions along which nothing varies
+    c = 16 * complete * (complete - second) * Q / SIZE * across
+    mu = 8 * complete**2 * (1 + m) * Q / SIZE**2
+    time = 20 / mu
+    last = list(boxes.play(sn * np.ones(space.shape), space, [boxes.leg(space, 0.0, time, c=c)]))[-1].state.cloud
+    start = space.array(sn / np.sqrt(space.integral(sn**2 * np.ones(space.shape))))
+    # plain steps under the cap: a phase of 20 rad to 1e-4 of it
+    overlap = space.integral((np.conj(start) * last.phi).real) + 1j * space.integral((np.conj(start) * last.phi).imag)
+    assert abs(overlap) == pytest.approx(1, abs=1e-7)
+    assert np.angle(overlap * np.exp(1j * mu * time)) == pytest.approx(0, abs=2e-3)
 
 
 @pytest.mark.parametrize("points", [32, 64])
