@@ -79,6 +79,15 @@ def test_beside_any_other_axis_a_kinetic_flow_turns_each_mode_by_its_own_energy(
     np.testing.assert_allclose(phi, across * space.along(d, turned), atol=1e-13)
 
 
+@pytest.mark.parametrize("wall", [0, 1])
+def test_sines_and_cosines_in_one_transform_keep_to_their_own_axes(wall: int) -> None:
+    space = Space([Wall((wall,), 20, HALF), Mirror((1 - wall,), 12, 2.0), Wave((2,), 1, 0.5)])
+    phi = space.array(space.along(wall, mode(space.axis(wall), 3)) * np.ones(space.shape))
+    found = np.abs(space.forward(phi)) > 1e-9
+    # one line: the third sine, and the constant of the cosines
+    assert np.argwhere(found).tolist() == [[2, 0, 0] if wall == 0 else [0, 2, 0]]
+
+
 def box_cloud(phi: np.ndarray, n: int = 96) -> Cloud:
     axis = Wall((0,), n, HALF)
     space = proofs.alone(axis)
