@@ -19,7 +19,7 @@ from trapsim.measure.flow import current
 from trapsim.measure.observables import moments, profile
 from trapsim.measure.views import VIEWS
 from trapsim.prepare.timeline import build_timeline
-from trapsim.space.axes import Radial, Wave
+from trapsim.space.axes import Radial, Wall, Wave
 from trapsim.space.frame import Frame
 from trapsim.space.space import Space
 from trapsim.terms.field import Gradient, Gravity
@@ -121,6 +121,15 @@ def test_the_forward_transform_finds_exp_plus_ikx_at_plus_k() -> None:
     spectrum = space.forward(space.array(np.exp(1j * k * space.coordinates()[0]))).ravel()
     assert np.argmax(np.abs(spectrum)) == 1
     assert space.axes[0].k[1] == pytest.approx(k)
+
+
+def test_the_sines_of_a_wall_axis_start_at_the_lower_wall_half_a_spacing_before_the_first_point() -> None:
+    space = Space([Wall((0,), 32, 5.0), Wave((1,), 1, 0.5), Wave((2,), 1, 0.5)])
+    axis = space.axis(0)
+    assert axis.points[0] - axis.spacing / 2 == pytest.approx(-5.0)
+    spectrum = space.forward(space.array(np.sin(axis.k[2] * (space.coordinates()[0] + 5.0)))).ravel()
+    assert axis.k[2] == pytest.approx(3 * pi / 10) and axis.round_trip == 64
+    np.testing.assert_allclose(spectrum, 32 * np.eye(32)[2], atol=1e-12)
 
 
 def test_transforms_carry_no_factor_and_a_round_trip_multiplies_by_the_number_of_points() -> None:

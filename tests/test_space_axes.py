@@ -33,7 +33,7 @@ def test_a_wave_axis_spans_its_period_with_cells_around_the_middle() -> None:
 def test_the_highest_wave_of_an_even_axis_counts_in_energy_but_not_in_current() -> None:
     axis = Wave((0,), 8, 4.0)
     assert axis.k2(0).max() == pytest.approx(np.pi**2)
-    assert np.abs(axis.k1(0)).max() == pytest.approx(0.75 * np.pi)
+    assert np.abs(axis.derivative_k()).max() == pytest.approx(0.75 * np.pi)
 
 
 def test_a_wave_series_is_exact_for_every_wave_it_holds() -> None:
@@ -100,7 +100,7 @@ def test_a_flat_axis_has_no_side_view() -> None:
 
 
 def test_an_unfinished_kind_of_axis_says_what_it_lacks() -> None:
-    for ask in (lambda a: a.x1(0), lambda a: a.x2(0), lambda a: a.k1(0), lambda a: a.k2(0), lambda a: a.basis(0)):
+    for ask in (lambda a: a.x1(0), lambda a: a.x2(0), lambda a: a.k2(0), lambda a: a.basis(0)):
         with pytest.raises(TypeError, match="Axis does not say"):
             ask(Axis())
     with pytest.raises(TypeError, match="no finer twin"):

@@ -8,7 +8,7 @@ from scipy import optimize
 
 from reference import bruteforce
 from trapsim.terms.box import Box
-from trapsim.terms.part import About, gripped
+from trapsim.terms.part import About, gripped, walled
 
 HEIGHT = 3e-30
 SIZE = (40e-6, 24e-6, 30e-6)
@@ -59,6 +59,14 @@ def test_a_cylinder_is_round_about_its_axis(axis: str) -> None:
     np.testing.assert_allclose(energy, energy[0], rtol=1e-10)
     assert tube.symmetry().round_about == frozenset({j})
     assert tube.symmetry().even == tuple(About(c) for c in tube.centre)
+
+
+def test_perfectly_reflecting_walls_leave_the_inside_alone() -> None:
+    box = Box(size=SIZE, edge="hard")
+    assert box.energy(np.linspace(-20e-6, 20e-6, 5), ZERO, ZERO) == 0.0
+    assert box.walls == gripped([box]) == frozenset({0, 1, 2}) and walled([box]) == frozenset({0, 1, 2})
+    assert CUBOID.walls == walled([CUBOID, TUBE]) == frozenset()
+    assert box.finest() == np.inf and not np.any(box.steer((1e-6, 0, 0)))
 
 
 def test_strength_multiplies_it_and_it_steers_nothing() -> None:

@@ -123,6 +123,22 @@ SLIPS = {
         f'"harmonic"\nfrequency = {DIPOLE}',
         '"box"\nsize = ["30 um", "30 um", "30 um"]\nheight = "0.1 nK"\nedge = "1 um"', "trap", "higher",
     ),
+    "hard walls around a cylinder": Slip(
+        f'"harmonic"\nfrequency = {DIPOLE}',
+        '"box"\nshape = "cylinder"\nsize = ["30 um", "30 um", "30 um"]\nedge = "hard"', "trap.dipole.edge",
+        'edge = "1 um"',
+    ),
+    "hard walls that fade": Slip(
+        f'"harmonic"\nfrequency = {DIPOLE}', '"box"\nsize = ["30 um", "30 um", "30 um"]\nstrength = 0.5\nedge = "hard"',
+        "trap.dipole.strength", "leave strength out",
+    ),
+    "soft walls of no height": Slip(
+        f'"harmonic"\nfrequency = {DIPOLE}', '"box"\nsize = ["30 um", "30 um", "30 um"]\nedge = "1 um"',
+        "trap.dipole.height", 'height = "200 nK"',
+    ),
+    "wall axes without hard walls": Slip(
+        'accuracy = "draft"', 'accuracy = "draft"\naxes = ["wall", "wave", "wave"]', "numerics.axes[0]", '"hard"',
+    ),
     "beam too shallow for gravity": Slip(
         f'"harmonic"\nfrequency = {DIPOLE}', '"beam"\nwaist = "50 um"\nwavelength = "1064 nm"\ndepth = "3 uK"',
         "trap", "deeper",

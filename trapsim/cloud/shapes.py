@@ -80,6 +80,18 @@ def thomas_fermi(space: Space, potential: Array, coupling: float, *, soft: float
     return u / np.sqrt(space.integral(u**2))
 
 
+def between_walls(space: Space, u: Array, healing: float) -> Array:
+    """An amplitude brought to zero at perfectly reflecting walls, as tanh(distance/healing), and normalised.
+
+    That is the profile of a large cloud at a wall (textbook).
+    """
+    for d, axis in enumerate(space.axes):
+        if axis.walled:
+            low, high = axis.half_extent + axis.points, axis.half_extent - axis.points
+            u = u * space.along(d, np.tanh(low / healing) * np.tanh(high / healing))
+    return u / np.sqrt(space.integral(u**2))
+
+
 def _rounded(x: Array, soft: float) -> Array:
     """A smooth max(x, 0): soft * log(1 + exp(x/soft))."""
     return soft * np.logaddexp(0.0, x / soft)

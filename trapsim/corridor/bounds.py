@@ -29,7 +29,7 @@ def set_up(plan: Plan) -> Setup:
     with ordinary_numbers(plan.name):
         setup = prepare(plan)
     for j, trapped in enumerate(setup.omega > 0):
-        if trapped and (n := setup.space.axis(j).whole) < FEWEST:
+        if (trapped or setup.space.axis(j).walled) and (n := setup.space.axis(j).whole) < FEWEST:
             raise PlanError.at(
                 f"numerics.points[{j}]", str(n), f"a cloud held along {'xyz'[j]} takes at least {FEWEST} points",
                 'write more points, or "auto"',

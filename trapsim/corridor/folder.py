@@ -27,8 +27,10 @@ PLAN = "plan.json"
 SUMMARY = "summary.json"
 _LOCK = ".lock"
 #: how a checkpoint is laid out
-LAYOUT = 1
+LAYOUT = 2
 _FRAME = ("b", "bdot", "X", "Xdot")
+#: what the books keep per direction
+_PER_DIRECTION = ("edge", "spectrum", "kink")
 
 
 def default_folder(plan: Plan) -> Path:
@@ -181,11 +183,11 @@ def save(
     cloud, law, stride = state.cloud, state.law, state.stride
     arrays = {f"recorder_{k}": v for k, v in heard.items()}
     arrays |= {"phi": cloud.phi} | {f"frame_{n}": getattr(cloud.frame, n) for n in _FRAME}
-    arrays |= {"edge": state.books.edge, "spectrum": state.books.spectrum}
+    arrays |= {name: getattr(state.books, name) for name in _PER_DIRECTION}
     if law is not None:
         arrays |= {f"law_{n}": getattr(law, n) for n in ("A", "i", "var")}
         arrays |= {f"law_frame_{n}": getattr(law.frame, n) for n in _FRAME}
-    books = {k: v for k, v in asdict(state.books).items() if k not in ("edge", "spectrum")}
+    books = {k: v for k, v in asdict(state.books).items() if k not in _PER_DIRECTION}
     attributes = {
         "layout": LAYOUT, "march_key": plan.march_key, "seconds": seconds, "ground": dict(ground),
         "time": cloud.time, "q": cloud.q, "leg": state.leg, "space": cloud.space.describe(), "books": books,
@@ -243,6 +245,6 @@ def _state(arrays: Mapping[str, Any], told: Mapping[str, Any], spaces: list[Spac
     return State(
         cloud=Cloud(space, space.array(arrays["phi"]), frame, told["time"], told["q"]), leg=told["leg"],
         stride=None if told["stride"] is None else Stride(**told["stride"]), law=law,
-        books=Books(**told["books"], edge=arrays["edge"], spectrum=arrays["spectrum"]),
+        books=Books(**told["books"], **{name: arrays[name] for name in _PER_DIRECTION}),
         notices=tuple(Notice(**n) for n in told["notices"]),
     )  # fmt: skip

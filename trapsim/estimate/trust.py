@@ -27,7 +27,8 @@ class Trust:
 
 
 def trust(
-    books: Books, *, residual: float, virial: float, energy_drift: float, swing: float, centre_off: float | None
+    books: Books, *, residual: float, virial: float, energy_drift: float, swing: float, centre_off: float | None,
+    kink: float = 0.0,
 ) -> Trust:
     """From step estimates, guards and exact statements to widths, rates and centre.
 
@@ -51,11 +52,13 @@ def trust(
         Relative, the worst over stretches where nothing changed in time.
     swing : float
         Relative, of swings in a trap, from the drift of the energy there and how long it lasted.
+    kink : float
+        Relative, of rates, from atoms too fast for the grid that perfectly reflecting walls let go.
     centre_off : float or None
         Distance of the measured centre from the classical path, m; None where that is not exact.
     """
     time = 2 * books.error**2 + 5e-3 * books.local ** (2 / 3)
     space = 1.2 * float(np.max(books.spectrum)) ** 0.75 + 0.05 * float(np.max(books.edge))
-    width = float(np.linalg.norm([time, space, swing, 1.5 * virial, 1.2 * energy_drift])) + residual
+    width = float(np.linalg.norm([time, space, swing, 1.5 * virial, 1.2 * energy_drift, kink])) + residual
     rate = max(1.5 * width, 2.5 * energy_drift)
     return Trust(width, rate, centre_off)

@@ -84,9 +84,9 @@ class Alarm:
 
 
 def edge_population(space: Space, marginals: Sequence[Array]) -> Array:
-    """Share (3,) of a density in the outer 10 % of the axis of each direction; zero along uniform ones."""
+    """Share (3,) of a density in the outer 10 % of the axis of each direction; zero where nothing can leave it."""
     shares = [
-        0.0 if a.uniform else _share(m * a.weights, np.abs(a.points) > OUTER * a.half_extent)
+        0.0 if a.uniform or a.walled else _share(m * a.weights, np.abs(a.points) > OUTER * a.half_extent)
         for a, m in zip(space.axes, marginals, strict=True)
     ]
     return np.array([shares[space.dim(j)] for j in range(3)])

@@ -14,13 +14,13 @@ import numpy as np
 from trapsim.cloud.cloud import Cloud, regauge
 from trapsim.constants import HBAR
 from trapsim.errors import PhysicsRefused
+from trapsim.evolve.door import through
 from trapsim.evolve.guards import Guards, edge_population, spectrum_population
 from trapsim.evolve.pace import Buffers
 from trapsim.evolve.scaling import LawStart, MovingLaw, StandingLaw, measure_law
 from trapsim.evolve.splitstep import Rest, SplitStep
 from trapsim.evolve.state import Books, Leg, Pace, State, Tick
 from trapsim.measure.observables import Profile, profile, reach
-from trapsim.space.resample import resample
 from trapsim.space.space import Array
 from trapsim.terms.part import remainder
 
@@ -70,8 +70,7 @@ def march(
 def _enter(state: State, leg: Leg, guards: Guards) -> State:
     """Put the cloud on the leg's space, kick it, settle the frame, and measure the frame law on it."""
     cloud = replace(state.cloud, time=leg.start)
-    if cloud.space is not leg.space and cloud.space.describe() != leg.space.describe():
-        cloud = replace(cloud, phi=resample(cloud.phi, cloud.space, leg.space), space=leg.space)
+    cloud, lost = through(cloud, leg.space)
     cloud = replace(cloud, frame=replace(cloud.frame, Xdot=cloud.frame.Xdot + np.asarray(leg.kick)))
     _must_fit(cloud, leg)
     cloud = settled(cloud, leg.moving)
@@ -79,7 +78,7 @@ def _enter(state: State, leg: Leg, guards: Guards) -> State:
     cloud, seen = _followed(cloud, seen, leg)
     spectrum = spectrum_population(cloud.space, seen.spectrum)
     books = state.books.spent(PROFILE_PAIRS, flight=not leg.trapped)
-    books = replace(books, spectrum=np.maximum(books.spectrum, spectrum))
+    books = replace(books, spectrum=np.maximum(books.spectrum, spectrum), kink=np.maximum(books.kink, lost))
     alarm = guards.check(
         time=cloud.time, norm=seen.norm, edge=np.zeros(3), spectrum=spectrum, place=f"stage {leg.name}"
     )

@@ -70,7 +70,7 @@ class SplitStep:
         _, dJ = self.law.integrals(t0, t1)
         coefficients = (lens + self.law.start.i * dJ) / (2 * self.q)
         first, *others = (
-            self.space.along(d, values) for d, values in enumerate(self.space.per_axis(coefficients, "x2"))
+            self.space.along(d, values) for d, values in enumerate(self.space.per_axis(coefficients, "square"))
         )
         # what does not vary along the first dimension is summed once
         rest = self._rest_phase(t0, t1)

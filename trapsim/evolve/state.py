@@ -81,6 +81,8 @@ class Books:
         Highest L2 error of a plain step in a trap.
     edge, spectrum : (3,)
         Highest populations seen near the edges of the axes and of their spectra.
+    kink : (3,)
+        Variance of k in the lab that was lost when perfectly reflecting walls opened, 1/m^2.
     flight_pairs : float
         The share of `pairs` spent with no trap on.
     """
@@ -92,6 +94,7 @@ class Books:
     local: float = 0.0
     edge: Array = field(default_factory=lambda: np.zeros(3))
     spectrum: Array = field(default_factory=lambda: np.zeros(3))
+    kink: Array = field(default_factory=lambda: np.zeros(3))
     flight_pairs: float = 0.0
 
     def spent(self, pairs: float, *, flight: bool) -> Books:

@@ -72,7 +72,7 @@ class ColumnViews:
         self._lines = [midpoints(a.half_extent, n) for a, n in zip(self.finer, self.samples, strict=True)]
         #: per axis, the matrix from samples to the raster: the side view on a radial axis, else the axis' own series
         self._onto = [
-            a.project(line) if isinstance(a, Radial) else a.basis(line)
+            a.project(line) if isinstance(a, Radial) else a.density_basis(line)
             for a, line in zip(self.finer, self._lines, strict=True)
         ]
 

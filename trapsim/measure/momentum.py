@@ -16,7 +16,7 @@ import numpy as np
 
 from trapsim.cloud.cloud import Cloud
 from trapsim.measure.observables import reach
-from trapsim.space.axes import Array, Mirror, Wave
+from trapsim.space.axes import Array, Mirror, Wall, Wave
 from trapsim.terms.lattice import Lattice
 
 #: orders kept in tables: those with more than this share of the atoms
@@ -67,7 +67,7 @@ def momentum(cloud: Cloud, direction: int) -> Momentum:
     """
     space = cloud.space
     axis = space.axis(direction)
-    if not isinstance(axis, Wave | Mirror) or axis.uniform:
+    if not isinstance(axis, Wave | Mirror | Wall) or axis.uniform:
         raise ValueError(f"direction {'xyz'[direction]} has no wave axis of its own")
     d = space.dim(direction)
     frame, q = cloud.frame, cloud.q
@@ -75,6 +75,8 @@ def momentum(cloud: Cloud, direction: int) -> Momentum:
     lines = np.moveaxis(np.asarray(cloud.phi), d, -1)
     if isinstance(axis, Mirror):
         axis, lines = axis.unfolded(), np.concatenate([lines[..., ::-1], lines], axis=-1)
+    elif isinstance(axis, Wall):
+        axis, lines = _with_room(axis, lines)
     weights = _other_weights(cloud, d)
     spectrum = np.fft.fft(lines, axis=-1)
     width_k = reach(axis.k, _marginal(np.abs(spectrum) ** 2, weights), TAIL)
@@ -94,6 +96,16 @@ def momentum(cloud: Cloud, direction: int) -> Momentum:
     power = _marginal(np.abs(np.fft.fft(samples, axis=-1)) ** 2, weights)
     order = np.argsort(fine.k)
     return _normalised(direction, fine.k[order] / b + drift, power[order])
+
+
+def _with_room(axis: Wall, lines: Array) -> tuple[Wave, Array]:
+    """An axis with as much room again beyond the walls, and the samples on it: their spectrum is then that of the lab.
+
+    Twice the length is what it takes to resolve |psi(k)|^2, whose Fourier transform reaches as far as the box is long.
+    """
+    below = axis.n // 2
+    spare = [(0, 0)] * (lines.ndim - 1) + [(below, axis.n - below)]
+    return Wave(axis.covers, 2 * axis.n, 2 * axis.half_extent), np.pad(lines, spare)
 
 
 def _fine_points(axis: Wave, n: int) -> Array:

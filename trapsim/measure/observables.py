@@ -73,13 +73,14 @@ def profile(cloud: Cloud) -> Profile:
         twist = np.conj(cloud.phi) * space.gradient(cloud.phi, d)
         twists = space.marginals(twist.imag)[d]
         lever = float(np.dot(twists, axis.weights * axis.lever)) / norm
+        drift = float(np.dot(twists, axis.weights * axis.drift)) / norm
         flow[d] = np.divide(twists, density[d], out=np.zeros(axis.n), where=density[d] > FAINT * density[d].max())
         for j in axis.covers:
             weighted = density[d] * axis.weights / norm
             spectral = spectrum[d] * axis.spectral_weights / norm
             mean[j] = weighted @ axis.x1(j)
             var[j] = max(weighted @ axis.x2(j) - mean[j] ** 2, 0.0)
-            k_mean[j] = spectral @ axis.k1(j)
+            k_mean[j] = drift
             # of a plane wave it is rounding, with either sign
             k_var[j] = max(spectral @ axis.k2(j) - k_mean[j] ** 2, 0.0)
             cov[j] = lever - mean[j] * k_mean[j]

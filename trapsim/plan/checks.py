@@ -9,11 +9,12 @@ import numpy as np
 
 from trapsim.errors import Complaint
 from trapsim.fields import ORIGIN
+from trapsim.plan.parse import listed
 from trapsim.plan.plan import Numerics, Track, with_mass
-from trapsim.plan.stages import Stage, Switches
+from trapsim.plan.stages import Pulse, Ramp, Release, Stage, Switches
 from trapsim.quantities import human
 from trapsim.terms.beam import Beam
-from trapsim.terms.box import Box
+from trapsim.terms.box import HARD, Box
 from trapsim.terms.field import Gravity
 from trapsim.terms.part import Part
 
@@ -48,9 +49,58 @@ def settle_sequence(
             continue
         stage, wrong = stage.settled(path, trap, switches)
         switches = stage.switched(switches, trap)
-        complaints += wrong
+        complaints += wrong + _walls_stand(stage, path, trap)
         settled.append(dataclasses.replace(stage, name=name))
     return tuple(settled), complaints
+
+
+def _walls_stand(stage: Stage, path: str, trap: Mapping[str, Part]) -> list[Complaint]:
+    """Perfectly reflecting walls do not change, but for the release that takes them away at once."""
+    rule, soft = "perfectly reflecting walls neither move nor fade", 'write a soft edge, such as edge = "1 um"'
+    if isinstance(stage, Ramp | Pulse):
+        changed = [t for t, c in stage.to.items() if c.value == HARD or _closes(trap.get(t.partition(".")[0]))]
+        way_out = f"leave it to a release to take them away, or {soft}"
+        return [Complaint(f"{path}.to.{target}", "", rule, way_out) for target in changed]
+    if isinstance(stage, Release) and stage.switch_off is not None and any(_closes(trap.get(n)) for n in stage.off or ()):
+        return [Complaint(f"{path}.switch_off", "", rule, f"leave switch_off out, or {soft}")]
+    return []
+
+
+def _closes(part: Part | None) -> bool:
+    """Whether a part has perfectly reflecting walls."""
+    return part is not None and bool(part.walls)
+
+
+def check_walls(trap: Mapping[str, Part], sequence: Sequence[Stage], numerics: Numerics) -> list[Complaint]:
+    """Perfectly reflecting walls are the ends of their axes, and those of one box."""
+    complaints = []
+    hard = [name for name, part in trap.items() if _closes(part)]
+    boxes = [name for name, part in trap.items() if isinstance(part, Box)]
+    if hard and len(boxes) > 1:
+        complaints.append(Complaint(
+            f"trap.{hard[-1]}.edge", f'"{HARD}", beside {listed(n for n in boxes if n != hard[-1])}',
+            "a box with perfectly reflecting walls is the only box", "leave the other box out, or give all soft edges",
+        ))  # fmt: skip
+    axes = numerics.axes if not isinstance(numerics.axes, str) else ()
+    if not hard:
+        complaints += [
+            Complaint(f"numerics.axes[{j}]", '"wall"', "a wall axis ends at perfectly reflecting walls",
+                      'write edge = "hard" for a box, or "wave" here')
+            for j, word in enumerate(axes) if word == "wall"
+        ]  # fmt: skip
+        return complaints
+    size = trap[hard[0]].size
+    opens = any(isinstance(s, Release) and hard[0] in (s.off or ()) for s in sequence)
+    for j, extent in enumerate(numerics.extent):
+        if extent and not opens:
+            complaints.append(Complaint(f"numerics.extent[{j}]", human(extent, "length"),
+                                        "the axis ends at the perfectly reflecting walls of the box", 'write "auto"'))
+        elif extent and extent < size[j]:
+            complaints.append(Complaint(
+                f"numerics.extent[{j}]", human(extent, "length"), f"the box is {human(size[j], 'length')} long",
+                'write a longer extent, or "auto"',
+            ))  # fmt: skip
+    return complaints
 
 
 def check_parts(trap: Mapping[str, Part]) -> list[Complaint]:

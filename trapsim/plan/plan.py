@@ -39,15 +39,17 @@ class Numerics:
     )
     axes: str | tuple[str, str, str] = entry(
         "choice", "kinds of axis along x, y, z; \"auto\" uses the symmetry of the plan, \"full\" uses none of it; "
-        "\"radial\" stands twice, for the two directions it covers",
-        default="auto", count=3, choices=("wave", "mirror", "radial"), words=("auto", "full"),
+        "\"radial\" stands twice, for the two directions it covers; \"wall\" ends at perfectly reflecting walls until "
+        "they open",
+        default="auto", count=3, choices=("wave", "mirror", "wall", "radial"), words=("auto", "full"),
     )
     points: Whole3 = entry(
-        "whole", "number of points along x, y, z; 0 or \"auto\": chosen", default=(0, 0, 0), count=3, low=0,
-        high=65536, each=("auto",),
+        "whole", "number of points along x, y, z; 0 or \"auto\": chosen; in a box with a hard edge, between its walls",
+        default=(0, 0, 0), count=3, low=0, high=65536, each=("auto",),
     )
     extent: Triple = entry(
-        "length", "full length of the axis along x, y, z; makes a direction that nothing traps uniform and periodic",
+        "length", "full length of the axis along x, y, z; makes a direction that nothing traps uniform and periodic; "
+        "around a box with a hard edge, that of the axis when it has opened",
         default=(0.0, 0.0, 0.0), count=3, above=0.0, each=("auto",),
     )
     frame: str = entry(

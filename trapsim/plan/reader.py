@@ -179,7 +179,7 @@ def assemble(
 
     complaints += checks.check_parts(trap)
     if numerics is not None:
-        complaints += checks.check_numerics(numerics)
+        complaints += checks.check_numerics(numerics) + checks.check_walls(trap, sequence, numerics)
     if track is not None and not any(c.place.startswith("sequence") for c in complaints):
         complaints += checks.check_track(track, math.fsum(stage.duration for stage in sequence))
         track = dataclasses.replace(track, at=tuple(sorted(set(track.at))))

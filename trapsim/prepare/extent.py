@@ -3,19 +3,17 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass, field, replace
+from dataclasses import dataclass, field
 
 import numpy as np
-from scipy import fft, optimize, special
+from scipy import fft, optimize
 
 from trapsim.cloud.shapes import chemical_potential_guess
-from trapsim.constants import HBAR
 from trapsim.errors import PlanError
 from trapsim.evolve.guards import OUTER
 from trapsim.quantities import human
-from trapsim.space.axes import Array, Axis, Mirror, Radial, Wave
+from trapsim.space.axes import Array, Axis, Mirror, Radial, Wall, Wave
 from trapsim.space.space import Space
-from trapsim.terms.box import EDGE, Box
 
 
 @dataclass(frozen=True)
@@ -52,10 +50,10 @@ class Accuracy:
     norm: float
 
 
-#: room around a box, in half lengths of it
-HEAD_START = 2.0
-#: finest length of a cloud in a box, and the widest spacing, in lengths over which it ends at the foot of the wall
-FOOT, COARSEST_FOOT = 0.95, 1.35
+#: spacings of the axis that takes over when such a wall opens, per spacing between the walls
+OPENED = 2
+#: points per lattice period between walls, that need not stand a whole number of periods apart, in those elsewhere
+UNMATCHED = 1.5
 
 ACCURACY = {
     "draft": Accuracy(2.2, 3e-4, 2.4, 4.0, 3.5, 0.5, 1e-6, 4e-3, 4e-3, 1e-2),
@@ -82,6 +80,8 @@ class Lengths:
         Period that the grid must be commensurate with, m; 0 where there is none.
     per_period : (3,)
         Points per period that are enough.
+    walls : (3,)
+        Half the distance of perfectly reflecting walls, m; 0 where there are none.
     periodic : (3,)
         Whether the plan makes the direction periodic: it has a length, and nothing that confines.
     """
@@ -92,6 +92,7 @@ class Lengths:
     spacing: Array = field(default_factory=lambda: np.full(3, np.inf))
     period: Array = field(default_factory=lambda: np.zeros(3))
     per_period: Array = field(default_factory=lambda: np.zeros(3, dtype=int))
+    walls: Array = field(default_factory=lambda: np.zeros(3))
     periodic: Array = field(default_factory=lambda: np.zeros(3, dtype=bool))
 
     @property
@@ -162,41 +163,6 @@ def _tail_end(radius: float, tail: float) -> float:
     return float(optimize.brentq(missing, radius, radius + 2 * tail + 2))
 
 
-def box_lengths(lengths: Lengths, box: Box, q: float, accuracy: Accuracy, free: Array) -> Lengths:
-    """The lengths of a cloud that a box holds along the directions `free` of other traps.
-
-    From where the wall is as high as the chemical potential the cloud ends within a foot of length (q/2 F)^(1/3), hbar F
-    the mean slope of the wall over two such lengths; into the full wall it falls off over sqrt(q hbar/2 (height - mu)).
-    """
-    height, soft = box.strength * box.height / HBAR, box.edge / EDGE
-    mu, turn = lengths.mu, -3.0
-    for _ in range(20):
-        # a cloud that does not climb far up soft walls has less room than between their half heights
-        within = np.maximum(np.asarray(box.size) + 2 * soft * turn, np.asarray(box.size) / 4)[free]
-        crowded = max(lengths.mu, 0.0) * np.prod(np.asarray(box.size)[free] / within)
-        mu = 0.5 * (mu + crowded + q * np.sum((np.pi / within) ** 2) / 2)
-        turn = float(special.ndtri(np.clip(mu / height, 1e-6, 0.9)))
-    if height < 1.2 * mu:
-        raise PlanError.at(
-            "trap", f"walls of {human(box.height, 'energy')}",
-            f"the cloud needs {human(HBAR * mu, 'energy')} and would spill over them",
-            "make the walls higher, the box larger, or take fewer atoms",
-        )  # fmt: skip
-    foot = soft
-    for _ in range(20):
-        slope = (height * special.ndtr(turn + 2 * foot / soft) - mu) / (2 * foot)
-        foot = 0.5 * (foot + (q / (2 * slope)) ** (1 / 3))
-    healing = np.sqrt(q / (2 * mu))
-    decay = np.sqrt(q / (2 * (height - mu)))
-    half, finest = lengths.half.copy(), lengths.finest.copy()
-    for j in np.nonzero(free)[0]:
-        wall = box.size[j] / 2
-        # when it is let go, its rim runs off at twice the speed of sound before the frame has gathered speed
-        half[j] = max(wall + 1.2 * box.edge + accuracy.tail * decay, HEAD_START * wall)
-        finest[j] = min(min(FOOT, COARSEST_FOOT / accuracy.spacing) * min(foot, healing), box.size[j] / 8)
-    return replace(lengths, half=half, finest=finest, mu=mu)
-
-
 def choose_space(
     words: Sequence[str],
     lengths: Lengths,
@@ -210,12 +176,12 @@ def choose_space(
 
     Parameters
     ----------
-    words : three of "wave", "radial"
+    words : three of "wave", "mirror", "wall", "radial"
     lengths : Lengths
     extent : (3,)
         Full lengths asked for, m; 0 where none is.
     points : (3,)
-        Points asked for; 0 where none are.
+        Points asked for; 0 where none are. Where there are perfectly reflecting walls, those between them.
     """
     axes: list[Axis] = []
     pair = tuple(j for j in range(3) if words[j] == "radial")
@@ -227,6 +193,8 @@ def choose_space(
         if group == pair:
             n = asked or max(8, int(np.ceil(half / spacing)) + 2)
             axes.append(Radial(group, n, half))
+        elif lengths.walls[group[0]]:
+            axes.append(_around_walls(group[0], half, spacing, lengths, asked, closed=words[group[0]] == Wall.kind))
         elif lengths.period[group[0]]:
             axes.append(_commensurate(group[0], half, spacing, lengths, asked, fixed=bool(extent[group[0]])))
         elif np.isinf(spacing):
@@ -241,6 +209,22 @@ def choose_space(
 def _mirrored(axis: Axis) -> Axis:
     """Half of a wave axis; an odd number of points is made even."""
     return Mirror(axis.covers, (axis.n + 1) // 2, axis.half_extent)
+
+
+def _around_walls(j: int, half: float, spacing: float, lengths: Lengths, asked: int, *, closed: bool) -> Axis:
+    """The axis between perfectly reflecting walls, or that which takes over when they are opened.
+
+    The walls are at cell boundaries of the second too: a density that is even about its ends is then summed exactly.
+    """
+    wall = lengths.walls[j]
+    if lengths.period[j]:
+        spacing = min(spacing, lengths.period[j] / (UNMATCHED * lengths.per_period[j]))
+    n = asked or fft.next_fast_len(int(np.ceil(max(12, 2 * wall / spacing))))
+    if closed:
+        return Wall((j,), n, wall)
+    spacing = 2 * wall / (OPENED * n)
+    whole = _fast_even(2 * half / spacing)
+    return Wave((j,), whole, whole * spacing / 2)
 
 
 def _commensurate(j: int, half: float, spacing: float, lengths: Lengths, asked: int, *, fixed: bool) -> Wave:

@@ -10,7 +10,8 @@ import numpy as np
 from trapsim.constants import HBAR
 from trapsim.errors import PlanError
 from trapsim.plan.plan import Plan
-from trapsim.prepare.extent import Accuracy, Lengths, box_lengths, cloud_lengths
+from trapsim.prepare.boxes import box_lengths, hard_lengths
+from trapsim.prepare.extent import Accuracy, Lengths, cloud_lengths
 from trapsim.prepare.growth import scales
 from trapsim.prepare.stretch import Stretch
 from trapsim.prepare.timeline import Timeline
@@ -46,7 +47,10 @@ def measure_up(
     most = max([coupling, *(s.stretch.coupling(s.stretch.stop) for s in timeline.steps)]) if coupling >= 0 else coupling
     number = scattering_number(most, q, length / 2, omega)
     lengths = _along_lab(timeline, omega, q, number, accuracy)
-    if box is not None:
+    if box is not None and box.hard:
+        force, _ = steered(parts, timeline.origin)
+        lengths = hard_lengths(lengths, box, q, most, force, trapped=bool(omega.any()))
+    elif box is not None:
         lengths = box_lengths(lengths, box, q, accuracy, free)
     elif any(isinstance(p, Beam) for p in parts):
         lengths = _within_rim(lengths, parts, timeline.origin, omega)

@@ -18,14 +18,17 @@ LENGTH = 1e-6
 def equilibrium(parts: tuple[Part, ...]) -> Array:
     """Where the steerable forces balance, m.
 
-    Along directions that only a box or a lattice holds, the middle of the box or the nearest lattice minimum; zero
-    along directions that nothing holds.
+    In a box with perfectly reflecting walls its middle, whatever else acts there. Along directions that only a box or a
+    lattice holds, the middle of the box or the nearest lattice minimum; zero along directions that nothing holds.
 
     Raises
     ------
     PlanError
         When the forces balance nowhere near the trap's centre.
     """
+    for part in parts:
+        if isinstance(part, Box) and part.hard:
+            return np.array(part.centre)
     held = gripped(parts)
     start = np.zeros(3)
     for part in parts:

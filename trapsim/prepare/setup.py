@@ -10,7 +10,7 @@ import numpy as np
 
 from trapsim.cloud import shapes
 from trapsim.constants import HBAR
-from trapsim.errors import Notice, PlanError
+from trapsim.errors import Notice, PhysicsRefused, PlanError
 from trapsim.evolve.guards import Guards
 from trapsim.evolve.relax import Hamiltonian
 from trapsim.evolve.state import Leg, Pace
@@ -18,7 +18,7 @@ from trapsim.plan.plan import Plan
 from trapsim.prepare.extent import ACCURACY, Accuracy, Lengths, choose_space
 from trapsim.prepare.needs import hold_orders, measure_up, scattering_number
 from trapsim.prepare.stretch import Stretch
-from trapsim.prepare.symmetry import choose_words, even_directions, lasting_axis, round_directions
+from trapsim.prepare.symmetry import between, choose_words, even_directions, lasting_axis, round_directions
 from trapsim.prepare.timeline import Step, Timeline, build_timeline
 from trapsim.record.album import Shot
 from trapsim.space.frame import Frame
@@ -108,9 +108,11 @@ class Setup:
         flat = self.omega.sum() == 0 or bool(self.timeline.initial.gripped())
         if self.coupling > 0 and (flat or self.lengths.mu > 3 * self.omega.sum() / 2):
             soft = 0.3 * max(self.omega.max(), 0.3 * self.lengths.mu)
-            return shapes.thomas_fermi(self.space, hamiltonian.V, self.coupling, soft=soft)
-        held = np.isinf(widths) & np.isfinite(self.lengths.finest)
-        return shapes.gaussian(self.space, np.where(held, self.lengths.half / 3, widths))
+            guess = shapes.thomas_fermi(self.space, hamiltonian.V, self.coupling, soft=soft)
+        else:
+            held = np.isinf(widths) & np.isfinite(self.lengths.finest)
+            guess = shapes.gaussian(self.space, np.where(held, self.lengths.half / 3, widths))
+        return shapes.between_walls(self.space, guess, np.sqrt(self.q / max(self.lengths.mu, 1e-300)))
 
 
 def prepare(plan: Plan) -> Setup:
@@ -120,6 +122,8 @@ def prepare(plan: Plan) -> Setup:
     ------
     PlanError
         When axes are forced that the plan does not allow, memory is too small, or nothing holds the cloud.
+    PhysicsRefused
+        When perfectly reflecting walls are to open at accuracy fine.
     """
     timeline = build_timeline(plan)
     accuracy = ACCURACY[plan.numerics.accuracy]
@@ -136,7 +140,11 @@ def prepare(plan: Plan) -> Setup:
     round_about = round_directions(timeline, standing=standing)
     axis = lasting_axis(round_about, lengths.uniform)
     even = even_directions(timeline, still=still)
-    words = [_words(plan, axis, r, e, lengths.uniform) for r, e in zip(round_about, even, strict=True)]
+    walls = [timeline.initial.walled(), *(s.stretch.walled() for s in timeline.steps)]
+    words = [
+        between(w, _words(plan, axis, r, e, lengths.uniform)) for r, e, w in zip(round_about, even, walls, strict=True)
+    ]
+    _open_softly(plan, walls)
     spaces: dict[tuple[str, ...], Space] = {}
     for w in words:
         if w not in spaces:
@@ -170,13 +178,24 @@ def _leave_uniform(timeline: Timeline, lengths: Lengths) -> None:
                 )  # fmt: skip
 
 
+def _open_softly(plan: Plan, walls: list[frozenset[int]]) -> None:
+    """Refuse to open perfectly reflecting walls where the error that this makes is not wanted."""
+    opened = any(before - after for before, after in zip(walls[:-1], walls[1:], strict=True))
+    if opened and plan.numerics.accuracy == "fine":
+        raise PhysicsRefused.at(
+            "sequence", "a cloud let out of perfectly reflecting walls at accuracy fine",
+            "their sharp edge leaves atoms faster than any grid holds, and rates come out wrong by parts in a hundred or a "
+            "thousand", 'write a soft edge for the box, such as edge = "1 um", or take numerics.accuracy = "normal"',
+        )  # fmt: skip
+
+
 def _words(
     plan: Plan, axis: int | None, round_about: frozenset[int], even: Sequence[bool], uniform: Array
 ) -> tuple[str, str, str]:
     asked = plan.numerics.axes
     if asked == "auto":
         return choose_words(axis, round_about, [e and not u for e, u in zip(even, uniform, strict=True)])
-    words = ("wave", "wave", "wave") if asked == "full" else asked
+    words = ("wave", "wave", "wave") if asked == "full" else tuple("wave" if w == "wall" else w for w in asked)
     pair = [j for j in range(3) if words[j] == "radial"]
     if pair:
         (alone,) = set(range(3)) - set(pair)
@@ -191,7 +210,7 @@ def _words(
                 f"numerics.axes[{j}]", '"mirror"', f"the plan is not even along {AXES[j]} all the way",
                 "write axes = \"auto\", or \"wave\" here",
             )  # fmt: skip
-    return tuple(words)
+    return words
 
 
 def _space(plan: Plan, words: tuple[str, ...], lengths: Lengths, accuracy: Accuracy) -> Space:
@@ -274,11 +293,15 @@ def _why(plan: Plan, round_about: list[frozenset[int]], words: list[tuple[str, .
     alike = [AXES[j] for j in range(3) if words[0][j] == "radial"]
     if alike:
         told.append(f"{' and '.join(alike)} are alike{lost}, so one radial axis covers them")
+    closed = [AXES[j] for j in range(3) if words[0][j] == "wall"]
+    if closed:
+        told.append(f"along {', '.join(closed)} the axes end at the perfectly reflecting walls")
     mirrored = [AXES[j] for j in range(3) if words[0][j] == "mirror"]
     if mirrored:
         told.append(f"along {', '.join(mirrored)} the cloud is even about its centre{lost}, so half an axis does")
     if not told:
         told.append("nothing is alike, so each direction has a whole axis of its own")
     if words[-1] != words[0]:
-        told.append("from where the sequence breaks that, larger axes take over")
+        told.append("from where the sequence breaks that, larger axes take over" if not closed else
+                    "from where they open, larger axes take over")
     return "; ".join(told)

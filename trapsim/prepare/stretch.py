@@ -11,7 +11,7 @@ import numpy as np
 from trapsim.fields import Triple
 from trapsim.terms.function import Function
 from trapsim.terms.lattice import Lattice
-from trapsim.terms.part import Part, gripped, steered
+from trapsim.terms.part import Part, gripped, steered, walled
 from trapsim.terms.ramps import Course
 
 HELD = "held"
@@ -111,6 +111,10 @@ class Stretch:
         middle = 0.5 * (self.start + self.stop)
         staying = replace(self, parts={n: p for n, p in self.parts.items() if n not in leaving})
         return gripped(staying.parts_at(middle))
+
+    def walled(self) -> frozenset[int]:
+        """Directions that perfectly reflecting walls close."""
+        return walled(self.parts_at(0.5 * (self.start + self.stop)))
 
 
 def _has_a_clock(part: Part) -> bool:

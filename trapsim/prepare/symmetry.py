@@ -134,3 +134,8 @@ def choose_words(axis: int | None, round_about: frozenset[int], even: Sequence[b
     """Kinds of axis along x, y, z: radial for the two directions alike about `axis`, mirror where the cloud is even."""
     pair = [j for j in range(3) if j != axis] if axis in round_about else []
     return tuple("radial" if j in pair else ("mirror" if even[j] else "wave") for j in range(3))
+
+
+def between(walls: frozenset[int], words: Sequence[str]) -> tuple[str, str, str]:
+    """Kinds of axis where perfectly reflecting walls close some directions: there an axis ends at them."""
+    return tuple("wall" if j in walls else word for j, word in enumerate(words))

@@ -24,7 +24,8 @@ from trapsim.terms.lattice import Lattice
 from trapsim.terms.part import Array, Part, steered
 from trapsim.terms.ramps import Course, Value
 
-#: kinds of stage in which a box or a lattice that is on holds the cloud; a pulse only passes over it
+#: kinds of stage in which a box or a lattice that is on holds the cloud; a pulse only passes over it, unless the walls
+#: are perfectly reflecting
 STANDING = ("hold", "ramp", "release")
 
 
@@ -157,7 +158,7 @@ class _Builder:
             running = {p: c for p, c in courses.items() if c.start <= t0 and t1 <= c.stop and c.before != c.after}
             stretch = self._stretch(t0, t1, running)
             leaving = stage.off if isinstance(stage, Release) else ()
-            stands = stretch.gripped(leaving) if stage.kind in STANDING else frozenset()
+            stands = stretch.gripped(leaving) if stage.kind in STANDING else stretch.walled()
             gained = self._follow(stretch, stands)
             fallen = self._gain(stretch.parts, stretch.courses, gained)
             steps.append(Step(stretch, index, t0 == start, t1 == stop, ORIGIN, stands, fallen))

@@ -1,16 +1,4 @@
-"""Axes: the points, weights and spectrum along one or two lab directions.
-
-A member of the family says, for arrays of n samples along it:
-
-1. `covers`, the lab directions (0, 1, 2 = x, y, z) it stands for;
-2. `points` (n,) m and `weights` (n,): integrals are weighted sums of samples;
-3. `k` (n,) 1/m and `spectral_weights` (n,): weighted sums of |spectrum|^2 give the same norm;
-4. its transform: either a one-dimensional transform of FFTW (`fftw` names the way there and the way back) whose round
-   trip multiplies by `round_trip`, or a pair of real matrices (`forward_matrix`, `inverse_matrix`);
-5. `x1(j)`, `x2(j)`, `k1(j)`, `k2(j)` (n,): the powers of x_j and k_j whose weighted sums are <x_j>, <x_j^2>, ...;
-6. `lever` (n,): x_j d/dx_j = lever * gradient for every covered direction j;
-7. `basis(x)` (len(x), n): the matrix that evaluates the samples' own series anywhere; zero outside.
-"""
+"""The family of axes: wave, mirror, wall and radial. Their contract is that of `Axis`."""
 
 from __future__ import annotations
 
@@ -19,79 +7,7 @@ from collections.abc import Sequence
 import numpy as np
 from scipy import special
 
-Array = np.ndarray
-
-
-COMPLEX = ("FFTW_FORWARD", "FFTW_BACKWARD")
-COSINE = ("FFTW_REDFT10", "FFTW_REDFT01")
-
-
-class Axis:
-    """Base of the family; the module's docstring is the contract."""
-
-    kind: str
-    covers: tuple[int, ...]
-    points: Array
-    weights: Array
-    k: Array
-    spectral_weights: Array
-    lever: Array
-    half_extent: float
-    spacing: float
-    fftw: tuple[str, str] | None = None
-    round_trip = 1.0
-    #: whether a field on it may have a mean velocity
-    carries_velocity = False
-    #: (n, n) derivative along the axis at the points, where it is not a transform of FFTW
-    gradient_matrix: Array | None = None
-    forward_matrix: Array
-    inverse_matrix: Array
-
-    @property
-    def n(self) -> int:
-        return len(self.points)
-
-    @property
-    def whole(self) -> int:
-        """Points of the whole axis, of which it may keep a part."""
-        return self.n
-
-    @property
-    def k_max(self) -> float:
-        return float(np.abs(self.k).max())
-
-    @property
-    def uniform(self) -> bool:
-        """Whether nothing varies along it: one point stands for the whole length."""
-        return self.n == 1
-
-    @property
-    def counted(self) -> int:
-        """Number of points as a plan counts them: both sides of a mirror axis, one of a radius."""
-        return self.n
-
-    def x1(self, j: int) -> Array:
-        raise TypeError(f"{type(self).__name__} does not say x1")
-
-    def x2(self, j: int) -> Array:
-        raise TypeError(f"{type(self).__name__} does not say x2")
-
-    def k1(self, j: int) -> Array:
-        raise TypeError(f"{type(self).__name__} does not say k1")
-
-    def k2(self, j: int) -> Array:
-        raise TypeError(f"{type(self).__name__} does not say k2")
-
-    def basis(self, x: Array) -> Array:
-        raise TypeError(f"{type(self).__name__} does not say its basis")
-
-    def finer(self) -> Axis:
-        """The same stretch with twice the points, on which the density is as well resolved as the field."""
-        raise TypeError(f"{type(self).__name__} has no finer twin")
-
-    def describe(self) -> dict[str, object]:
-        """What it takes to build the same axis again."""
-        return {"kind": self.kind, "covers": list(self.covers), "n": self.n, "half_extent": self.half_extent}
+from trapsim.space.axis import COMPLEX, COSINE, SINE, Array, Axis
 
 
 class Wave(Axis):
@@ -120,6 +36,7 @@ class Wave(Axis):
         self.k = 2 * np.pi * np.fft.fftfreq(n, spacing)
         self.spectral_weights = np.full(n, spacing / n)
         self.lever = self.points
+        self.drift = 1.0
         self.fftw = COMPLEX if n > 1 else None
         self.round_trip = float(n)
         self.carries_velocity = n > 1
@@ -131,9 +48,6 @@ class Wave(Axis):
 
     def x2(self, j: int) -> Array:
         return self.points**2
-
-    def k1(self, j: int) -> Array:
-        return self.derivative_k()
 
     def k2(self, j: int) -> Array:
         return self.k**2
@@ -210,9 +124,6 @@ class Mirror(Axis):
     def x2(self, j: int) -> Array:
         return self.points**2
 
-    def k1(self, j: int) -> Array:
-        return np.zeros(self.n)
-
     def k2(self, j: int) -> Array:
         return self.k**2
 
@@ -242,6 +153,91 @@ class Mirror(Axis):
     def unfolded(self) -> Wave:
         """The wave axis with both sides."""
         return Wave(self.covers, 2 * self.n, self.half_extent)
+
+
+class Wall(Axis):
+    """Between two perfectly reflecting walls, where the field vanishes; sines on half-cell midpoints.
+
+    Its points are those of the wave axis of the same length; the walls are half a spacing beyond the outermost. The
+    field is odd about either wall, so that its gradient and its density are even there: series of cosines. Moments are
+    the integrals of these series, since a plain sum of x^2 n is no better than the fourth power of the spacing.
+
+    Parameters
+    ----------
+    covers : sequence of one int
+        The lab direction.
+    n : int
+        Number of points.
+    half_extent : float
+        Half the distance of the walls, m.
+    """
+
+    kind = "wall"
+    fftw = SINE
+    carries_velocity = True
+    walled = True
+
+    def __init__(self, covers: Sequence[int], n: int, half_extent: float) -> None:
+        (direction,) = covers
+        self.covers = (direction,)
+        self.half_extent = float(half_extent)
+        spacing = self.spacing = 2 * self.half_extent / n
+        self.points = (np.arange(n) - (n - 1) / 2) * spacing
+        self.weights = np.full(n, spacing)
+        self.k = np.pi * np.arange(1, n + 1) / (2 * self.half_extent)
+        self.spectral_weights = np.full(n, spacing / (2 * n))
+        self.spectral_weights[-1] /= 2
+        self.round_trip = 2.0 * n
+        # the series of samples f: (1/2n) [ 2 sum_m Y_m sin(k_m s) + Y_n sin(k_n s) ], s from the wall, Y = forward f
+        self._forward = 2 * np.sin(np.outer(self.k, self.points + self.half_extent))
+        self._shares = np.where(np.arange(1, n + 1) == n, 1.0, 2.0) / (2 * n)
+        self.gradient_matrix = np.ascontiguousarray(self.slopes(self.points))
+        self._cosines = self.k - self.k[0]
+        self._to_cosines = np.cos(np.outer(self._cosines, self.points + self.half_extent))
+        self._to_cosines *= np.where(self._cosines == 0, 1.0, 2.0)[:, None] / n
+        # integrals of 1 and x with each sine, of x and x^2 with each cosine, from wall to wall
+        length, k, even = 2 * self.half_extent, self.k, np.arange(1, n + 1) % 2 == 0
+        sines = (self._shares[:, None] * self._forward) / spacing
+        self.drift = np.where(even, 0.0, 2 / k) @ sines
+        self.lever = np.where(even, -length / k, 0.0) @ sines
+        k, even = np.where(self._cosines > 0, self._cosines, np.inf), np.arange(n) % 2 == 0
+        self._x1 = np.where(even, 0.0, -2 / k**2) @ self._to_cosines / spacing
+        self._x2 = (np.where(even, 2 * length / k**2, 0.0) + (self._cosines == 0) * length**3 / 12) @ self._to_cosines
+        self._x2 /= spacing
+
+    def x1(self, j: int) -> Array:
+        return self._x1
+
+    def x2(self, j: int) -> Array:
+        return self._x2
+
+    def square(self, j: int) -> Array:
+        return self.points**2
+
+    def k2(self, j: int) -> Array:
+        return self.k**2
+
+    def basis(self, x: Array) -> Array:
+        """The sine series on each point, zero beyond the walls."""
+        x = np.asarray(x, dtype=float)
+        series = np.sin(np.outer(x + self.half_extent, self.k)) * self._shares[None, :]
+        series[np.abs(x) > self.half_extent] = 0.0
+        return series @ self._forward
+
+    def density_basis(self, x: Array) -> Array:
+        """The cosine series on each point, zero beyond the walls."""
+        x = np.asarray(x, dtype=float)
+        series = np.cos(np.outer(x + self.half_extent, self._cosines))
+        series[np.abs(x) > self.half_extent] = 0.0
+        return series @ self._to_cosines
+
+    def slopes(self, x: Array) -> Array:
+        """(len(x), n): the derivative of the sine series between the walls and at them."""
+        cosines = np.cos(np.outer(np.asarray(x, dtype=float) + self.half_extent, self.k))
+        return (cosines * (self.k * self._shares)[None, :]) @ self._forward
+
+    def finer(self) -> Wall:
+        return Wall(self.covers, 2 * self.n, self.half_extent)
 
 
 class Radial(Axis):
@@ -292,9 +288,6 @@ class Radial(Axis):
     def x2(self, j: int) -> Array:
         return self.points**2 / 2
 
-    def k1(self, j: int) -> Array:
-        return np.zeros(self.n)
-
     def k2(self, j: int) -> Array:
         return self.k**2 / 2
 
@@ -323,7 +316,7 @@ class Radial(Axis):
         return cosines @ slices
 
 
-KINDS = {Wave.kind: Wave, Mirror.kind: Mirror, Radial.kind: Radial}
+KINDS = {cls.kind: cls for cls in (Wave, Mirror, Wall, Radial)}
 
 
 def build(description: dict[str, object]) -> Axis:

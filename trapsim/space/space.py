@@ -8,7 +8,7 @@ from functools import cached_property
 import numpy as np
 import pyfftw
 
-from trapsim.space.axes import COMPLEX, COSINE, Array, Axis, Mirror, Radial, build
+from trapsim.space.axes import COMPLEX, Array, Axis, Mirror, Radial, build
 
 
 class Space:
@@ -100,10 +100,10 @@ class Space:
 
     def quadratic(self, coefficients: Sequence[float]) -> Array:
         """sum_j c_j x_j^2 on the points."""
-        return sum(self.along(d, v) for d, v in enumerate(self.per_axis(coefficients, "x2")))
+        return sum(self.along(d, v) for d, v in enumerate(self.per_axis(coefficients, "square")))
 
     def per_axis(self, coefficients: Sequence[float], power: str) -> list[Array]:
-        """Per array dimension, the sum over its directions of c_j times x1, x2, k1 or k2."""
+        """Per array dimension, the sum over its directions of c_j times x1, x2, square or k2."""
         return [sum(coefficients[j] * getattr(a, power)(j) for j in a.covers) for a in self.axes]
 
     # transforms
@@ -112,12 +112,13 @@ class Space:
     def _plans(self) -> tuple[list[_Plan], list[_Plan]]:
         effort = "FFTW_MEASURE" if self.size <= 64**3 else "FFTW_ESTIMATE"
         return tuple(
-            [_Plan(self, dims, way, effort) for family in (COMPLEX, COSINE) if (dims := self._dims(family))]
+            [_Plan(self, dims, way, effort) for real in (False, True) if (dims := self._dims(real=real))]
             for way in (0, 1)
         )
 
-    def _dims(self, family: tuple[str, str]) -> tuple[int, ...]:
-        return tuple(d for d, a in enumerate(self.axes) if a.fftw == family)
+    def _dims(self, *, real: bool) -> tuple[int, ...]:
+        """Array dimensions with a transform of FFTW: those of plane waves, or the real ones of cosines and sines."""
+        return tuple(d for d, a in enumerate(self.axes) if a.fftw and (a.fftw != COMPLEX) == real)
 
     def forward(self, a: Array) -> Array:
         """Overwrite samples `a` with their spectrum; returns it."""
@@ -154,7 +155,7 @@ class Space:
 
     @cached_property
     def _line_plans(self) -> dict[int, tuple[_Plan, _Plan]]:
-        lines = self._dims(COMPLEX)
+        lines = self._dims(real=False)
         return {d: tuple(_Plan(self, (d,), way, "FFTW_ESTIMATE") for way in (0, 1)) for d in lines}
 
     def unfolded(self, samples: Array) -> tuple[Array, Space]:
@@ -194,7 +195,7 @@ class _Plan:
     """
 
     def __init__(self, space: Space, dims: tuple[int, ...], way: int, effort: str) -> None:
-        self.real = space.axes[dims[0]].fftw == COSINE
+        self.real = space.axes[dims[0]].fftw != COMPLEX
         names = tuple(space.axes[d].fftw[way] for d in dims)
         scratch = self._view(space.empty())
         self.plan = pyfftw.FFTW(

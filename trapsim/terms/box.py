@@ -1,4 +1,4 @@
-"""The box: a flat bottom between soft walls."""
+"""The box: a flat bottom between walls, soft or perfectly hard."""
 
 from __future__ import annotations
 
@@ -12,13 +12,15 @@ from trapsim.errors import Complaint
 from trapsim.fields import ORIGIN, Triple, entry
 from trapsim.terms.part import About, Array, Part, Symmetry
 
+#: the word for an edge of no width
+HARD = "hard"
 #: 10-90 % width of an error-function edge, in its standard deviations
 EDGE = 2 * np.sqrt(2) * special.erfinv(0.8)
 
 
 @dataclass(frozen=True, kw_only=True)
 class Box(Part):
-    """Walls of finite height around a flat bottom; their profile is an error function."""
+    """Walls around a flat bottom: of finite height, their profile an error function; or perfectly reflecting ones."""
 
     kind: ClassVar[str] = "box"
 
@@ -30,9 +32,19 @@ class Box(Part):
         "length", "full size along x, y, z where the wall has half its height; across a cylinder, its diameter twice",
         count=3, above=0.0, ramp=True, example='"40 um"',
     )
-    height: float = entry("energy", "of the walls", above=0.0, ramp=True, example='"200 nK"')
-    edge: float = entry("length", "from 10 to 90 % of the wall's height", above=0.0, ramp=True, example='"1 um"')
+    height: float | None = entry(
+        "energy", "of the walls; needed unless the edge is hard", default=None, above=0.0, ramp=True, example='"200 nK"'
+    )
+    edge: float | str = entry(
+        "length", "from 10 to 90 % of the wall's height; \"hard\": perfectly reflecting walls, which stand still until a "
+        "release takes them away at once", above=0.0, ramp=True, words=(HARD,), example='"1 um"',
+    )
     centre: Triple = entry("length", "the middle of the box", default=ORIGIN, count=3, ramp=True)
+
+    @property
+    def hard(self) -> bool:
+        """Whether its walls are perfectly reflecting: the wave function vanishes on them."""
+        return self.edge == HARD
 
     @property
     def along(self) -> int:
@@ -50,6 +62,10 @@ class Box(Part):
                 f"{place}.size", f"{1e6 * self.size[first]:g} um and {1e6 * self.size[second]:g} um across",
                 "a cylinder has one diameter", "write it twice, or shape = \"cuboid\"",
             ))  # fmt: skip
+        if self.hard:
+            return out + self._hard_complaints(place)
+        if self.height is None:
+            out.append(Complaint(f"{place}.height", "", "soft walls have a height", 'write height = "200 nK"'))
         if self.edge > min(self.size) / 2:
             out.append(Complaint(
                 f"{place}.edge", f"{1e6 * self.edge:g} um", "walls softer than half the box leave no flat bottom",
@@ -57,12 +73,26 @@ class Box(Part):
             ))  # fmt: skip
         return out
 
+    def _hard_complaints(self, place: str) -> list[Complaint]:
+        if self.shape != "cuboid":
+            return [Complaint(f"{place}.edge", f'"{HARD}"', "only a cuboid has perfectly reflecting walls",
+                              'write a soft edge, such as edge = "1 um", or shape = "cuboid"')]
+        if self.strength != 1:
+            return [Complaint(
+                f"{place}.strength", f"{self.strength:g}",
+                "perfectly reflecting walls are there from the start, and nothing weakens them",
+                'leave strength out, or write a soft edge, such as edge = "1 um"',
+            )]  # fmt: skip
+        return []
+
     def _inside(self, distance: Array, half: float) -> Array:
         """1 inside, 0 outside, 1/2 at `half`, for a distance from the middle that may have either sign."""
         width = np.sqrt(2) * self.edge / EDGE
         return 0.5 * (special.erf((distance + half) / width) - special.erf((distance - half) / width))
 
-    def energy(self, x: Array, y: Array, z: Array) -> Array:
+    def energy(self, x: Array, y: Array, z: Array) -> Array | float:
+        if self.hard:
+            return 0.0  # between the walls; beyond them nobody is
         u = [v - c for v, c in zip((x, y, z), self.centre, strict=True)]
         if self.shape == "cuboid":
             inside = np.prod([1.0])
@@ -80,9 +110,13 @@ class Box(Part):
     def grips(self) -> frozenset[int]:
         return frozenset({0, 1, 2})
 
+    @property
+    def walls(self) -> frozenset[int]:
+        return frozenset({0, 1, 2}) if self.hard else frozenset()
+
     def symmetry(self) -> Symmetry:
         even = tuple(About(c) for c in self.centre)
         return Symmetry(even, frozenset({self.along}) if self.shape == "cylinder" else frozenset())
 
     def finest(self) -> float:
-        return self.edge
+        return np.inf if self.hard else self.edge

@@ -61,6 +61,8 @@ class Part:
         The shortest length in m over which it changes, infinity for a parabola.
     `grips`
         Directions in which it can hold atoms without steering them: while it does, the frame stands still there.
+    `walls`
+        Directions that it closes with perfectly reflecting walls.
     `rate(speed)`
         How fast (rad/s) its energy changes for a point that moves past it at up to `speed` (3,) m/s.
     """
@@ -90,6 +92,10 @@ class Part:
 
     @property
     def grips(self) -> frozenset[int]:
+        return frozenset()
+
+    @property
+    def walls(self) -> frozenset[int]:
         return frozenset()
 
     def rate(self, speed: Array) -> float:
@@ -143,6 +149,11 @@ def remainder(
             if taken and (f or k):
                 total = total + sign * (f * (u - c) - 0.5 * k * (u - c) ** 2)
     return total
+
+
+def walled(parts: Iterable[Part]) -> frozenset[int]:
+    """Directions that some part closes with perfectly reflecting walls."""
+    return frozenset().union(*(p.walls for p in parts if p.strength > 0))
 
 
 def gripped(parts: Iterable[Part]) -> frozenset[int]:
