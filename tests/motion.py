@@ -20,7 +20,7 @@ from trapsim.evolve.march import march
 from trapsim.evolve.scaling import Interval
 from trapsim.evolve.state import State, Tick
 from trapsim.measure.observables import Moments
-from trapsim.prepare.setup import Setup
+from trapsim.prepare.setup import Setup, memory_needed, prepare
 from trapsim.record.recorder import observe
 from trapsim.record.series import Track
 
@@ -28,6 +28,13 @@ Array = np.ndarray
 
 RB = units.MASSES["Rb-87"]
 NUMBER = 1e5
+
+
+def cramped(plan: trapsim.Plan) -> trapsim.Plan:
+    """The same plan with memory for the grids it begins with and nothing larger."""
+    setup = prepare(plan)
+    points = max(leg.space.size for leg in (setup, *setup.legs))
+    return trapsim.plan_from_text(plan.source, plan.name, {"numerics.memory": f"{memory_needed(points)!r} B"})
 
 
 def hertz(values: Sequence[float]) -> str:

@@ -27,7 +27,7 @@ def at_the_door(kind: str, duration: float, **words: object) -> tuple[Setup, Sta
         stage = motion.stage("pulse", OWN.s(duration), to=to)
     words = {"a": OWN.a, "accuracy": "fine", **words}
     setup = prepare(motion.cloud(stage, frequency=OWN.hz(1, 1, 1.4), **words))
-    state = _enter(motion.begin(setup), setup.legs[0], setup.guards)
+    state = _enter(motion.begin(setup), setup.legs[0], setup.space, guards=setup.guards, afford=lambda points: False)
     return setup, state, stepper(state.law, setup.legs[0], setup.q)
 
 
@@ -47,7 +47,7 @@ def extrapolated(step: SplitStep, state: State, span: float, count: int) -> np.n
     phi = step.space.array(state.cloud.phi)
     edges = np.linspace(0, span, count + 1)
     free = Flight(tolerance=np.inf)
-    work = Buffers(phi, step)
+    work = Buffers(step)
     for t0, t1 in zip(edges[:-1], edges[1:], strict=True):
         assert free.take(step, phi, t0, Stride(t1 - t0), t1 - t0, work).h == t1 - t0
     return phi
@@ -74,7 +74,7 @@ def test_the_estimate_of_a_step_is_its_error() -> None:
     h = OWN.s(0.1)
     coarse = step.strang(step.space.array(state.cloud.phi), 0.0, h)
     truth = extrapolated(step, state, h, 20)
-    work = Buffers(state.cloud.phi, step)
+    work = Buffers(step)
     phi = step.space.array(state.cloud.phi)
     taken = Flight(np.inf).take(step, phi, 0.0, Stride(h), h, work)
     # |F - C|/3 is a quarter of the error of the whole step C, up to higher orders
@@ -84,7 +84,7 @@ def test_the_estimate_of_a_step_is_its_error() -> None:
 
 def test_a_step_beyond_the_tolerance_is_refused_and_shortened() -> None:
     _, state, step = at_the_door("flight", 0.8)
-    work = Buffers(state.cloud.phi, step)
+    work = Buffers(step)
     phi = step.space.array(state.cloud.phi)
     h = OWN.s(0.4)
     taken = Flight(1e-6).take(step, phi, 0.0, Stride(h), h, work)
@@ -135,7 +135,7 @@ def test_beyond_the_cap_the_splitting_is_wrong_with_a_perfect_norm() -> None:
         motion.stage("pulse", own.s(12), to=to), frequency=own.hz(1, 1, 1), a=own.a, accuracy="draft",
         numerics='axes = "full"\npoints = [32, 32, 32]',
     ))  # fmt: skip
-    state = _enter(motion.begin(setup), setup.legs[0], setup.guards)
+    state = _enter(motion.begin(setup), setup.legs[0], setup.space, guards=setup.guards, afford=lambda points: False)
     step = stepper(state.law, setup.legs[0], setup.q)
     peak = float(state.cloud.density().max())
     unit = step.fastest_phase(0.0, own.s(1e-3), peak) / own.s(1e-3)
@@ -173,7 +173,7 @@ def test_the_mean_field_turns_the_phase_by_its_coupling() -> None:
         numerics=f'extent = ["{length!r} m", "{length!r} m", "auto"]',
     )  # fmt: skip
     setup = prepare(plan)
-    state = _enter(motion.begin(setup), setup.legs[0], setup.guards)
+    state = _enter(motion.begin(setup), setup.legs[0], setup.space, guards=setup.guards, afford=lambda points: False)
     step = stepper(state.law, setup.legs[0], setup.q)
     flat = step.space.array(np.full(step.space.shape, 1.0))
     flat /= sqrt(step.space.integral(np.abs(flat) ** 2))

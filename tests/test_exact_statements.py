@@ -344,4 +344,4 @@ def test_atoms_too_fast_for_a_grid_in_the_lab_are_refused() -> None:
         numerics='frame = "lab"\nextent = ["20 um", "20 um", "130 um"]',
     )  # fmt: skip
     with pytest.raises(trapsim.PhysicsRefused, match=r"highest wave number along z(.|\n)*numerics.points along z"):
-        trapsim.run(plan)
+        trapsim.run(motion.cramped(plan))

@@ -15,6 +15,10 @@ from trapsim.prepare.setup import Setup, memory_needed, prepare
 
 #: points along a trapped direction; with fewer there is no spectrum to watch
 FEWEST = 8
+#: of the memory that is free, what a run may take by itself
+SHARE = 0.6
+#: how many times the points of the largest grid planned it may come to on the way: doubled thrice in every direction
+LARGER = 512
 _FEWER = 'take fewer numerics.points, a shorter numerics.extent, or numerics.accuracy = "draft"'
 
 
@@ -34,14 +38,21 @@ def set_up(plan: Plan) -> Setup:
                 f"numerics.points[{j}]", str(n), f"a cloud held along {'xyz'[j]} takes at least {FEWEST} points",
                 'write more points, or "auto"',
             )  # fmt: skip
-    needed, there = max(memory_needed(leg.space) for leg in (setup, *setup.legs)), memory_there()
-    if plan.numerics.memory is None and needed > there:
+    needed, there = max(memory_needed(leg.space.size) for leg in (setup, *setup.legs)), memory_there()
+    if plan.numerics.memory is None and needed > SHARE * there:
         shape = " x ".join(map(str, max((leg.space for leg in (setup, *setup.legs)), key=lambda s: s.size).shape))
         raise PlanError.at(
             "numerics.points", f"{shape} points, which need about {needed / 1e9:.3g} GB",
-            f"this machine has {there / 1e9:.3g} GB free", f"{_FEWER}; or set numerics.memory yourself",
+            f"this machine has {there / 1e9:.3g} GB free, and {SHARE:.0%} of that may be used",
+            f"{_FEWER}; or set numerics.memory yourself",
         )  # fmt: skip
     return setup
+
+
+def affordable(setup: Setup, points: int) -> bool:
+    """Whether a grid of so many points may be used, when a cloud outgrows its own on the way."""
+    limit, planned = setup.plan.numerics.memory, max(leg.space.size for leg in (setup, *setup.legs))
+    return points <= LARGER * planned and memory_needed(points) <= (SHARE * memory_there() if limit is None else limit)
 
 
 @contextmanager

@@ -236,7 +236,9 @@ def _heard(arrays: Mapping[str, Any]) -> dict[str, Any]:
 
 
 def _state(arrays: Mapping[str, Any], told: Mapping[str, Any], spaces: list[Space]) -> State:
-    space = next(s for s in spaces if s.describe() == told["space"])
+    same = [s for s in spaces if s.describe() == told["space"]]
+    # a cloud that has outgrown its grid is on one that nobody planned
+    space = same[0] if same else Space.from_description(told["space"], threads=spaces[-1].threads)
     frame = Frame(*(arrays[f"frame_{n}"] for n in _FRAME))
     law = None
     if told["law_time"] is not None:

@@ -11,12 +11,13 @@ import time
 from collections.abc import Callable
 from contextlib import ExitStack
 from dataclasses import dataclass
+from functools import partial
 from pathlib import Path
 from typing import Any, Protocol
 
 from trapsim.cloud.cloud import Cloud
 from trapsim.corridor import folder as place
-from trapsim.corridor.bounds import ordinary_numbers, set_up
+from trapsim.corridor.bounds import affordable, ordinary_numbers, set_up
 from trapsim.corridor.findings import Spent, ground_figures, summarise, wave_function
 from trapsim.corridor.ground import ground_state
 from trapsim.errors import FileTrouble, Interrupted, Notice, PhysicsRefused
@@ -242,7 +243,8 @@ class _Corridor:
     def _march(self, state: State) -> State:
         setup = self.setup
         self.progress.at(state.cloud.time, setup.legs[state.leg].name if state.leg < len(setup.legs) else "")
-        for tick in march(state, setup.legs, pace=setup.pace, guards=setup.guards):
+        afford = partial(affordable, setup)
+        for tick in march(state, setup.legs, pace=setup.pace, guards=setup.guards, afford=afford):
             state = self._hear(tick)
         return state
 

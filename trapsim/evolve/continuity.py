@@ -32,7 +32,7 @@ def continuity(cloud: Cloud, law: LawStart, leg: Leg, h: float) -> float:
     float
         ||d n/dt + div j|| over ||n|| times the fastest rate of the flow.
     """
-    step = stepper(law, leg, cloud.q)
+    step = stepper(law, replace(leg, space=cloud.space), cloud.q)
     short = min(SHARE * h, (cloud.time - law.time) / 2)
     states = [cloud]
     for _ in range(2):

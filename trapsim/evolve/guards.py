@@ -80,7 +80,8 @@ class Alarm:
             got = f"{self.population:.1e} of the atoms near the highest wave number along {name} at {1e3 * time:.4g} ms"
             rule = f"at most {self.limit:.0e} may be there, or fast atoms appear as slow ones"
             remedy = f"numerics.points along {name} (now {axis.counted})"
-        return PhysicsRefused.at(place, got, rule, f"give more room with {remedy}, or a finer numerics.accuracy")
+        way_out = f"give more room with {remedy}, numerics.memory to grow into, or a finer numerics.accuracy"
+        return PhysicsRefused.at(place, got, rule, way_out)
 
 
 def edge_population(space: Space, marginals: Sequence[Array]) -> Array:
@@ -99,6 +100,11 @@ def spectrum_population(space: Space, marginals: Sequence[Array]) -> Array:
         for a, m in zip(space.axes, marginals, strict=True)
     ]
     return np.array([shares[space.dim(j)] for j in range(3)])
+
+
+def share_beyond(population: Array, places: Array, part: float) -> float:
+    """The share of a population beyond a part of the furthest |place|."""
+    return _share(population, np.abs(places) > part * np.abs(places).max())
 
 
 def _upper(k: Array) -> Array:

@@ -13,15 +13,15 @@ import numpy as np
 
 from trapsim.cloud.cloud import Cloud, regauge
 from trapsim.constants import HBAR
-from trapsim.errors import PhysicsRefused
-from trapsim.evolve.door import through
+from trapsim.evolve.door import FULL_TAIL, Afford, made_fit, settled, through
 from trapsim.evolve.guards import Guards, edge_population, spectrum_population
 from trapsim.evolve.pace import Buffers
+from trapsim.evolve.regrid import grown_alike, nearly_full, roomier
 from trapsim.evolve.scaling import LawStart, MovingLaw, StandingLaw, measure_law
 from trapsim.evolve.splitstep import Rest, SplitStep
-from trapsim.evolve.state import Books, Leg, Pace, State, Tick
+from trapsim.evolve.state import Leg, Pace, State, Tick
 from trapsim.measure.observables import Profile, profile, reach
-from trapsim.space.space import Array
+from trapsim.space.space import Array, Space
 from trapsim.terms.part import remainder
 
 #: the frame law is measured again when a width in the frame has moved by this share
@@ -30,7 +30,7 @@ MOVED = 0.15
 FOLLOW = 1e-3
 #: a spectrum is full when all but FULL_TAIL of it reaches this share of its axis; then the frame takes up a correlation
 #: of xi and k beyond CHIRPED
-FULL, FULL_TAIL, CHIRPED = 0.5, 1e-4, 0.1
+FULL, CHIRPED = 0.5, 0.1
 #: in flight the frame grows so that less than this share of what the guards allow comes near the edge
 HELD_BACK = 0.1
 #: share of an axis' highest wave number to which the phase at the cloud's edge may wind before the frame is settled again
@@ -44,7 +44,7 @@ LOOK = 8
 
 
 def march(
-    state: State, legs: Sequence[Leg], *, pace: Pace, guards: Guards
+    state: State, legs: Sequence[Leg], *, pace: Pace, guards: Guards, afford: Afford = lambda points: False
 ) -> Iterator[Tick]:
     """Play the legs from a state on; yields after every accepted step.
 
@@ -54,6 +54,8 @@ def march(
     legs : sequence of Leg
     pace : Pace
     guards : Guards
+    afford : callable
+        Whether there is memory for so many points, when a cloud outgrows its grid; without it the grids stay as they are.
 
     Raises
     ------
@@ -63,28 +65,32 @@ def march(
     while state.leg < len(legs):
         leg = legs[state.leg]
         if state.law is None:
-            state = _enter(state, leg, guards)
-        state = yield from _play(state, leg, pace=pace, guards=guards)
+            before = legs[state.leg - 1].space if state.leg else state.cloud.space
+            state = _enter(state, leg, before, guards=guards, afford=afford)
+        state = yield from _play(state, leg, pace=pace, guards=guards, afford=afford)
 
 
-def _enter(state: State, leg: Leg, guards: Guards) -> State:
+def _enter(state: State, leg: Leg, before: Space, *, guards: Guards, afford: Afford) -> State:
     """Put the cloud on the leg's space, kick it, settle the frame, and measure the frame law on it."""
+    place = f"stage {leg.name}"
     cloud = replace(state.cloud, time=leg.start)
-    cloud, lost = through(cloud, leg.space)
+    cloud, lost = through(cloud, grown_alike(leg.space, cloud.space, before))
     cloud = replace(cloud, frame=replace(cloud.frame, Xdot=cloud.frame.Xdot + np.asarray(leg.kick)))
-    _must_fit(cloud, leg)
-    cloud = settled(cloud, leg.moving)
-    seen = profile(cloud)
-    cloud, seen = _followed(cloud, seen, leg)
+    cloud = settled(made_fit(cloud, leg.moving, place=place, afford=afford), leg.moving)
+    cloud, seen = _followed(cloud, profile(cloud), leg)
+    books = replace(state.books.spent(PROFILE_PAIRS, flight=not leg.trapped), kink=np.maximum(state.books.kink, lost))
     spectrum = spectrum_population(cloud.space, seen.spectrum)
-    books = state.books.spent(PROFILE_PAIRS, flight=not leg.trapped)
-    books = replace(books, spectrum=np.maximum(books.spectrum, spectrum), kink=np.maximum(books.kink, lost))
-    alarm = guards.check(
-        time=cloud.time, norm=seen.norm, edge=np.zeros(3), spectrum=spectrum, place=f"stage {leg.name}"
-    )
-    if alarm:
-        raise alarm.refuse(time=cloud.time, place=f"stage {leg.name}", space=cloud.space)
-    return replace(state, cloud=cloud, law=_law_start(cloud, seen, leg, guards), stride=None, books=books)
+    notices = state.notices
+    if nearly_full(guards, np.zeros(3), spectrum):
+        found = roomier(cloud, leg, guards=guards, edge=np.zeros(3), spectrum=spectrum, afford=afford)
+        if found is not None:
+            cloud, told = found
+            seen, notices = profile(cloud), (*notices, told)
+            books = books.spent(PROFILE_PAIRS, flight=not leg.trapped)
+    books = replace(books, spectrum=np.maximum(books.spectrum, spectrum))
+    _stop_at(cloud, leg, guards, norm=seen.norm, spectrum=spectrum_population(cloud.space, seen.spectrum))
+    law = _law_start(cloud, seen, leg, guards)
+    return replace(state, cloud=cloud, law=law, stride=None, books=books, notices=notices)
 
 
 def _law_start(cloud: Cloud, seen: Profile, leg: Leg, guards: Guards) -> LawStart:
@@ -122,46 +128,6 @@ def _squeeze(cloud: Cloud, seen: Profile, leg: Leg) -> Array | None:
         size = sum(frame.b[j] ** 2 * seen.var[j] for j in axis.covers) * HBAR / cloud.q
         out[list(axis.covers)] = slope / size
     return out
-
-
-def settled(cloud: Cloud, moving: Sequence[bool]) -> Cloud:
-    """The same cloud in a frame at rest in the directions in which it does not move; exact."""
-    frame = cloud.frame
-    bdot = np.where(moving, frame.bdot, 0.0)
-    Xdot = np.where(moving, frame.Xdot, 0.0)
-    if (bdot == frame.bdot).all() and (Xdot == frame.Xdot).all():
-        return cloud
-    return regauge(cloud, bdot=bdot, Xdot=Xdot)
-
-
-def _must_fit(cloud: Cloud, leg: Leg) -> None:
-    """Refuse a frame that comes to rest when the grid cannot hold the velocities it leaves to the wave function.
-
-    Raises
-    ------
-    PhysicsRefused
-        Before they would be folded back to other velocities.
-    """
-    space, frame = cloud.space, cloud.frame
-    stopped = [
-        j for j in range(3)
-        if not leg.moving[j] and (frame.Xdot[j] or frame.bdot[j]) and space.axis(j).carries_velocity
-    ]  # fmt: skip
-    if not stopped:
-        return
-    seen = profile(cloud)
-    for j in stopped:
-        axis, d = space.axis(j), space.dim(j)
-        own = reach(axis.k, seen.spectrum[d] * axis.spectral_weights, FULL_TAIL)
-        far = reach(axis.points, seen.density[d] * axis.weights, FULL_TAIL)
-        wind = frame.b[j] / cloud.q * (abs(frame.Xdot[j]) + abs(frame.bdot[j]) * far)
-        if own + wind > axis.k_max:
-            fastest = 1e3 * axis.k_max * cloud.q / frame.b[j]
-            raise PhysicsRefused.at(
-                f"stage {leg.name}", f"a cloud that moves at {1e3 * frame.Xdot[j]:.4g} mm/s along {'xyz'[j]} as it is held",
-                f"the grid that stands there holds velocities up to {fastest:.4g} mm/s",
-                f"give more numerics.points along {'xyz'[j]} (now {axis.whole}), or let it be held before it moves",
-            )  # fmt: skip
 
 
 def _followed(cloud: Cloud, seen: Profile, leg: Leg) -> tuple[Cloud, Profile]:
@@ -231,14 +197,18 @@ def _rate(law: MovingLaw | StandingLaw, leg: Leg) -> Callable[[float], float]:
     return rate
 
 
-def _play(state: State, leg: Leg, *, pace: Pace, guards: Guards) -> Generator[Tick, None, State]:
+def _play(
+    state: State, leg: Leg, *, pace: Pace, guards: Guards, afford: Afford
+) -> Generator[Tick, None, State]:
     """From a state inside a leg to the leg's end; returns the state at the next leg's door."""
     cloud, law_start, q = state.cloud, state.law, state.cloud.q
+    # it may have outgrown the space that was planned
+    leg = replace(leg, space=cloud.space)
     step = stepper(law_start, leg, q)
     steps = pace.of(leg)
-    work = Buffers(cloud.phi, step)
+    work = Buffers(step)
     stride = state.stride
-    books = state.books
+    books, notices = state.books, state.notices
     phi = cloud.space.array(cloud.phi)
     # a moving frame takes up all that is quadratic; anything else may throw atoms out of the spectrum on the way
     shifting = not all(leg.moving) or not all(p.quadratic for p in leg.interval.parts_at(0.5 * (leg.start + leg.stop)))
@@ -251,30 +221,46 @@ def _play(state: State, leg: Leg, *, pace: Pace, guards: Guards) -> Generator[Ti
             left = target - t
             limit = left if stride.h >= 0.95 * left else (left / 2 if stride.h > 0.5 * left else left)
             spent = step.pairs
+            work.before[...] = phi
             taken = steps.take(step, phi, t, stride, limit, work)
-            stride = taken.stride
             now = target if left - taken.h < 1e-9 * left else t + taken.h
-            cloud = replace(cloud, phi=phi, time=now, frame=step.law.frame(now))
+            after = replace(cloud, phi=phi, time=now, frame=step.law.frame(now))
+            spent = step.pairs - spent
+            marginals = after.space.marginals(after.density())
+            edge = np.where(guards.watched, edge_population(after.space, marginals), 0.0)
+            spectrum = np.zeros(3)
+            if now == leg.stop or books.steps % LOOK == 0 or (shifting and not leg.trapped):
+                spectrum, spent = _spectrum(after), spent + 0.5
+            norm = float(np.dot(marginals[0], after.space.axes[0].weights))
+            if np.isfinite(norm) and nearly_full(guards, edge, spectrum):
+                before = replace(cloud, phi=work.before)
+                found = roomier(before, leg, guards=guards, edge=edge, spectrum=spectrum, afford=afford)
+                if found is not None:
+                    # the step is taken back, and taken again with more room
+                    cloud, told = found
+                    phi, notices, leg = cloud.phi, (*notices, told), replace(leg, space=cloud.space)
+                    law_start = _law_start(cloud, profile(cloud), leg, guards)
+                    step = stepper(law_start, leg, q)
+                    work, stride = Buffers(step), None
+                    books = books.spent(spent + PROFILE_PAIRS, flight=not leg.trapped)
+                    continue
+            cloud, stride = after, taken.stride
             books = replace(
-                books.spent(step.pairs - spent, flight=not leg.trapped),
+                books.spent(spent, flight=not leg.trapped),
                 steps=books.steps + 1, rejected=books.rejected + taken.rejected, error=books.error + taken.error,
-                local=max(books.local, taken.local),
+                local=max(books.local, taken.local), edge=np.maximum(books.edge, edge),
+                spectrum=np.maximum(books.spectrum, spectrum),
             )  # fmt: skip
-            marginals = cloud.space.marginals(cloud.density())
-            edge = np.where(guards.watched, edge_population(cloud.space, marginals), 0.0)
-            books = replace(books, edge=np.maximum(books.edge, edge))
             crowded = not leg.trapped and edge.max() > max(HELD_BACK * guards.edge, 2 * law_start.edge)
             moved = _has_moved(cloud, marginals, law_start, leg)
-            _stop_at(cloud, marginals, edge, leg, guards)
-            if now == leg.stop or (shifting and (not leg.trapped or books.steps % LOOK == 0)):
-                books = _watch_spectrum(cloud, books, leg, guards)
+            _stop_at(cloud, leg, guards, norm=norm, edge=edge, spectrum=spectrum)
             if any(leg.moving) and now < leg.stop and (moved or crowded):
                 cloud, seen = _followed(cloud, profile(cloud), leg)
                 phi = cloud.phi
                 law_start = _law_start(cloud, seen, leg, guards)
                 books = books.spent(PROFILE_PAIRS, flight=not leg.trapped)
                 step = stepper(law_start, leg, q)
-            state = replace(state, cloud=cloud, stride=stride, law=law_start, books=books)
+            state = replace(state, cloud=cloud, stride=stride, law=law_start, books=books, notices=notices)
             if now == leg.stop:
                 state = replace(state, leg=state.leg + 1, law=None, stride=None)
             yield Tick(state, "edge" if now == leg.stop else ("landing" if now == target else "step"))
@@ -285,24 +271,22 @@ def _play(state: State, leg: Leg, *, pace: Pace, guards: Guards) -> Generator[Ti
     return state
 
 
-def _stop_at(cloud: Cloud, marginals: list[Array], edge: Array, leg: Leg, guards: Guards) -> None:
+def _stop_at(
+    cloud: Cloud, leg: Leg, guards: Guards, *, norm: float, spectrum: Array, edge: Array | None = None
+) -> None:
     """Let the guards look, and stop where they say so."""
-    norm = float(np.dot(marginals[0], cloud.space.axes[0].weights))
     place = f"stage {leg.name}"
-    alarm = guards.check(time=cloud.time, norm=norm, edge=edge, spectrum=np.zeros(3), place=place)
+    alarm = guards.check(
+        time=cloud.time, norm=norm, edge=np.zeros(3) if edge is None else edge, spectrum=spectrum, place=place
+    )
     if alarm:
         raise alarm.refuse(time=cloud.time, place=place, space=cloud.space)
 
 
-def _watch_spectrum(cloud: Cloud, books: Books, leg: Leg, guards: Guards) -> Books:
+def _spectrum(cloud: Cloud) -> Array:
+    """Populations (3,) near the highest wave numbers; for half a pair."""
     samples = cloud.space.forward(cloud.space.array(cloud.phi))
-    share = spectrum_population(cloud.space, cloud.space.spectral_marginals(samples.real**2 + samples.imag**2))
-    place = f"stage {leg.name}"
-    alarm = guards.check(time=cloud.time, norm=1.0, edge=np.zeros(3), spectrum=share, place=place)
-    if alarm:
-        raise alarm.refuse(time=cloud.time, place=place, space=cloud.space)
-    books = books.spent(0.5, flight=not leg.trapped)
-    return replace(books, spectrum=np.maximum(books.spectrum, share))
+    return spectrum_population(cloud.space, cloud.space.spectral_marginals(samples.real**2 + samples.imag**2))
 
 
 def _has_moved(cloud: Cloud, marginals: list[Array], law: LawStart, leg: Leg) -> bool:

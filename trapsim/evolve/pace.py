@@ -60,9 +60,11 @@ class Taken:
 class Buffers:
     """Work arrays of a leg, so that a step allocates nothing large."""
 
-    def __init__(self, phi: Array, step: SplitStep) -> None:
+    def __init__(self, step: SplitStep) -> None:
         self.coarse = step.space.empty()
         self.fine = step.space.empty()
+        #: the samples before the step, in case it has to be taken back
+        self.before = step.space.empty()
 
 
 @dataclass(frozen=True)

@@ -55,7 +55,7 @@ def predict(setup: Setup) -> Cost:
             elapsed += length
         pairs += spent
         seconds += spent * timed[id(leg.space)] * OVERHEAD
-    memory = max(memory_needed(leg.space) for leg in setup.legs) if setup.legs else memory_needed(setup.space)
+    memory = memory_needed(max(g.space.size for g in (setup, *setup.legs)))
     return Cost(float(pairs), memory, float(seconds))
 
 

@@ -218,7 +218,7 @@ def _space(plan: Plan, words: tuple[str, ...], lengths: Lengths, accuracy: Accur
     space = choose_space(words, lengths, accuracy, extent=plan.numerics.extent, points=plan.numerics.points, threads=1)
     if space.size >= LARGE:
         space = Space(space.axes, threads=threads)
-    needed = memory_needed(space)
+    needed = memory_needed(space.size)
     if plan.numerics.memory is not None and needed > plan.numerics.memory:
         raise PlanError.at(
             "numerics.memory", f"{plan.numerics.memory / 1e9:.3g} GB",
@@ -228,9 +228,9 @@ def _space(plan: Plan, words: tuple[str, ...], lengths: Lengths, accuracy: Accur
     return space
 
 
-def memory_needed(space: Space) -> float:
-    """Bytes a run keeps in work: about a dozen complex arrays."""
-    return 12 * 16.0 * space.size
+def memory_needed(points: int) -> float:
+    """Bytes a run keeps in work on a grid of so many points: about a dozen complex arrays."""
+    return 12 * 16.0 * points
 
 
 def _legs(

@@ -95,6 +95,12 @@ class Axis:
         """The same stretch with twice the points, on which the density is as well resolved as the field."""
         raise TypeError(f"{type(self).__name__} has no finer twin")
 
+    def grown(self, points: float, extent: float) -> Axis:
+        """The same kind of axis with so many times its points and its extent; itself where nothing changes."""
+        if self.uniform or (points == 1 and extent == 1):
+            return self
+        return type(self)(self.covers, round(points * self.n), extent * self.half_extent)
+
     def describe(self) -> dict[str, object]:
         """What it takes to build the same axis again."""
         return {"kind": self.kind, "covers": list(self.covers), "n": self.n, "half_extent": self.half_extent}

@@ -169,6 +169,13 @@ class Space:
         whole = Space(axes, threads=self.threads)
         return whole.array(samples), whole
 
+    def grown(self, points: Sequence[float], extent: Sequence[float]) -> Space:
+        """The space with so many times the points and the extent, (3,) each; itself where nothing changes."""
+        axes = [a.grown(points[a.covers[0]], extent[a.covers[0]]) for a in self.axes]
+        if all(new is old for new, old in zip(axes, self.axes, strict=True)):
+            return self
+        return Space(axes, threads=self.threads)
+
     # words
 
     def words(self) -> list[str]:
