@@ -34,7 +34,7 @@ def packet(space: Space, places: list[float], speeds: list[float], width: float)
 
 @pytest.mark.parametrize("directions", [1, 2, 3])
 def test_a_packet_comes_back_and_shows_its_mirror_image_half_way(directions: int) -> None:
-    space = boxes.space([SIZE] * directions, {1: 64, 2: 32, 3: 20}[directions])
+    space = boxes.space([SIZE] * directions, {1: 48, 2: 32, 3: 20}[directions])
     width = {1: 0.9, 2: 1.2, 3: 1.6}[directions] * UM
     phi = packet(space, [2.3 * UM, -1.1 * UM, 0.7 * UM], [0.2e-3, -0.1e-3, 0.15e-3], width)
     # the corners of the packet that reach beyond the walls are cut off, whatever is left is the state

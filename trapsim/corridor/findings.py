@@ -164,7 +164,7 @@ def summarise(
             error=ErrorEstimate(error.width, error.rate, None if error.centre is None else 1e6 * error.centre),
         ),
         pictures=tuple(_picture_figures(p, timeline.released) for p in album.pictures.values()),
-        warnings=(*notices, *_outside(album.pictures.values()), *_told_of(kink)),
+        warnings=(*notices, *_told_of(kink), *_outside(album.pictures.values())),
     )  # fmt: skip
 
 
