@@ -67,20 +67,20 @@ def in_turns(works: dict[str, Callable[[], object]], *, repeats: int) -> tuple[d
     return {name: median(times) for name, times in spent.items()}, {name: min(times) for name, times in spent.items()}
 
 
-def bare_pair(shape: tuple[int, ...], dtype: np.dtype, threads: int) -> Callable[[], None]:
+class BarePair:
     """A complex transform and back in place, planned by measuring."""
-    a = pyfftw.zeros_aligned(shape, dtype=dtype)
-    there, back = (
-        pyfftw.FFTW(a, a, axes=range(len(shape)), direction=way, threads=threads, flags=("FFTW_MEASURE",))
-        for way in ("FFTW_FORWARD", "FFTW_BACKWARD")
-    )
-    a[...] = 0
 
-    def pair() -> None:
-        there.execute()
-        back.execute()
+    def __init__(self, shape: tuple[int, ...], dtype: np.dtype, threads: int) -> None:
+        self.array = pyfftw.empty_aligned(shape, dtype=dtype)
+        self.there, self.back = (
+            pyfftw.FFTW(self.array, self.array, axes=range(3), direction=way, threads=threads, flags=("FFTW_MEASURE",))
+            for way in ("FFTW_FORWARD", "FFTW_BACKWARD")
+        )
+        self.array[...] = 0
 
-    return pair
+    def __call__(self) -> None:
+        self.there.execute()
+        self.back.execute()
 
 
 @cache
@@ -105,7 +105,7 @@ def one_step(kind: str, n: int, setup: Setup, repeats: int) -> Row:
     step = stepper(measure_law(cloud, profile(cloud), tail=None), leg, setup.q)
     space, phi, empty = leg.space, leg.space.array(start), leg.space.array(0.0)
     threads = os.cpu_count() if n**3 >= LARGE else 1
-    whole = bare_pair((n, n, n), phi.dtype, threads)
+    whole = BarePair((n, n, n), phi.dtype, threads)
     seconds, least = in_turns(
         {
             "step": lambda: step.strang(phi, 0.0, 2e-5), "own": lambda: space.inverse(space.forward(empty)), "whole": whole,
