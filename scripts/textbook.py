@@ -27,6 +27,7 @@ from scipy import constants, fft
 
 Array = np.ndarray
 WORKERS = os.cpu_count() or 1
+MOST_STEPS = 5000
 
 
 @dataclass(frozen=True)
@@ -105,6 +106,8 @@ def relax(cloud: Cloud, grid: Grid, residual: float) -> tuple[Array, float, int]
             return u, mu, steps
         if norm(u - before) < 0.3 * left * dt * mu:
             dt /= 2
+        if steps > MOST_STEPS:
+            raise RuntimeError(f"the ground state stays at a residual of {left:.1e} after {steps} steps")
 
 
 def fly(cloud: Cloud, grid: Grid, psi: Array, duration: float, steps: int) -> Array:
