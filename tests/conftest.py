@@ -10,9 +10,9 @@ for _name in ("OMP_NUM_THREADS", "OPENBLAS_NUM_THREADS"):
 from collections.abc import Callable  # noqa: E402
 
 import pytest  # noqa: E402
-from ready import CONFIGS, Play  # noqa: E402
 
 import trapsim  # noqa: E402
+from ready import CONFIGS, Play  # noqa: E402
 
 pytest.register_assert_rewrite("proofs")
 

@@ -9,10 +9,10 @@ from collections.abc import Callable
 
 import numpy as np
 import pytest
-from ready import CONFIGS, MASS, MS, NAMES, NEAR, Play, Solver, end_of, hz, law
 from scipy.constants import g, hbar, k
 
 import trapsim
+from ready import CONFIGS, MASS, MS, NAMES, NEAR, Play, Solver, end_of, hz, law
 from reference import classical
 
 

@@ -7,11 +7,11 @@ from __future__ import annotations
 
 import numpy as np
 import pytest
-from ready import CONFIGS, MASS, MS, SCATTERING_LENGTH, Play, end_of, hz, law
 from scipy import optimize, special
 from scipy.constants import c, epsilon_0, g, h, k
 
 import trapsim
+from ready import CONFIGS, MASS, MS, SCATTERING_LENGTH, Play, end_of, hz, law
 from reference import bands, bruteforce, classical, planewaves
 from reference.planewaves import Recoil
 from reference.units import A0, thomas_fermi

@@ -6,9 +6,9 @@ import re
 
 import numpy as np
 import pytest
-from ready import HOME, MS, Play, hz, law
 
 import trapsim
+from ready import HOME, MS, Play, hz, law
 
 README = (HOME / "README.md").read_text(encoding="utf-8")
 
