@@ -12,7 +12,7 @@ from scipy import interpolate
 
 from trapsim.cloud.cloud import Cloud
 from trapsim.measure.views import VIEWS
-from trapsim.space.axes import Array, Radial
+from trapsim.space.axes import Array, Radial, Wave
 from trapsim.space.space import Space
 
 #: samples per side of a raster
@@ -70,11 +70,13 @@ class ColumnViews:
         self.finer = [a.finer() if isinstance(a, Radial) else a for a in space.axes]
         self._onto_finer = space.axes[0].basis(self.finer[0].points) if isinstance(space.axes[0], Radial) else None
         self._lines = [midpoints(a.half_extent, n) for a, n in zip(self.finer, self.samples, strict=True)]
-        #: per axis, the matrix from samples to the raster: the side view on a radial axis, else the axis' own series
+        #: per axis, the matrix from samples to the raster: the side view on a radial axis, else the axis' own series;
+        #: none where both are midpoints of equal cells, so that a longer transform sums the series
         self._onto = [
-            a.project(line) if isinstance(a, Radial) else a.density_basis(line)
+            None if isinstance(a, Wave) and 1 < a.n <= len(line)
+            else a.project(line) if isinstance(a, Radial) else a.density_basis(line)
             for a, line in zip(self.finer, self._lines, strict=True)
-        ]
+        ]  # fmt: skip
 
     def density(self, cloud: Cloud) -> Array:
         """|phi|^2 on the finer points."""
@@ -126,7 +128,7 @@ class ColumnViews:
         if isinstance(axis, Radial):
             spread = profile  # a round cloud was spread over the raster's own line
         else:
-            spread = profile @ self._onto[self.space.dim(up)].T
+            spread = self._rastered(profile, self.space.dim(up))
         middle = frame.X[right] * cosine - frame.X[along] * sine
         # grid measures along and right cancel against the density's own; up is left
         return Column(s + middle, frame.lab(rows, up), spread.T / frame.b[up], view, cloud.time)
@@ -177,8 +179,21 @@ class ColumnViews:
         dims = [d for d in range(len(self.space.axes)) if d != gone]
         if dims != [self.space.dim(up), self.space.dim(right)]:
             rest = rest.T
-        rows, columns = (self._onto[self.space.dim(j)] for j in (up, right))
-        return rows @ rest @ columns.T
+        across = self._rastered(rest, self.space.dim(right))
+        return self._rastered(across.T, self.space.dim(up)).T
+
+    def _rastered(self, values: Array, d: int) -> Array:
+        """Real samples along array dimension d (here the last) on the raster's line."""
+        axis, matrix, m = self.finer[d], self._onto[d], len(self._lines[d])
+        if matrix is not None:
+            return values @ matrix.T
+        n = axis.n
+        spectrum = np.fft.rfft(values, axis=-1)
+        spectrum *= np.exp(2j * np.pi * np.arange(n // 2 + 1) * (self._lines[d][0] - axis.points[0]) / (n * axis.spacing))
+        if n % 2 == 0 and m > n:
+            # the highest wave has no sign: half of it goes to either
+            spectrum[..., -1] *= 0.5
+        return np.fft.irfft(spectrum, m, axis=-1) * (m / n)
 
     def _round(self, profile: Array) -> Array:
         """A round cloud seen along its axis: a profile in r, spread over the raster."""
@@ -186,7 +201,7 @@ class ColumnViews:
 
     def _side(self, density: Array, up: int, right: int, along: int) -> Array:
         """A round cloud seen from the side: the Fourier slice of the radial axis, the other axis' own series."""
-        values = self._onto[0] @ density @ self._onto[1].T
+        values = self._rastered(self._onto[0] @ density, 1)
         across = next(j for j in self.space.axes[0].covers if j != along)
         return values if across == up else values.T
 
