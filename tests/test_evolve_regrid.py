@@ -124,3 +124,13 @@ def test_a_lattice_keeps_a_whole_number_of_points_per_period() -> None:
     assert states[-1].cloud.space.axis(0).counted > setup.space.axis(0).counted
     assert per_period == pytest.approx(round(per_period), abs=1e-9)
     assert spacing[0] <= setup.space.axis(0).spacing
+
+
+def test_a_collapse_on_the_way_ends_with_words_about_attraction() -> None:
+    """N |a|/a_ho far beyond 0.57: no ground state, and no grid that holds it (Ruprecht et al., PRA 51, 4704 (1995))."""
+    quench = motion.stage("ramp", 0.1e-3, to='{ "atoms.scattering_length" = "-100 a0" }')
+    plan = motion.cloud(
+        quench, motion.stage("hold", 5e-3), frequency=(60.0, 60.0, 60.0), a="50 a0", number=2e4, accuracy="draft"
+    )
+    with pytest.raises(trapsim.PhysicsRefused, match=r"attract each other(.|\n)*take fewer atoms"):
+        trapsim.run(motion.cramped(plan))

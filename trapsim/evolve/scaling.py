@@ -29,6 +29,8 @@ from trapsim.terms.part import ALL, Array, Part, steered
 INSIDE = 0.9
 #: atoms nearer to that limit are taken to be this share of it away
 CLOSE = 0.3
+#: rad, far beyond any turn of phase space in one step
+FURTHEST = 300.0
 
 
 class Interval(Protocol):
@@ -204,7 +206,8 @@ class MovingLaw:
     def turn(self, dK: Array) -> tuple[Array, Array]:
         """Lens (1/s) and drift (s) that turn phase space by sqrt(A) dK: sqrt(A) tan(theta/2), sin(theta)/sqrt(A)."""
         root = np.sqrt(np.abs(self.start.A))
-        theta = root * dK
+        # steps of such a turn are asked about and never taken
+        theta = np.clip(root * dK, -FURTHEST, FURTHEST)
         pull = self.start.A >= 0
         lens = np.where(pull, root * np.tan(theta / 2), -root * np.tanh(theta / 2))
         sine = np.where(pull, np.sin(theta), np.sinh(theta))
