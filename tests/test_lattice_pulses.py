@@ -180,3 +180,18 @@ def test_a_flash_on_a_falling_expanding_kicked_cloud_is_the_same_on_a_grid_that_
     assert one.velocity_mm_per_s == pytest.approx(other.velocity_mm_per_s, abs=1e-3)
     assert one.interaction_nk == pytest.approx(other.interaction_nk, rel=1e-3)
     assert one.orders["light"]["1"] > 0.2
+
+
+def test_weak_orders_keep_their_share_while_they_overlap() -> None:
+    """Orders still on top of each other beat through the mean field, and a step in time with the beat would mix them.
+
+    Exact: the energy is constant in flight, and the momentum of a cloud flashed evenly stays zero.
+    """
+    parts = light.lattice(1.22, phase='"23.2 deg"').replace("532 nm", "431.1 nm")
+    flash = motion.stage("pulse", 100.753e-6, to='{ "light.strength" = 1 }')
+    run = trapsim.run(motion.cloud(
+        motion.stage("release", 1.713e-3), flash, motion.stage("hold", 9.559e-3), frequency=(48.899, 23.805, 124.89),
+        number=3811, parts=parts,
+    ))  # fmt: skip
+    assert run.summary.numerics.energy_drift < 2e-4
+    assert run.summary.end.velocity_mm_per_s[0] == pytest.approx(0, abs=1e-6)

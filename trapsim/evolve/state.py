@@ -14,6 +14,9 @@ from trapsim.fields import ORIGIN, Triple
 from trapsim.space.space import Array, Space
 from trapsim.terms.part import ALL
 
+#: orders that overlap beat, and steps in time with the beat mix them: a weak order then takes all of a step's error
+BEATING = 0.1
+
 
 @dataclass(frozen=True)
 class Leg:
@@ -152,6 +155,7 @@ class Pace:
     cap: float
 
     def of(self, leg: Leg) -> Flight | Trapped:
-        # in a trap the errors of plain steps do not add up, so that one step may be that much worse
-        plain = leg.trapped and not leg.brief
-        return Trapped(30 * self.tolerance, self.cap) if plain else Flight(self.tolerance)
+        if leg.trapped and not leg.brief:
+            # in a trap the errors of plain steps do not add up, so that one step may be that much worse
+            return Trapped(30 * self.tolerance, self.cap)
+        return Flight(self.tolerance * (BEATING if any(leg.split) else 1.0))
