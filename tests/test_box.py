@@ -71,6 +71,7 @@ def plain(shape: str, gravity: bool = False) -> Plain:
     return Plain(bruteforce.look(GRID, u, g), bruteforce.look(GRID, flown, g))
 
 
+@pytest.mark.slow
 def test_the_plain_run_keeps_its_energy() -> None:
     seen = plain("cuboid")
     before, after = (s.kinetic.sum() + s.interaction for s in (seen.rest, seen.flown))
@@ -98,6 +99,7 @@ def test_a_cloud_in_a_soft_box_and_after_it_is_let_go(solved: Solved, shape: str
     )
 
 
+@pytest.mark.slow
 def test_a_box_under_gravity_fills_from_below_and_falls_when_it_opens(solved: Solved) -> None:
     run = solved(plan("cylinder", motion.stage("release", FLIGHT), gravity=True))
     exact, track = plain("cylinder", True), run.track
@@ -131,6 +133,7 @@ def test_a_cloud_pushed_against_its_walls_keeps_its_energy(solved: Solved) -> No
     assert x.max() > 0.4e-6 and track["velocity"][:, 0].min() < -0.1e-3
 
 
+@pytest.mark.slow
 def test_a_push_on_a_held_cloud_goes_to_the_plain_runs_places(solved: Solved) -> None:
     speed, time = 0.3e-3, 5e-3
     push = f'["{speed!r} m/s", "0 mm/s", "0 mm/s"]'

@@ -15,12 +15,15 @@ import trapsim
 from ready import CONFIGS, MASS, MS, NAMES, NEAR, Play, Solver, end_of, hz, law
 from reference import classical
 
+#: plans that take more than a second or two at draft
+LONG = ("bragg", "lattice", "loaded")
+
 
 def test_every_plan_is_looked_at() -> None:
     assert tuple(sorted(path.stem for path in CONFIGS.glob("*.toml"))) == NAMES
 
 
-@pytest.mark.parametrize("name", NAMES)
+@pytest.mark.parametrize("name", [pytest.param(n, marks=pytest.mark.slow) if n in LONG else n for n in NAMES])
 def test_a_ready_plan_says_that_it_is_invented_and_runs(name: str, play: Play) -> None:
     """A complete run ends at the time the file's own durations add up to, with an error within its accuracy."""
     run = play(name)

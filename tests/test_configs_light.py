@@ -17,6 +17,8 @@ from reference.planewaves import Recoil
 from reference.units import A0, thomas_fermi
 from trapsim.prepare.setup import prepare
 
+pytestmark = pytest.mark.slow
+
 
 def shares(run: trapsim.Run, stage: str) -> dict[str, float]:
     orders = end_of(run, stage).orders

@@ -80,6 +80,7 @@ def test_a_full_disk_leaves_the_old_result_as_it_was(run_here, tmp_path, monkeyp
     assert run_here("--no-figures") == (0, "")
 
 
+@pytest.mark.slow
 def test_figures_that_cannot_be_written_cost_no_result(run_here, tmp_path, monkeypatch):
     with monkeypatch.context() as patch:
         full_disk(patch, "flight.png")

@@ -133,6 +133,7 @@ def test_a_weight_between_walls_has_the_zeros_of_airys_functions(solved: Solved)
     assert run.track["centre"][0][2] < -1e-6
 
 
+@pytest.mark.slow
 def test_a_short_pulse_inside_the_walls_makes_the_orders_of_bessels_functions(solved: Solved) -> None:
     # Kapitza-Dirac, short pulse: J_n(theta)^2 with theta = V t/(2 hbar), for any envelope (textbook)
     walls = 'size = ["12 um", "8 um", "8 um"]'

@@ -32,6 +32,7 @@ def packet(space: Space, places: list[float], speeds: list[float], width: float)
     return out * np.ones(space.shape)
 
 
+@pytest.mark.slow
 @pytest.mark.parametrize("directions", [1, 2, 3])
 def test_a_packet_comes_back_and_shows_its_mirror_image_half_way(directions: int) -> None:
     space = boxes.space([SIZE] * directions, {1: 48, 2: 32, 3: 20}[directions])
@@ -110,6 +111,7 @@ def test_between_walls_a_cloud_moves_as_with_its_odd_image_in_a_periodic_box() -
     assert walls.integral(np.abs(ideal - one).reshape(walls.shape) ** 2) > 0.01
 
 
+@pytest.mark.slow
 def test_a_dark_soliton_in_the_middle_of_a_box_stays_and_turns_its_phase_with_the_chemical_potential() -> None:
     # the lowest odd state is one period of Jacobi's sn: psi = A sn(4 K s/L | m), g = 16 K (K - E)/L, mu = 8 K^2 (1 + m)/L^2
     # in units hbar = m = 1 (Carr, Clark and Reinhardt, value from memory): each half holds the ground state of half a box

@@ -118,6 +118,7 @@ def test_hopping_between_sites_from_the_band_itself(solved: Solved) -> None:
 # ---- forces --------------------------------------------------------------------------------------------------------
 
 
+@pytest.mark.slow
 @pytest.mark.parametrize(("s", "alpha", "left_behind"), bands.PASSAGES)
 def test_a_lattice_that_speeds_up_leaves_atoms_behind(s: float, alpha: float, left_behind: float) -> None:
     """In its own frame it drives the atoms once through the zone; Landau and Zener say how many change bands."""
@@ -168,6 +169,7 @@ def averaged(s: float, alpha: float, tau: float, weak: float = 2.0) -> Array:
     return sum(w * np.abs(bands.driven(s, alpha, tau, p)) ** 2 for p, w in spread(s, weak).T)
 
 
+@pytest.mark.slow
 @pytest.mark.parametrize("periods", [1.0, pytest.param(0.8, marks=pytest.mark.slow)])
 def test_a_cloud_under_a_force_oscillates_with_blochs_period(solved: Solved, periods: float) -> None:
     s, alpha = 4.0, 0.6
@@ -210,6 +212,7 @@ def test_blochs_period_is_that_of_one_site(solved: Solved) -> None:
 # ---- release -------------------------------------------------------------------------------------------------------
 
 
+@pytest.mark.slow
 @pytest.mark.parametrize(("s", "number", "a"), [(5.0, 1e3, "0 a0"), (7.0, 300, "100.4 a0")])
 def test_a_slowly_loaded_cloud_released_at_once_shows_its_bloch_state(
     solved: Solved, s: float, number: float, a: str

@@ -146,6 +146,7 @@ def test_a_flash_on_a_narrow_cloud_and_where_its_orders_fly(s: float, tau: float
         assert across[near].sum() / across.sum() == pytest.approx(found[str(n)], abs=1e-4)
 
 
+@pytest.mark.slow
 @pytest.mark.parametrize("s", [2.0, 4.0])
 def test_a_bragg_pi_pulse_on_a_narrow_cloud(solved: Solved, s: float) -> None:
     run = solved(released(light.pulse(2 * pi / s, detuning=4.0), s=s))
@@ -159,6 +160,7 @@ def test_the_narrow_cloud_is_as_narrow_as_it_is_said_to_be(solved: Solved) -> No
     assert 1e-3 * end.velocity_spread_mm_per_s[0] / RECOIL.velocity == pytest.approx(NARROW, rel=1e-5)
 
 
+@pytest.mark.slow
 def test_a_flash_on_a_falling_expanding_kicked_cloud_is_the_same_on_a_grid_that_stands(solved: Solved) -> None:
     stages = (
         motion.stage("kick", velocity='["0.7 mm/s", "0 mm/s", "0 mm/s"]'), motion.stage("release", 1e-3),
@@ -182,6 +184,7 @@ def test_a_flash_on_a_falling_expanding_kicked_cloud_is_the_same_on_a_grid_that_
     assert one.orders["light"]["1"] > 0.2
 
 
+@pytest.mark.slow
 def test_weak_orders_keep_their_share_while_they_overlap() -> None:
     """Orders still on top of each other beat through the mean field, and a step in time with the beat would mix them.
 

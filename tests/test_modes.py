@@ -52,6 +52,7 @@ def watched(solved: Solved, own: Natural, plan: trapsim.Plan) -> tuple[Array, Ar
     return track.time[after] * own.omega, (track["width"][after] / own.unit.length) ** 2
 
 
+@pytest.mark.slow
 @pytest.mark.parametrize("row", flights.MODE_ROWS, ids=lambda r: f"beta {r.beta}")
 def test_a_cloud_breathes_at_its_own_frequency(solved: Solved, row: flights.Mode) -> None:
     own, plan = jumped(row.beta, *(3 * [1 + JUMP]))
@@ -61,6 +62,7 @@ def test_a_cloud_breathes_at_its_own_frequency(solved: Solved, row: flights.Mode
     assert row.monopole != pytest.approx(modes.thomas_fermi_isotropic(1, 0), abs=1e-2)
 
 
+@pytest.mark.slow
 @pytest.mark.parametrize("row", flights.MODE_ROWS, ids=lambda r: f"beta {r.beta}")
 def test_a_cloud_changes_its_shape_at_its_own_frequency(solved: Solved, row: flights.Mode) -> None:
     own, plan = jumped(row.beta, 1 + JUMP, 1 + JUMP, 1 - 2 * JUMP)

@@ -115,6 +115,7 @@ def test_a_longer_flight_costs_the_peer_a_larger_box() -> None:
     assert longer == pytest.approx((1 + 6) * 4 * np.log(4000) / np.log(1000))
 
 
+@pytest.mark.slow
 def test_memory_is_seen_in_a_process_of_its_own() -> None:
     """Whoever has written to an array has had that much memory: arithmetic."""
     before = bench_jobs.peak_memory()
