@@ -2,8 +2,14 @@
 
 from __future__ import annotations
 
+import atexit
 import os
+import shutil
+import tempfile
 
+# what planning learns stays with this session, and with the processes it starts
+os.environ["XDG_CACHE_HOME"] = tempfile.mkdtemp(prefix="trapsim-cache-")
+atexit.register(shutil.rmtree, os.environ["XDG_CACHE_HOME"], ignore_errors=True)
 for _name in ("OMP_NUM_THREADS", "OPENBLAS_NUM_THREADS"):
     os.environ[_name] = "1"
 

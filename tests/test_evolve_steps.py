@@ -189,3 +189,20 @@ def test_the_mean_field_turns_the_phase_by_its_coupling() -> None:
     _, dJ = step.law.integrals(0.0, t)
     parabola = state.law.i[2] * dJ * (step.space.axis(2).points[middle] ** 2) / (2 * setup.q)
     assert turned == pytest.approx(-(coupling * density * t + parabola), rel=1e-9)
+
+
+@pytest.mark.parametrize("kind", ["flight", "trap"])
+@pytest.mark.parametrize("axes", ["auto", "full"])
+def test_two_halves_with_one_flow_in_the_middle_are_two_steps(kind: str, axes: str) -> None:
+    # closed form: potential flows change no density, so that two in a row are one
+    _, state, step = at_the_door(kind, 0.8, accuracy="draft", numerics=f'axes = "{axes}"')
+    h = OWN.s(0.2)
+    one, two = (step.space.array(state.cloud.phi) for _ in range(2))
+    spent = step.pairs
+    step.halves(one, 0.1 * h, h)
+    assert step.pairs - spent == 2
+    step.strang(two, 0.1 * h, h / 2)
+    step.strang(two, 0.6 * h, h / 2)
+    assert distance(step, one, two) < 1e-13
+    # and they are not one whole step
+    assert distance(step, one, step.strang(step.space.array(state.cloud.phi), 0.1 * h, h)) > 1e-9

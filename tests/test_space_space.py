@@ -145,3 +145,39 @@ def test_two_threads_give_what_one_gives() -> None:
     one, two = (Space([Wave((j,), 12, 1.0) for j in range(3)], threads=t) for t in (1, 2))
     samples = rng.normal(size=one.shape) + 0j
     np.testing.assert_allclose(two.forward(two.array(samples)), one.forward(one.array(samples)), atol=1e-12)
+
+
+@pytest.mark.parametrize("threads", [1, 2])
+@pytest.mark.parametrize("shape", [(6, 8, 10), (4, 9, 7), (1, 12, 5), (8, 3, 1)], ids=str)
+def test_slabs_transform_as_numpys_fft_does(shape: tuple[int, ...], threads: int, monkeypatch: pytest.MonkeyPatch) -> None:
+    # numpy.fft as the independent calculation; with slabs of a few points, as on the largest grids
+    monkeypatch.setattr("trapsim.space.pieces.ALONE", 0)
+    monkeypatch.setattr("trapsim.space.pieces.PIECE", 2 * max(shape))
+    space = Space([Wave((j,), n, 1.0) for j, n in enumerate(shape)], threads=threads)
+    assert max(map(len, space._slabs)) > 1
+    rng = np.random.default_rng(5)
+    samples = rng.normal(size=shape) + 1j * rng.normal(size=shape)
+    np.testing.assert_allclose(space.forward(space.array(samples)), np.fft.fftn(samples), atol=1e-12)
+    np.testing.assert_allclose(space.inverse(space.array(samples)), samples.size * np.fft.ifftn(samples), atol=1e-12)
+    for d, axis in enumerate(space.axes):
+        slope = np.fft.ifft(space.along(d, 1j * axis.derivative_k()) * np.fft.fft(samples, axis=d), axis=d)
+        np.testing.assert_allclose(space.gradient(space.array(samples), d), slope, atol=1e-11)
+
+
+@every_space
+def test_a_sandwich_is_its_layers_one_after_the_other(make: Callable[[], Space], monkeypatch: pytest.MonkeyPatch) -> None:
+    whole, rng = make(), np.random.default_rng(8)
+    samples = rng.normal(size=whole.shape) + 1j * rng.normal(size=whole.shape)
+    below, middle, above = rng.normal(size=(3, *whole.shape))
+    expected = above * whole.inverse(middle * whole.forward(whole.array(below * samples)))
+    monkeypatch.setattr("trapsim.space.pieces.ALONE", 0)
+    monkeypatch.setattr("trapsim.space.pieces.PIECE", whole.size // 4)
+    space = Space(whole.axes, threads=2)
+
+    def times(layer: np.ndarray, *, second: bool = False) -> Callable[[np.ndarray, slice], None]:
+        return lambda part, slab: np.multiply(part, layer[:, slab] if second else layer[slab], out=part)
+
+    phi = space.array(samples)
+    found = space.sandwich(phi, times(middle, second=True), before=times(below), after=times(above))
+    assert found is phi
+    np.testing.assert_allclose(found, expected, atol=1e-12 * np.abs(expected).max())

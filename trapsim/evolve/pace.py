@@ -159,7 +159,6 @@ def _compare(step: SplitStep, phi: Array, t: float, h: float, work: Buffers) -> 
     work.coarse[...] = phi
     work.fine[...] = phi
     step.strang(work.coarse, t, h)
-    step.strang(work.fine, t, h / 2)
-    step.strang(work.fine, t + h / 2, h / 2)
+    step.halves(work.fine, t, h)
     difference = work.fine - work.coarse
     return float(np.sqrt(step.space.integral(difference.real**2 + difference.imag**2))) / 3

@@ -20,9 +20,9 @@ from functools import reduce
 import numpy as np
 
 from trapsim.constants import HBAR
-from trapsim.evolve.phases import in_pieces, rotate
+from trapsim.evolve.phases import rotate, scaled_density, scratch
 from trapsim.evolve.scaling import MovingLaw, StandingLaw, gauss
-from trapsim.space.space import Array, Space
+from trapsim.space.space import Array, Pointwise, Space
 
 #: rad of the fastest change of the potential per step, for Gauss's rule of two points on its halves to be good to 1e-6
 SAMPLED = 0.6
@@ -58,62 +58,78 @@ class SplitStep:
     def strang(self, phi: Array, t: float, h: float) -> Array:
         """Overwrite phi(t) with phi(t + h); returns it. One pair."""
         middle = t + h / 2
-        dK, _ = self.law.integrals(t, t + h)
-        lens, drift = self.law.turn(dK)
-        self.potential(phi, t, middle, lens)
-        self.kinetic(phi, drift)
-        self.potential(phi, middle, t + h, lens)
-        return phi
+        lens, drift = self._turn(t, t + h)
+        return self._flow(phi, drift, self._potential((t, middle, lens)), self._potential((middle, t + h, lens)))
+
+    def halves(self, phi: Array, t: float, h: float) -> Array:
+        """Overwrite phi(t) with phi(t + h) in two steps, whose potential flows in the middle are one; two pairs."""
+        first, second, third = t + h / 4, t + h / 2, t + 3 * h / 4
+        lens, drift = self._turn(t, second)
+        later, further = self._turn(second, t + h)
+        middle = self._potential((first, second, lens), (second, third, later))
+        self._flow(phi, drift, self._potential((t, first, lens)), middle)
+        return self._flow(phi, further, None, self._potential((third, t + h, later)))
+
+    def _turn(self, t0: float, t1: float) -> tuple[Array, Array]:
+        """Lens and drift of the turn of phase space over an interval."""
+        return self.law.turn(self.law.integrals(t0, t1)[0])
 
     def potential(self, phi: Array, t0: float, t1: float, lens: Array) -> None:
         """Overwrite phi with its potential flow from t0 to t1, and with lenses (3,) 1/s: exp(-i lens xi^2/(2 q))."""
-        _, dJ = self.law.integrals(t0, t1)
-        coefficients = (lens + self.law.start.i * dJ) / (2 * self.q)
+        self.space.pointwise(phi, self._potential((t0, t1, lens)))
+
+    def _potential(self, *spans: tuple[float, float, Array]) -> Pointwise:
+        """The potential flows over some spans of time, each with its lenses; they commute, so they are one."""
+        dJ, coefficients, rest = 0.0, np.zeros(3), 0.0
+        for t0, t1, lens in spans:
+            more = self.law.integrals(t0, t1)[1]
+            # exp(-i theta) is turned by 2i times -theta/2
+            dJ = dJ - 0.5 * more
+            coefficients -= (lens + self.law.start.i * more) / (4 * self.q)
+            rest = rest - 0.5 * self._rest_phase(t0, t1)
         first, *others = (
             self.space.along(d, values) for d, values in enumerate(self.space.per_axis(coefficients, "square"))
         )
         # what does not vary along the first dimension is summed once
-        rest = self._rest_phase(t0, t1)
         flat = sum(others) + (rest if np.ndim(rest) == 0 or rest.shape[0] == 1 else 0.0)
         steep = rest if np.ndim(rest) and rest.shape[0] > 1 else None
         turn = rotate()
 
-        def piece(slab: slice) -> None:
-            field = phi[slab]
-            theta = field.real**2
-            theta += field.imag**2
-            theta *= dJ
-            theta += flat
-            theta += first[slab]
+        def flow(field: Array, slab: slice) -> None:
+            half = scratch("half", field.shape)
+            scaled_density(field, dJ, half)
+            half += flat
+            half += first[slab]
             if steep is not None:
-                theta += steep[slab]
-            turn(field, theta)
+                half += steep[slab]
+            turn(field, half)
 
-        in_pieces(phi.shape, piece, threads=self.space.threads)
+        return flow
 
     def _rest_phase(self, t0: float, t1: float) -> Array | float:
         """The phase of what is not steered, by Gauss's rule of two points."""
         first, second = (self.rest(t) for t in gauss(t0, t1))
         return (first + second) * ((t1 - t0) / (2 * HBAR))
 
-    def kinetic(self, phi: Array, drift: Array) -> None:
-        """Overwrite phi with exp(-i q/2 sum_j k_j^2 drift_j) phi, drift (3,) in s; one pair."""
-        self.space.forward(phi)
-        factors = [
+    def _flow(self, phi: Array, drift: Array, before: Pointwise | None, after: Pointwise | None) -> Array:
+        """Overwrite phi with exp(-i q/2 sum_j k_j^2 drift_j) phi, drift (3,) in s, between two flows; one pair."""
+        first, *others = (
             self.space.along(d, np.exp(-0.5j * self.q * values) / axis.round_trip)
             for d, (axis, values) in enumerate(zip(self.space.axes, self.space.per_axis(drift, "k2"), strict=True))
-        ]
-        first, *others = factors
-        flat = reduce(np.multiply, others) if others else 1.0
+        )
+        flat = reduce(np.multiply, others)
 
-        def piece(slab: slice) -> None:
-            phi[slab] *= flat * first[slab] if phi.ndim < 3 else flat
-            if phi.ndim == 3:
-                phi[slab] *= first[slab]
+        def multiply(spectrum: Array, slab: slice) -> None:
+            spectrum *= flat[:, slab]
+            spectrum *= first
 
-        in_pieces(phi.shape, piece, threads=self.space.threads)
-        self.space.inverse(phi)
+        self.space.sandwich(phi, multiply, before=before, after=after)
         self.pairs += 1
+        return phi
+
+    def kinetic(self, phi: Array, drift: Array) -> None:
+        """Overwrite phi with its kinetic flow; one pair."""
+        self._flow(phi, drift, None, None)
 
     def fastest_phase(self, t0: float, t1: float, peak: float) -> float:
         """Phase over an interval of the highest wave number, sum_j q k_max^2 dK_j/2, with the mean field at its peak.

@@ -2,13 +2,22 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
-from functools import cached_property
+import time
+from collections.abc import Callable, Sequence
+from functools import cache, cached_property
+from pathlib import Path
 
 import numpy as np
 import pyfftw
 
+from trapsim.space import wisdom
 from trapsim.space.axes import COMPLEX, Array, Axis, Mirror, Radial, build
+from trapsim.space.pieces import share, slabs
+
+#: planning that takes longer than this, s, is worth keeping for later runs
+WORTH_KEEPING = 0.03
+#: (slab of an array, where it lies) -> None
+Pointwise = Callable[[Array, slice], None]
 
 
 class Space:
@@ -109,35 +118,82 @@ class Space:
     # transforms
 
     @cached_property
-    def _plans(self) -> tuple[list[_Plan], list[_Plan]]:
-        effort = "FFTW_MEASURE" if self.size <= 64**3 else "FFTW_ESTIMATE"
-        return tuple(
-            [_Plan(self, dims, way, effort) for real in (False, True) if (dims := self._dims(real=real))]
-            for way in (0, 1)
-        )
+    def _slabs(self) -> tuple[list[slice], list[slice]]:
+        """Slabs of the first dimension, in which the others are transformed, and of the second, for the first."""
+        return slabs(self.shape, 0), slabs(self.shape, 1)
 
-    def _dims(self, *, real: bool) -> tuple[int, ...]:
-        """Array dimensions with a transform of FFTW: those of plane waves, or the real ones of cosines and sines."""
-        return tuple(d for d, a in enumerate(self.axes) if a.fftw and (a.fftw != COMPLEX) == real)
+    @cached_property
+    def _inner(self) -> tuple[list[_Plan], list[_Plan]]:
+        """There and back along all dimensions but the first, within one slab."""
+        groups = [dims for real in (False, True) if (dims := self._dims(real=real)[0])]
+        return tuple([_Plan(self, dims, way) for dims in groups] for way in (0, 1))
+
+    @cached_property
+    def _outer(self) -> tuple[Callable[[Array], object], ...]:
+        """There and back along the first dimension, within one slab of the second."""
+        axis = self.axes[0]
+        if isinstance(axis, Radial):
+            return _product(axis.forward_matrix), _product(axis.inverse_matrix)
+        return tuple(_Plan(self, (0,), way) for way in (0, 1)) if axis.fftw else (_nothing, _nothing)
+
+    def _dims(self, *, real: bool) -> tuple[tuple[int, ...], tuple[int, ...]]:
+        """Dimensions with a transform of FFTW, but the first, and with it: of plane waves, or of cosines and sines."""
+        own = tuple(d for d, a in enumerate(self.axes) if a.fftw and (a.fftw != COMPLEX) == real)
+        return tuple(d for d in own if d), own
+
+    def _share(self, dim: int, work: Callable[[slice], None]) -> None:
+        share(self._slabs[dim], work, threads=self.threads)
+
+    def pointwise(self, a: Array, work: Pointwise) -> None:
+        """Do `work(a[slab], slab)` on slabs of the first dimension."""
+        self._share(0, lambda slab: work(a[slab], slab))
 
     def forward(self, a: Array) -> Array:
         """Overwrite samples `a` with their spectrum; returns it."""
-        for plan in self._plans[0]:
-            plan(a)
-        self._matrices(a, "forward_matrix")
+        self._share(0, lambda slab: _each(self._inner[0], a[slab]))
+        self._share(1, lambda slab: self._outer[0](a[:, slab]))
         return a
 
     def inverse(self, a: Array) -> Array:
         """Overwrite a spectrum `a` with its samples times `round_trip`; returns them."""
-        for plan in self._plans[1]:
-            plan(a)
-        self._matrices(a, "inverse_matrix")
+        self._share(1, lambda slab: self._outer[1](a[:, slab]))
+        self._share(0, lambda slab: _each(self._inner[1], a[slab]))
         return a
 
-    def _matrices(self, a: Array, which: str) -> None:
-        if isinstance(self.axes[0], Radial):
-            flat = a.reshape(self.shape[0], -1).view(np.float64)
-            flat[...] = getattr(self.axes[0], which) @ flat
+    def sandwich(
+        self, a: Array, multiply: Pointwise, *, before: Pointwise | None = None, after: Pointwise | None = None
+    ) -> Array:
+        """Overwrite samples `a` by way of their spectrum, each slab while it is in the cache; returns them.
+
+        Parameters
+        ----------
+        a : complex array of the shape
+        multiply : callable
+            (spectrum[:, slab], slab) -> None, changes a slab of the second dimension of the spectrum.
+        before, after : callable
+            (samples[slab], slab) -> None, changes a slab of the first dimension of the samples.
+        """
+
+        def there(slab: slice) -> None:
+            if before is not None:
+                before(a[slab], slab)
+            _each(self._inner[0], a[slab])
+
+        def middle(slab: slice) -> None:
+            field = a[:, slab]
+            self._outer[0](field)
+            multiply(field, slab)
+            self._outer[1](field)
+
+        def back(slab: slice) -> None:
+            _each(self._inner[1], a[slab])
+            if after is not None:
+                after(a[slab], slab)
+
+        _ = self._inner, self._outer  # planned here, and not by two threads at once
+        for dim, work in ((0, there), (1, middle), (0, back)):
+            self._share(dim, work)
+        return a
 
     def gradient(self, a: Array, d: int) -> Array:
         """The derivative of samples along the coordinate of array dimension d, as a new array."""
@@ -148,15 +204,21 @@ class Space:
         if axis.uniform:
             out[...] = 0.0
             return out
-        there, back = self._line_plans[d]
-        there(out)
-        out *= self.along(d, 1j * axis.derivative_k() / axis.n)
-        return back(out)
+        there, back = self._lines[d]
+        factor = self.along(d, 1j * axis.derivative_k() / axis.n)
+
+        def slope(slab: slice) -> None:
+            field = out[slab] if d else out[:, slab]
+            there(field)
+            field *= factor
+            back(field)
+
+        self._share(0 if d else 1, slope)
+        return out
 
     @cached_property
-    def _line_plans(self) -> dict[int, tuple[_Plan, _Plan]]:
-        lines = self._dims(real=False)
-        return {d: tuple(_Plan(self, (d,), way, "FFTW_ESTIMATE") for way in (0, 1)) for d in lines}
+    def _lines(self) -> dict[int, tuple[_Plan, _Plan]]:
+        return {d: tuple(_Plan(self, (d,), way) for way in (0, 1)) for d in self._dims(real=False)[1]}
 
     def unfolded(self, samples: Array) -> tuple[Array, Space]:
         """The same function with both sides of every mirror axis, and the space that it is then on."""
@@ -196,28 +258,77 @@ class Space:
 
 
 class _Plan:
-    """A planned transform in place along some dimensions, without any factor.
+    """A planned transform in place along some dimensions of a slab, without any factor.
 
-    Real transforms of complex samples are done on their real and imaginary parts at once, as a last dimension of two.
+    Only slabs are planned: that takes a fraction of a second at any size of the whole, and several threads share the
+    slabs. Real transforms of complex samples are done on their real and imaginary parts at once, as a last dimension of
+    two.
     """
 
-    def __init__(self, space: Space, dims: tuple[int, ...], way: int, effort: str) -> None:
+    def __init__(self, space: Space, dims: tuple[int, ...], way: int) -> None:
         self.real = space.axes[dims[0]].fftw != COMPLEX
         names = tuple(space.axes[d].fftw[way] for d in dims)
-        scratch = self._view(space.empty())
-        self.plan = pyfftw.FFTW(
-            scratch, scratch, axes=dims, direction=names if self.real else names[0], flags=(effort,),
-            threads=space.threads,
-        )  # fmt: skip
+        cut = 1 if 0 in dims else 0
+        slab = space._slabs[cut][0]
+        scratch = space.empty()
+        scratch = self._view(scratch[:, slab] if cut else scratch[slab])
+        #: one for each thread; lists hand out and take back safely
+        self.idle = [
+            _planned(scratch, scratch, axes=dims, direction=names if self.real else names[0]) for _ in range(space.threads)
+        ]
 
     def _view(self, a: Array) -> Array:
-        return a.view(np.float64).reshape(*a.shape, 2) if self.real else a
+        return a[..., None].view(np.float64) if self.real else a
 
-    def __call__(self, a: Array) -> Array:
-        view = self._view(a)
-        self.plan.update_arrays(view, view)
-        self.plan.execute()
-        return a
+    def __call__(self, a: Array) -> None:
+        view, plan = self._view(a), self.idle.pop()
+        plan.update_arrays(view, view)
+        plan.execute()
+        self.idle.append(plan)
+
+
+def _planned(source: Array, target: Array, *, axes: tuple[int, ...], direction: str | tuple[str, ...]) -> pyfftw.FFTW:
+    """A transform planned by measuring, or from what earlier runs have measured."""
+    path = _remembered()
+    began = time.perf_counter()
+    plan = pyfftw.FFTW(source, target, axes=axes, direction=direction, flags=("FFTW_MEASURE",))
+    if time.perf_counter() - began > WORTH_KEEPING:
+        # another process may have learnt something meanwhile
+        wisdom.recall(path, _learn)
+        wisdom.keep(path, pyfftw.export_wisdom()[0])
+    return plan
+
+
+@cache
+def _remembered() -> Path:
+    """Take up what earlier runs have learnt; returns where it is kept."""
+    library = pyfftw.export_wisdom()[0].split()[0].decode().strip("(")
+    path = wisdom.place(library, "double")
+    wisdom.recall(path, _learn)
+    return path
+
+
+def _learn(kept: bytes) -> bool:
+    return bool(kept) and pyfftw.import_wisdom((kept, b"", b""))[0]
+
+
+def _each(plans: Sequence[_Plan], a: Array) -> None:
+    for plan in plans:
+        plan(a)
+
+
+def _nothing(a: Array) -> None:
+    """The transform along a direction in which nothing varies."""
+
+
+def _product(matrix: Array) -> Callable[[Array], None]:
+    """A transform by a real matrix along the first dimension."""
+
+    def transform(a: Array) -> None:
+        parts = a[..., None].view(np.float64)
+        parts[...] = (matrix @ parts.reshape(len(parts), -1)).reshape(parts.shape)
+
+    return transform
 
 
 def _marginals(density: Array, weights: Sequence[Array]) -> list[Array]:
