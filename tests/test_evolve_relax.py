@@ -6,11 +6,12 @@ from math import pi, prod, sqrt
 
 import numpy as np
 import pytest
+from scipy import special
 
 from reference import stationary, tables, units
 from trapsim.cloud import shapes
 from trapsim.evolve.relax import Hamiltonian, Relaxed, relax
-from trapsim.space.axes import Axis, Radial, Wave
+from trapsim.space.axes import Axis, Mirror, Radial, Wall, Wave
 from trapsim.space.space import Space
 
 Array = np.ndarray
@@ -244,3 +245,41 @@ def test_in_a_plane_the_collapse_is_at_the_norm_of_the_townes_soliton() -> None:
     for beta in (-5.86, -5.9, -6.5):
         fallen = plane(beta, 90)
         assert fallen.collapsed and not fallen.converged, beta
+
+
+# from coarse to fine
+
+
+def test_a_large_cloud_is_relaxed_on_fewer_points_first() -> None:
+    # The same state without that, on axes that have no coarser ones; a few pairs less.
+    space, beta = waves(48, 6.0), 200.0
+    found = relaxed(space, beta, tolerance=1e-7)
+    h = hamiltonian(space, beta)
+    assert h.coarser() is not None and found.converged
+    plain = Hamiltonian(round_space(48, 6.0), round_space(48, 6.0).quadratic([0.5] * 3), coupling=beta, q=1.0)
+    other = relax(plain, start(plain, beta), tolerance=1e-7)
+    assert plain.coarser() is None and found.pairs < 0.75 * other.pairs
+    assert found.mu == pytest.approx(other.mu, rel=1e-8)
+
+
+@pytest.mark.parametrize("kind", [Wave, Mirror, Wall])
+def test_the_coarser_potential_is_that_on_every_second_point(kind: type[Axis]) -> None:
+    # Closed form: the mean of x^2 over x - s/2 and x + s/2 is x^2 + s^2/4, the same everywhere.
+    space = Space([kind((j,), 32, 6.0) for j in range(3)])
+    coarse = hamiltonian(space, 1.0).coarser()
+    exact = coarse.space.quadratic([0.5] * 3)
+    assert coarse.space.shape == (16, 16, 16)
+    assert [a.half_extent for a in coarse.space.axes] == [6.0] * 3
+    np.testing.assert_allclose(coarse.V, exact - exact.min(), atol=1e-12)
+
+
+def test_a_lattice_finer_than_the_coarse_points_misleads_nobody() -> None:
+    # Mathieu's equation, scipy.special: the lowest band's edge of V = s sin^2(x) in recoil energies (q = 2) is a_0 + s/2.
+    depth, periods, n = 20.0, 4, 40
+    space = Space([Wave((0,), n, periods * pi / 2), *(Wave((j,), 24, 3.0) for j in (1, 2))])
+    potential = depth * np.sin(space.along(0, space.axes[0].points)) ** 2 * np.ones(space.shape)
+    h = Hamiltonian(space, potential, coupling=1e-9, q=2.0)
+    found = relax(h, np.ones(space.shape), tolerance=1e-8)
+    assert h.coarser() is not None and found.converged
+    exact = float(special.mathieu_a(0, depth / 4)) + depth / 2
+    assert found.mu == pytest.approx(exact, rel=1e-5)

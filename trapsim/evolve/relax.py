@@ -13,10 +13,15 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from trapsim.space.space import Array, Space
+from trapsim.evolve.hamiltonian import Hamiltonian, means
+from trapsim.space.resample import resample
+from trapsim.space.space import Array
 
 #: an attractive cloud that is drawn together by more than this share of E_kin has collapsed: only the grid holds it
 UNBALANCED = 2e-3
+#: it pays to relax on every second point first, where those are no further apart than this many healing lengths
+#: sqrt(q/(2 mu))
+COARSEST = 3.0
 
 
 @dataclass(frozen=True)
@@ -53,71 +58,6 @@ class Relaxed:
     signed: bool = False
 
 
-class Hamiltonian:
-    """K, V and the mean field on a space, acting on real wave functions.
-
-    Parameters
-    ----------
-    space : Space
-    potential : array
-        V/hbar on the points, rad/s.
-    coupling : float
-        4 pi q a N, m^3/s.
-    q : float
-        hbar/m.
-    """
-
-    def __init__(self, space: Space, potential: Array, *, coupling: float, q: float) -> None:
-        self.space = space
-        self.lowest = float(potential.min())
-        self.V = np.broadcast_to(potential - self.lowest, space.shape)
-        self.c = coupling
-        #: number of directions in which the cloud can draw together
-        self.extended = sum(len(axis.covers) for axis in space.axes if not axis.uniform)
-        self.K = sum(space.along(d, v) for d, v in enumerate(space.per_axis([q / 2] * 3, "k2")))
-        self.pairs = 0
-        self._work = space.empty()
-        self._scale = 1 / space.round_trip
-
-    def dot(self, a: Array, b: Array) -> float:
-        return self.space.integral(a * b)
-
-    def spectral(self, a: Array, factor: Array) -> Array:
-        """Multiply the spectrum of real samples by a real factor; one pair."""
-        self._work[...] = a
-        spectrum = self.space.forward(self._work)
-        spectrum *= factor * self._scale
-        self.pairs += 1
-        return self.space.inverse(spectrum).real.copy()
-
-    def kinetic(self, u: Array) -> Array:
-        return self.spectral(u, self.K)
-
-    def rms_too_small(self, u: Array) -> bool:
-        """Whether the cloud is narrower than one grid spacing along some axis, as a collapsed one is."""
-        marginals = self.space.marginals(u**2)
-        for d, axis in enumerate(self.space.axes):
-            if not axis.uniform:
-                weighted = marginals[d] * axis.weights
-                if any(weighted @ axis.x2(j) < axis.spacing**2 for j in axis.covers):
-                    return True
-        return False
-
-    def unbalanced(self, u: Array, kin: float, inter: float) -> float:
-        """What still draws the cloud together, 2 E_kin - <r.grad V> + d E_int, relative to E_kin (virial theorem).
-
-        By parts, <r.grad V> = -int V (d n + r.grad n): the cloud is smooth where a potential need not be.
-        """
-        phi = self.space.array(u)
-        lever = sum(
-            self.space.along(i, axis.points) * self.space.gradient(phi, i).real
-            for i, axis in enumerate(self.space.axes)
-            if not axis.uniform
-        )
-        outward = -self.space.integral(self.V * u * (self.extended * u + 2 * lever))
-        return (2 * kin - outward + self.extended * inter) / kin
-
-
 def relax(
     hamiltonian: Hamiltonian,
     start: Array,
@@ -144,13 +84,30 @@ def relax(
     u = u / np.sqrt(hamiltonian.dot(u, u))
     search = _conjugate_gradient if method == "conjugate gradient" else _imaginary_time
     hamiltonian.pairs = 0
+    if method == "conjugate gradient":
+        u = _from_coarser(hamiltonian, u, tolerance, most_pairs)
     u, collapsed = search(hamiltonian, u, tolerance, most_pairs)
     return _result(hamiltonian, u, tolerance, collapsed)
 
 
+def _from_coarser(h: Hamiltonian, u: Array, tolerance: float, most_pairs: int) -> Array:
+    """A better start: relaxed on every second point, where those are close enough for the cloud's edge."""
+    coarse = h.coarser()
+    if coarse is None:
+        return u
+    n = u * u
+    mu = h.dot(h.V, n) + h.c * h.dot(n, n)
+    if max(a.spacing for a in coarse.space.axes if not a.uniform) ** 2 * 2 * mu > COARSEST**2 * h.q:
+        return u
+    found = relax(coarse, means(u, h.space), tolerance=tolerance, most_pairs=most_pairs)
+    h.pairs += found.pairs * coarse.space.size / h.space.size
+    better = np.abs(resample(found.u, coarse.space, h.space).real)
+    return better / np.sqrt(h.dot(better, better))
+
+
 def _energies(h: Hamiltonian, u: Array, Ku: Array) -> tuple[float, float, float]:
     n = u * u
-    return h.dot(u, Ku), h.space.integral(h.V * n), 0.5 * h.c * h.space.integral(n * n)
+    return h.dot(u, Ku), h.dot(h.V, n), 0.5 * h.c * h.dot(n, n)
 
 
 def _result(h: Hamiltonian, u: Array, tolerance: float, collapsed: bool) -> Relaxed:
@@ -257,10 +214,10 @@ def _conjugate_gradient(h: Hamiltonian, u: Array, tolerance: float, most_pairs: 
 
 def _first_minimum(h: Hamiltonian, u: Array, Ku: Array, p: Array, Kp: Array) -> float | None:
     """tan(theta) > 0 of the first minimum of E(u cos + p sin): a root of a quartic, found exactly."""
-    a0 = h.dot(u, Ku) + h.space.integral(h.V * u * u)
-    a1 = h.dot(p, Ku) + h.space.integral(h.V * u * p)
-    a2 = h.dot(p, Kp) + h.space.integral(h.V * p * p)
     uu, up, pp = u * u, u * p, p * p
+    a0 = h.dot(u, Ku) + h.dot(h.V, uu)
+    a1 = h.dot(p, Ku) + h.dot(h.V, up)
+    a2 = h.dot(p, Kp) + h.dot(h.V, pp)
     c0, c1, c2 = h.dot(uu, uu), 4 * h.dot(uu, up), 6 * h.dot(uu, pp)
     c3, c4 = 4 * h.dot(up, pp), h.dot(pp, pp)
     half = 0.5 * h.c

@@ -92,7 +92,10 @@ class Space:
 
     def integral(self, density: Array) -> float:
         """Integral over all space of real samples (broadcast to the shape)."""
-        return float(np.dot(self.marginals(density)[0], self._weights[0]))
+        out = np.broadcast_to(density, self.shape)
+        for weights in reversed(self._weights):
+            out = out @ weights
+        return float(out)
 
     def marginals(self, density: Array) -> list[Array]:
         """Per array dimension, the density with all other directions integrated away."""
