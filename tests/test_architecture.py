@@ -25,7 +25,7 @@ ROOMS = (
 )  # fmt: skip
 #: Library -> the files that may import it.
 DOORS = {
-    "pyfftw": ("space/space.py",),
+    "pyfftw": ("space/plans.py",),
     "h5py": ("record/store.py",),
     "tomllib": ("plan/reader.py",),
     "pint": ("quantities.py",),

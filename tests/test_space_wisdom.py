@@ -18,13 +18,14 @@ CHILD = """
 import logging, sys
 logging.basicConfig(stream=sys.stderr, level=logging.INFO, format="%(levelname)s %(message)s")
 import pyfftw
-from trapsim.space import space
+from trapsim.space import plans
 from trapsim.space.axes import Wave
-space.WORTH_KEEPING = 0.0
+from trapsim.space.space import Space
+plans.WORTH_KEEPING = 0.0
 n = int(sys.argv[1])
-space._remembered()
+plans._remembered()
 print(len(pyfftw.export_wisdom()[0].splitlines()) > 2, flush=True)
-whole = space.Space([Wave((j,), n, 1.0) for j in range(3)])
+whole = Space([Wave((j,), n, 1.0) for j in range(3)])
 whole.forward(whole.array(1.0))
 """
 

@@ -7,6 +7,7 @@ from __future__ import annotations
 
 import numpy as np
 
+from trapsim.space.real import RealPair
 from trapsim.space.space import Array, Space
 
 #: from this many points on it pays to relax on every second one first; an axis keeps at least so many
@@ -35,9 +36,10 @@ class Hamiltonian:
         self.q = q
         #: number of directions in which the cloud can draw together
         self.extended = sum(len(axis.covers) for axis in space.axes if not axis.uniform)
-        self.K = sum(space.along(d, v) for d, v in enumerate(space.per_axis([q / 2] * 3, "k2")))
+        self._pair = RealPair(space)
+        #: on what is kept of a spectrum
+        self.K = sum(space.along(d, v) for d, v in enumerate(space.per_axis([q / 2] * 3, "k2")))[self._pair.kept]
         self.pairs = 0.0
-        self._work = space.empty()
         self._scale = 1 / space.round_trip
         #: the volume of a cell, where all are alike
         alike = all(np.ptp(a.weights) == 0 for a in space.axes)
@@ -50,12 +52,9 @@ class Hamiltonian:
         return self.space.integral(a * b)
 
     def spectral(self, a: Array, factor: Array) -> Array:
-        """Multiply the spectrum of real samples by a real factor; one pair."""
-        self._work[...] = a
-        spectrum = self.space.forward(self._work)
-        spectrum *= factor * self._scale
+        """Multiply the spectrum of real samples, as far as it is kept, by a real factor; one pair."""
         self.pairs += 1
-        return self.space.inverse(spectrum).real.copy()
+        return self._pair(a, factor * self._scale)
 
     def kinetic(self, u: Array) -> Array:
         return self.spectral(u, self.K)
@@ -63,10 +62,8 @@ class Hamiltonian:
     def coarser(self) -> Hamiltonian | None:
         """The same on every second point, with means of the potential; None where there is nothing to be gained."""
         space = self.space
-        halves = [a.n % 2 == 0 and a.n >= 2 * FEWEST for a in space.axes]
-        if space.size < LARGE or self.c < 0 or not all(h or a.uniform for h, a in zip(halves, space.axes, strict=True)):
-            return None
-        if any(len(a.covers) > 1 for a in space.axes):
+        varied = [a for a in space.axes if not a.uniform]
+        if space.size < LARGE or self.c < 0 or any(len(a.covers) > 1 or a.n % 2 or a.n < 2 * FEWEST for a in varied):
             return None
         fewer = Space([a.grown(0.5, 1) for a in space.axes], threads=space.threads)
         return Hamiltonian(fewer, means(self.V, space), coupling=self.c, q=self.q)

@@ -1,21 +1,16 @@
-"""The space: its axes together, quadrature and planned transforms. The only door to pyfftw."""
+"""The space: its axes together, quadrature and planned transforms."""
 
 from __future__ import annotations
 
-import time
 from collections.abc import Callable, Sequence
-from functools import cache, cached_property
-from pathlib import Path
+from functools import cached_property
 
 import numpy as np
-import pyfftw
 
-from trapsim.space import wisdom
 from trapsim.space.axes import COMPLEX, Array, Axis, Mirror, Radial, build
 from trapsim.space.pieces import share, slabs
+from trapsim.space.plans import Transform, aligned, along, inner, outer
 
-#: planning that takes longer than this, s, is worth keeping for later runs
-WORTH_KEEPING = 0.03
 #: (slab of an array, where it lies) -> None
 Pointwise = Callable[[Array, slice], None]
 
@@ -72,7 +67,7 @@ class Space:
 
     def empty(self) -> Array:
         """A complex work array, aligned for the transforms."""
-        return pyfftw.empty_aligned(self.shape, dtype="complex128")
+        return aligned(self.shape)
 
     def array(self, samples: Array) -> Array:
         """A complex, aligned copy of samples that broadcast to the shape."""
@@ -126,23 +121,12 @@ class Space:
         return slabs(self.shape, 0), slabs(self.shape, 1)
 
     @cached_property
-    def _inner(self) -> tuple[list[_Plan], list[_Plan]]:
-        """There and back along all dimensions but the first, within one slab."""
-        groups = [dims for real in (False, True) if (dims := self._dims(real=real)[0])]
-        return tuple([_Plan(self, dims, way) for dims in groups] for way in (0, 1))
+    def _inner(self) -> tuple[Transform, Transform]:
+        return inner(self.axes, self.empty()[self._slabs[0][0]], self.threads)
 
     @cached_property
-    def _outer(self) -> tuple[Callable[[Array], object], ...]:
-        """There and back along the first dimension, within one slab of the second."""
-        axis = self.axes[0]
-        if isinstance(axis, Radial):
-            return _product(axis.forward_matrix), _product(axis.inverse_matrix)
-        return tuple(_Plan(self, (0,), way) for way in (0, 1)) if axis.fftw else (_nothing, _nothing)
-
-    def _dims(self, *, real: bool) -> tuple[tuple[int, ...], tuple[int, ...]]:
-        """Dimensions with a transform of FFTW, but the first, and with it: of plane waves, or of cosines and sines."""
-        own = tuple(d for d, a in enumerate(self.axes) if a.fftw and (a.fftw != COMPLEX) == real)
-        return tuple(d for d in own if d), own
+    def _outer(self) -> tuple[Transform, Transform]:
+        return outer(self.axes, self.empty()[:, self._slabs[1][0]], self.threads)
 
     def _share(self, dim: int, work: Callable[[slice], None]) -> None:
         share(self._slabs[dim], work, threads=self.threads)
@@ -153,14 +137,14 @@ class Space:
 
     def forward(self, a: Array) -> Array:
         """Overwrite samples `a` with their spectrum; returns it."""
-        self._share(0, lambda slab: _each(self._inner[0], a[slab]))
+        self._share(0, lambda slab: self._inner[0](a[slab]))
         self._share(1, lambda slab: self._outer[0](a[:, slab]))
         return a
 
     def inverse(self, a: Array) -> Array:
         """Overwrite a spectrum `a` with its samples times `round_trip`; returns them."""
         self._share(1, lambda slab: self._outer[1](a[:, slab]))
-        self._share(0, lambda slab: _each(self._inner[1], a[slab]))
+        self._share(0, lambda slab: self._inner[1](a[slab]))
         return a
 
     def sandwich(
@@ -180,7 +164,7 @@ class Space:
         def there(slab: slice) -> None:
             if before is not None:
                 before(a[slab], slab)
-            _each(self._inner[0], a[slab])
+            self._inner[0](a[slab])
 
         def middle(slab: slice) -> None:
             field = a[:, slab]
@@ -189,7 +173,7 @@ class Space:
             self._outer[1](field)
 
         def back(slab: slice) -> None:
-            _each(self._inner[1], a[slab])
+            self._inner[1](a[slab])
             if after is not None:
                 after(a[slab], slab)
 
@@ -220,8 +204,10 @@ class Space:
         return out
 
     @cached_property
-    def _lines(self) -> dict[int, tuple[_Plan, _Plan]]:
-        return {d: tuple(_Plan(self, (d,), way) for way in (0, 1)) for d in self._dims(real=False)[1]}
+    def _lines(self) -> dict[int, tuple[Transform, Transform]]:
+        slab = {bool(d): self.empty()[self._slabs[0][0]] if d else self.empty()[:, self._slabs[1][0]] for d in (0, 1)}
+        waves = [d for d, a in enumerate(self.axes) if a.fftw == COMPLEX]
+        return {d: along(self.axes, (d,), slab[d > 0], self.threads) for d in waves}
 
     def unfolded(self, samples: Array) -> tuple[Array, Space]:
         """The same function with both sides of every mirror axis, and the space that it is then on."""
@@ -258,80 +244,6 @@ class Space:
     @classmethod
     def from_description(cls, description: Sequence[dict[str, object]], *, threads: int = 1) -> Space:
         return cls([build(d) for d in description], threads=threads)
-
-
-class _Plan:
-    """A planned transform in place along some dimensions of a slab, without any factor.
-
-    Only slabs are planned: that takes a fraction of a second at any size of the whole, and several threads share the
-    slabs. Real transforms of complex samples are done on their real and imaginary parts at once, as a last dimension of
-    two.
-    """
-
-    def __init__(self, space: Space, dims: tuple[int, ...], way: int) -> None:
-        self.real = space.axes[dims[0]].fftw != COMPLEX
-        names = tuple(space.axes[d].fftw[way] for d in dims)
-        cut = 1 if 0 in dims else 0
-        slab = space._slabs[cut][0]
-        scratch = space.empty()
-        scratch = self._view(scratch[:, slab] if cut else scratch[slab])
-        #: one for each thread; lists hand out and take back safely
-        self.idle = [
-            _planned(scratch, scratch, axes=dims, direction=names if self.real else names[0]) for _ in range(space.threads)
-        ]
-
-    def _view(self, a: Array) -> Array:
-        return a[..., None].view(np.float64) if self.real else a
-
-    def __call__(self, a: Array) -> None:
-        view, plan = self._view(a), self.idle.pop()
-        plan.update_arrays(view, view)
-        plan.execute()
-        self.idle.append(plan)
-
-
-def _planned(source: Array, target: Array, *, axes: tuple[int, ...], direction: str | tuple[str, ...]) -> pyfftw.FFTW:
-    """A transform planned by measuring, or from what earlier runs have measured."""
-    path = _remembered()
-    began = time.perf_counter()
-    plan = pyfftw.FFTW(source, target, axes=axes, direction=direction, flags=("FFTW_MEASURE",))
-    if time.perf_counter() - began > WORTH_KEEPING:
-        # another process may have learnt something meanwhile
-        wisdom.recall(path, _learn)
-        wisdom.keep(path, pyfftw.export_wisdom()[0])
-    return plan
-
-
-@cache
-def _remembered() -> Path:
-    """Take up what earlier runs have learnt; returns where it is kept."""
-    library = pyfftw.export_wisdom()[0].split()[0].decode().strip("(")
-    path = wisdom.place(library, "double")
-    wisdom.recall(path, _learn)
-    return path
-
-
-def _learn(kept: bytes) -> bool:
-    return bool(kept) and pyfftw.import_wisdom((kept, b"", b""))[0]
-
-
-def _each(plans: Sequence[_Plan], a: Array) -> None:
-    for plan in plans:
-        plan(a)
-
-
-def _nothing(a: Array) -> None:
-    """The transform along a direction in which nothing varies."""
-
-
-def _product(matrix: Array) -> Callable[[Array], None]:
-    """A transform by a real matrix along the first dimension."""
-
-    def transform(a: Array) -> None:
-        parts = a[..., None].view(np.float64)
-        parts[...] = (matrix @ parts.reshape(len(parts), -1)).reshape(parts.shape)
-
-    return transform
 
 
 def _marginals(density: Array, weights: Sequence[Array]) -> list[Array]:
