@@ -239,3 +239,20 @@ def test_a_cloud_in_a_box_may_have_a_hill_in_its_middle() -> None:
     box = '[trap.walls]\nkind = "box"\nsize = ["30 um", "30 um", "30 um"]\nheight = "60 nK"\nedge = "2 um"\n'
     setup = prepare(light.plain(motion.stage("release", 1e-3), parts=box + PLUG))
     assert not setup.lengths.uniform.any()
+
+
+@pytest.mark.parametrize(
+    ("parts", "stages"),
+    [
+        (light.lattice(1e6), [motion.stage("release", 1e-3), light.pulse(1.0)]),
+        (light.lattice(1, strength=1).replace("532 nm", "1 m"), [motion.stage("release", 1e-3)]),
+        (light.lattice(1, strength=1).replace("532 nm", "1 nm"), [motion.stage("release", 1e-3)]),
+    ],
+    ids=["depth", "long spacing", "short spacing"],
+)
+def test_an_absurd_lattice_is_refused_before_an_axis_is_made_for_it(
+    parts: str, stages: list[str], monkeypatch: pytest.MonkeyPatch
+) -> None:
+    monkeypatch.setattr("trapsim.prepare.extent.Wave", None)  # what makes an axis here fails
+    with pytest.raises(trapsim.PlanError, match=r"points along x, (.|\n)*at most \d+\n.*depth, spacing, detuning"):
+        prepare(motion.cloud(*stages, frequency=(30, 60, 90), parts=parts))
