@@ -30,6 +30,8 @@ from trapsim.terms.part import remainder, steered
 AXES = "xyz"
 #: from this many points on, more than one thread pays
 LARGE = 48**3
+#: arrays of the grid that are there at the same time, and bytes for all that does not grow with it
+COMPLEX_ARRAYS, RECORDED = 18, 16e6
 #: a curvature less than this share of the strongest is none
 FLAT = 1e-9
 #: a part with less strength than this at the end of a stretch is dying away, not holding
@@ -244,8 +246,8 @@ def _space(plan: Plan, words: tuple[str, ...], lengths: Lengths, accuracy: Accur
 
 
 def memory_needed(points: int) -> float:
-    """Bytes a run keeps in work on a grid of so many points: about a dozen complex arrays."""
-    return 12 * 16.0 * points
+    """Bytes a run takes at most on a grid of so many points, found by measuring: complex arrays, and what is recorded."""
+    return 16.0 * COMPLEX_ARRAYS * points + RECORDED
 
 
 def _legs(
