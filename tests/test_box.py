@@ -205,3 +205,13 @@ def test_a_faint_trap_in_a_box_adds_its_mean_energy(solved: Solved) -> None:
     added = motion.RB / 2 * (2 * pi * 1.0) ** 2 * spread / (2 * pi * hbar)
     assert both.energy_hz - alone.energy_hz == pytest.approx(added, rel=0.1)
     assert added > 1e-3 * alone.energy_hz
+
+
+def test_a_run_that_is_good_for_nothing_says_so(solved: Solved) -> None:
+    """An edge of 10 nm on a grid of half a micrometre; a run whose error is small says nothing."""
+    codes = {}
+    for edge in ("0.01 um", "2 um"):
+        parts = f'[trap.walls]\nkind = "box"\nsize = ["20 um", "20 um", "20 um"]\nheight = "60 nK"\nedge = "{edge}"\n'
+        summary = solved(light.plain(motion.stage("release", 5e-3), parts=parts, accuracy="draft")).summary
+        codes[edge] = (summary.numerics.error.width_relative > 0.05, "rough" in [n.code for n in summary.warnings])
+    assert codes == {"0.01 um": (True, True), "2 um": (False, False)}
