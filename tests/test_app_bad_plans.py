@@ -154,7 +154,7 @@ def test_a_collapse_keeps_an_older_result(ask, tmp_path):
 
 def test_a_cloud_that_is_too_coarse_stops_with_advice_and_keeps_what_was_seen(ask, tmp_path):
     (tmp_path / "plan.toml").write_text(GOOD)
-    numerics = ("axes=full", "points=[16, 14, 14]", "accuracy=fine", "memory=0.7 MB")
+    numerics = ("axes=full", "points=[16, 14, 14]", "accuracy=fine", "memory=17 MB")
     argv = ["run", "plan.toml", "--out", "out", *(f"--set=numerics.{one}" for one in numerics)]
     refused(ask(*argv), 3, "stage hold", "numerics.points")
     assert '"status": "stopped"' in (tmp_path / "out" / "summary.json").read_text()

@@ -249,3 +249,13 @@ def test_importing_the_package_and_checking_a_plan_load_no_heavy_library(tmp_pat
     assert not told & (heavy | {"pyfftw"})
     ran = loaded_by("from trapsim.app import main; main(['run', 'push.toml', '--quiet', '--no-figures'])", tmp_path)
     assert "h5py" in ran and "matplotlib" not in ran
+
+
+def test_check_says_where_the_scaling_law_does_not_hold(ask, tmp_path):
+    light = '\n[trap.light]\nkind = "lattice"\nwavelength = "1064 nm"\ndepth = "5 Er"\nstrength = 0\n'
+    flash = '\n[[sequence]]\nstage = "pulse"\nduration = "10 us"\nto = { "light.strength" = 1 }\n'
+    for text, told in ((GOOD, False), (GOOD.replace("\n[[sequence]]", light + "\n[[sequence]]", 1) + flash, True)):
+        (tmp_path / "plan.toml").write_text(text)
+        _, out, _ = ask("check", "plan.toml")
+        assert ("-: the scaling law does not hold" in out) is told
+        assert "free" not in out

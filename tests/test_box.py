@@ -13,12 +13,13 @@ from math import pi
 import numpy as np
 import pytest
 from scipy import optimize
-from scipy.constants import Boltzmann
+from scipy.constants import Boltzmann, hbar
 
 import light
 import motion
 import trapsim
 from reference import bruteforce, units
+from trapsim.prepare.setup import prepare
 from trapsim.record.series import Track
 
 Solved = Callable[[trapsim.Plan], trapsim.Run]
@@ -175,3 +176,42 @@ def test_a_large_cloud_in_a_box_is_a_uniform_gas(solved: Solved) -> None:
 def test_walls_lower_than_the_cloud_needs_are_refused() -> None:
     with pytest.raises(trapsim.PlanError, match=r"would spill over them(.|\n)*make the walls higher"):
         trapsim.run(light.plain(parts=box("cuboid"), number=1e6))
+
+
+# ---- a box among other parts ---------------------------------------------------------------------------------------
+
+WIDE = (
+    '[trap.{}]\nkind = "box"\nsize = ["90 um", "90 um", "90 um"]\nheight = "25 nK"\nedge = "2 um"\n'
+)
+FAINT = '[trap.bowl]\nkind = "harmonic"\nfrequency = ["1 Hz", "1 Hz", "1 Hz"]\n'
+
+
+def test_walls_that_the_cloud_does_not_reach_do_nothing_whichever_is_written_first(solved: Solved) -> None:
+    inner, outer = box("cuboid"), WIDE.format("outer")
+    plans = [light.plain(parts=parts, number=NUMBER, accuracy="draft") for parts in (outer + inner, inner + outer)]
+    one, other = (prepare(plan).space for plan in plans)
+    assert [a.describe() for a in one.axes] == [a.describe() for a in other.axes]
+    both = solved(plans[0]).summary.ground
+    alone = solved(light.plain(parts=box("cuboid"), number=NUMBER, accuracy="draft")).summary.ground
+    assert both.chemical_potential_hz == pytest.approx(alone.chemical_potential_hz, rel=1e-4)
+    assert both.width_um == pytest.approx(alone.width_um, rel=1e-4)
+
+
+def test_a_faint_trap_in_a_box_adds_its_mean_energy(solved: Solved) -> None:
+    """First-order perturbation theory: per atom (m/2) w^2 <x^2 + y^2 + z^2>, 0.2 % of the energy here."""
+    both = solved(light.plain(parts=box("cuboid") + FAINT, number=NUMBER, accuracy="draft")).summary.ground
+    alone = solved(light.plain(parts=box("cuboid"), number=NUMBER, accuracy="draft")).summary.ground
+    spread = sum(w**2 for w in alone.width_um) * 1e-12
+    added = motion.RB / 2 * (2 * pi * 1.0) ** 2 * spread / (2 * pi * hbar)
+    assert both.energy_hz - alone.energy_hz == pytest.approx(added, rel=0.1)
+    assert added > 1e-3 * alone.energy_hz
+
+
+def test_a_run_that_is_good_for_nothing_says_so(solved: Solved) -> None:
+    """An edge of 10 nm on a grid of half a micrometre; a run whose error is small says nothing."""
+    codes = {}
+    for edge in ("0.01 um", "2 um"):
+        parts = f'[trap.walls]\nkind = "box"\nsize = ["20 um", "20 um", "20 um"]\nheight = "60 nK"\nedge = "{edge}"\n'
+        summary = solved(light.plain(motion.stage("release", 5e-3), parts=parts, accuracy="draft")).summary
+        codes[edge] = (summary.numerics.error.width_relative > 0.05, "rough" in [n.code for n in summary.warnings])
+    assert codes == {"0.01 um": (True, True), "2 um": (False, False)}

@@ -160,3 +160,18 @@ def test_the_stated_error_covers_flights(beta: float, lam: float) -> None:
         assert off < said[-1] + 1e-6
         assert said[-1] < 50 * max(off, 1e-6)
     assert said[1] < said[0] / 10
+
+
+def deep(s: float, *axes: str) -> str:
+    """Lattices of 852 nm, s recoil energies deep, along axes."""
+    return "\n".join(
+        f'[trap.{j}]\nkind = "lattice"\naxis = "{j}"\nwavelength = "852 nm"\ndepth = "{s!r} Er"' for j in axes
+    )
+
+
+def test_a_deep_lattice_along_all_three_directions_is_doubted() -> None:
+    """M. Greiner et al., Nature 415, 39 (2002), value from memory: for Rb-87 at 852 nm U/J is 36 at 13 recoil energies."""
+    cubic = {s: card(frequency=(60, 70, 80), number=100, parts=deep(s, *"xyz"), accuracy="draft") for s in (3.0, 8.0, 13.0)}
+    assert cubic[13.0]["sites"].value == pytest.approx(36, rel=0.06)
+    assert [one["sites"].level for one in cubic.values()] == [FINE, CARE, DOUBT]
+    assert "sites" not in card(frequency=(60, 70, 80), number=100, parts=deep(13.0, "x", "y"), accuracy="draft")

@@ -175,3 +175,12 @@ def test_an_order_reaches_one_recoil_to_either_side() -> None:
     for offset, name in ((0.98, "0"), (1.02, "1"), (-0.98, "0"), (-1.02, "-1")):
         found = order_shares(comb({0: 1.0}, offset=offset, width=0.001), LIGHT, fallen=0.0)
         assert found == pytest.approx({name: 1.0}, abs=1e-6)
+
+
+def test_a_lattice_whose_period_dwarfs_the_cloud_has_no_orders() -> None:
+    """A cloud within one period is not diffracted but pushed; a million orders would be told, each of no meaning."""
+    shares = {-1: 0.2, 0: 0.6, 1: 0.2}
+    seen = comb(shares)
+    assert order_shares(seen, LIGHT, fallen=0.0)["0"] == pytest.approx(0.6, abs=1e-6)
+    for longer in (1e3, 1e6):
+        assert order_shares(seen, Lattice(spacing=longer * 532e-9, depth=0.0, mass=motion.RB), fallen=0.0) == {}

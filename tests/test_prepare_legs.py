@@ -9,6 +9,7 @@ from math import pi
 import numpy as np
 import pytest
 
+import light
 import motion
 import trapsim
 from reference import units
@@ -213,3 +214,45 @@ def test_memory_that_is_too_small_is_a_matter_of_the_plan() -> None:
         prepare(motion.cloud(
             motion.stage("release", 1e-3), frequency=(30.0, 60.0, 90.0), numerics='memory = "1 MB"', accuracy="fine"
         ))  # fmt: skip
+
+
+PLUG = """
+[trap.plug]
+kind = "beam"
+direction = "z"
+waist = "4 um"
+wavelength = "532 nm"
+depth = "-100 nK"
+"""
+
+
+@pytest.mark.parametrize("numerics", ["", 'extent = ["40 um", "40 um", "20 um"]'])
+def test_a_cloud_on_a_hill_is_refused_and_not_called_uniform(numerics: str) -> None:
+    """A repelling beam in the middle of a trap makes it turn down there, by far faster than the trap turns up."""
+    # closed forms: 4 V/w^2 beside m omega^2
+    assert motion.RB * (2 * pi * 90) ** 2 < 4 * 1.380649e-23 * 1e-7 / 4e-6**2
+    with pytest.raises(trapsim.PlanError, match=r"hill along x, y .* balance(.|\n)*function"):
+        prepare(motion.cloud(motion.stage("release", 1e-3), frequency=CIGAR, parts=PLUG, numerics=numerics))
+
+
+def test_a_cloud_in_a_box_may_have_a_hill_in_its_middle() -> None:
+    box = '[trap.walls]\nkind = "box"\nsize = ["30 um", "30 um", "30 um"]\nheight = "60 nK"\nedge = "2 um"\n'
+    setup = prepare(light.plain(motion.stage("release", 1e-3), parts=box + PLUG))
+    assert not setup.lengths.uniform.any()
+
+
+@pytest.mark.parametrize(
+    ("parts", "stages"),
+    [
+        (light.lattice(1e6), [motion.stage("release", 1e-3), light.pulse(1.0)]),
+        (light.lattice(1, strength=1).replace("532 nm", "1 m"), [motion.stage("release", 1e-3)]),
+        (light.lattice(1, strength=1).replace("532 nm", "1 nm"), [motion.stage("release", 1e-3)]),
+    ],
+    ids=["depth", "long spacing", "short spacing"],
+)
+def test_an_absurd_lattice_is_refused_before_an_axis_is_made_for_it(
+    parts: str, stages: list[str], monkeypatch: pytest.MonkeyPatch
+) -> None:
+    monkeypatch.setattr("trapsim.prepare.extent.Wave", None)  # what makes an axis here fails
+    with pytest.raises(trapsim.PlanError, match=r"points along x, (.|\n)*at most \d+\n.*depth, spacing, detuning"):
+        prepare(motion.cloud(*stages, frequency=(30, 60, 90), parts=parts))

@@ -157,3 +157,13 @@ def test_no_figure_shows_a_power_of_ten() -> None:
         assert len(seen) > 15 and not [one for one in seen if "e-" in one or "10^" in one]
         assert not [t for ax in figure.axes for t in (ax.xaxis.get_offset_text(), ax.yaxis.get_offset_text())
                     if t.get_text()]  # fmt: skip
+
+
+@pytest.mark.parametrize("lit", [True, False])
+def test_the_flow_says_that_it_does_not_follow_fringes_where_there_was_a_lattice(lit: bool) -> None:
+    kept = invented_run.contents()
+    end = dataclasses.replace(kept.summary.end, orders={"light": {"0": 1.0}} if lit else None)
+    figure = flow_figure(dataclasses.replace(kept.summary, end=end), kept.flow, kept.columns)
+    said = " ".join(text.get_text() for text in figure.texts)
+    assert ("fringes" in said) is lit
+    assert "where the atoms go next" in said

@@ -19,6 +19,7 @@ from trapsim.errors import Notice
 from trapsim.record.store import Contents, write_results
 from trapsim.record.summary import ErrorEstimate, Run
 from trapsim.show.levels import curves
+from trapsim.show.markup import pretty
 from trapsim.show.page import page_html, write_page
 from trapsim.show.sequence import LEFT, WIDE, sequence_svg
 from trapsim.show.wording import parts_in_words, recoil_energy, what_changes, words
@@ -367,3 +368,11 @@ def test_each_step_is_told_in_a_sentence(contents: Contents) -> None:
     assert what_changes(contents.plan, pulse) == "dipole on, from 2 µs on"
     pushed = {"stage": "kick", "velocity": quantity([0.0, 0.0, -8.6e-3], "m/s"), "recoils": -2.0, "of": "light"}
     assert what_changes(contents.plan, pushed) == "−8.6 mm/s along z given to all atoms (−2 recoils of light)"
+
+
+def test_what_there_is_not_is_a_dash_and_what_is_below_zero_has_a_minus_sign() -> None:
+    said = {
+        "-": "–", "-, -": "–, –", "-, -176.5": "–, −176.5", "3.4 (-1.7 %)": "3.4 (−1.7 %)",
+        "-1e-6 +- 2e-7 um": "−1e−6 ± 2e−7 µm",
+    }  # fmt: skip
+    assert {one: pretty(one) for one in said} == said

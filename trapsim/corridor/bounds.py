@@ -19,6 +19,8 @@ FEWEST = 8
 SHARE = 0.6
 #: how many times the points of the largest grid planned it may come to on the way: doubled thrice in every direction
 LARGER = 512
+#: arrays as large as a picture that are there while one is taken
+TAKING = 4
 _FEWER = 'take fewer numerics.points, a shorter numerics.extent, or numerics.accuracy = "draft"'
 
 
@@ -38,6 +40,14 @@ def set_up(plan: Plan) -> Setup:
                 f"numerics.points[{j}]", str(n), f"a cloud held along {'xyz'[j]} takes at least {FEWEST} points",
                 'write more points, or "auto"',
             )  # fmt: skip
+    needed, there = pictures_needed(setup), memory_there()
+    allowed = SHARE * there if plan.numerics.memory is None else plan.numerics.memory
+    if needed > allowed:
+        name, camera = max(plan.camera.items(), key=lambda item: item[1].size[0] * item[1].size[1])
+        raise PlanError.at(
+            f"camera.{name}.size", f"{list(camera.size)} pixels, with which all pictures need about {needed / 1e9:.3g} GB",
+            f"of memory {allowed / 1e9:.3g} GB may be used", "take fewer pixels or fewer pictures",
+        )  # fmt: skip
     needed, there = max(memory_needed(leg.space.size) for leg in (setup, *setup.legs)), memory_there()
     if plan.numerics.memory is None and needed > SHARE * there:
         shape = " x ".join(map(str, max((leg.space for leg in (setup, *setup.legs)), key=lambda s: s.size).shape))
@@ -47,6 +57,13 @@ def set_up(plan: Plan) -> Setup:
             f"{_FEWER}; or set numerics.memory yourself",
         )  # fmt: skip
     return setup
+
+
+def pictures_needed(setup: Setup) -> float:
+    """Bytes for the pictures of all cameras: what is kept, and what the largest needs while it is taken."""
+    pixels = {name: float(camera.size[0]) * camera.size[1] for name, camera in setup.plan.camera.items()}
+    taken = [pixels[shot.camera] for shot in setup.shots]
+    return 8.0 * (sum(taken) + TAKING * max(taken, default=0.0))
 
 
 def affordable(setup: Setup, points: int) -> bool:

@@ -37,6 +37,8 @@ from trapsim.space.axes import Array, Axis, Wall
 from trapsim.terms.part import steered
 
 _HZ = 1 / (2 * np.pi)
+#: a numerical error of the widths, relative, from which on a reader is warned of them
+ROUGH = 0.05
 #: by how much an axis is stretched to see the potential change
 STRETCH = 1e-4
 
@@ -164,7 +166,7 @@ def summarise(
             error=ErrorEstimate(error.width, error.rate, None if error.centre is None else 1e6 * error.centre),
         ),
         pictures=tuple(_picture_figures(p, timeline.released) for p in album.pictures.values()),
-        warnings=(*notices, *_told_of(kink), *_outside(album.pictures.values())),
+        warnings=(*notices, *_told_of(kink), *_rough(error.width), *_outside(album.pictures.values())),
     )  # fmt: skip
 
 
@@ -181,6 +183,17 @@ def _told_of(kink: float) -> tuple[Notice, ...]:
         "hard_edge", "the perfectly reflecting walls let go of a cloud that ends on them at a slope; its fastest atoms are "
         f"beyond this grid, so that expansion rates and late widths are up to {100 * kink:.2g} % too small. A soft edge, "
         "or more numerics.points, make that less",
+    ),)  # fmt: skip
+
+
+def _rough(error: float | None) -> tuple[Notice, ...]:
+    """What to say of widths whose numerical error is larger than anything a lab would put up with."""
+    if error is None or error < ROUGH:
+        return ()
+    size = "larger than they are" if error > 1 else f"of {100 * error:.2g} %"
+    return (Notice(
+        "rough", f"the numerical error of the widths may be {size}: do not use them. Take a finer numerics.accuracy or "
+        "more numerics.points; if that does not help, something in the plan is sharper than any grid, such as an edge",
     ),)  # fmt: skip
 
 

@@ -8,6 +8,9 @@ from trapsim.errors import Complaint
 from trapsim.fields import ORIGIN, Triple, entry
 from trapsim.measure.views import VIEWS
 
+#: m; in numbers much larger than this a pixel is lost
+FARTHEST = 10.0
+
 
 @dataclass(frozen=True, kw_only=True)
 class Camera:
@@ -32,6 +35,10 @@ class Camera:
 
     def complaints(self, place: str) -> list[Complaint]:
         """What does not fit together in its entries."""
+        if any(abs(a) > FARTHEST for a in self.aim):
+            return [Complaint(f"{place}.aim", f"{max(self.aim, key=abs):.4g} m",
+                              f"no camera of a lab looks further off than {FARTHEST:.0f} m",
+                              'write it like aim = ["0 um", "0 um", "-500 um"]')]
         if self.follow and self.aim != ORIGIN:
             return [Complaint(f"{place}.aim", "", "a camera that follows the cloud has no aim of its own",
                               "leave aim out, or follow = false")]

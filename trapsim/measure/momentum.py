@@ -21,6 +21,8 @@ from trapsim.terms.lattice import Lattice
 
 #: orders kept in tables: those with more than this share of the atoms
 VISIBLE = 1e-6
+#: more orders than this are none
+MOST = 200
 #: population of the spectral tail left out when the forms are weighed against each other
 TAIL = 1e-7
 
@@ -153,11 +155,16 @@ def order_shares(seen: Momentum, lattice: Lattice, *, fallen: float) -> dict[str
     Returns
     -------
     dict
-        "-1", "0", "1" ... in units of 2 hbar k, those with more than a millionth of the atoms.
+        "-1", "0", "1" ... in units of 2 hbar k, those with more than a millionth of the atoms; empty where they are finer
+        than the distribution is known, as for a cloud smaller than a period, or too many to be told apart.
     """
     k = lattice.k
     offset = fallen / lattice.recoil_velocity * k
-    low, high = ((seen.k[i] - offset) / (2 * k) for i in (0, -1))
+    there = np.nonzero(np.cumsum(seen.density * np.diff(_cell_edges(seen.k))) > VISIBLE / 2)[0]
+    back = np.nonzero(np.cumsum((seen.density * np.diff(_cell_edges(seen.k)))[::-1]) > VISIBLE / 2)[0]
+    low, high = ((seen.k[i] - offset) / (2 * k) for i in (there[0], len(seen.k) - 1 - back[0]))
+    if high - low > MOST or 2 * k < np.diff(seen.k).min():
+        return {}
     orders = range(int(np.floor(low)), int(np.ceil(high)) + 1)
     shares = {n: seen.share((2 * n - 1) * k + offset, (2 * n + 1) * k + offset) for n in orders}
     return {str(n): p for n, p in shares.items() if p > VISIBLE}

@@ -75,7 +75,7 @@ class Stage:
 
     name: str = entry("text", "what results call it; by default its kind, then hold_2 and so on", default="")
     pictures: tuple[float, ...] = entry(
-        "time", "when pictures are taken, from the start of the stage; by default at its end", default=(),
+        "time", "when pictures are taken, from the start of the stage; by default at the end of a release only", default=(),
         count=None, low=0.0,
     )
 

@@ -6,6 +6,9 @@ import dataclasses
 from collections.abc import Mapping
 from typing import Any
 
+import numpy as np
+
+from trapsim.constants import K_B
 from trapsim.errors import Complaint
 from trapsim.measure.camera import Camera
 from trapsim.plan.kinds import PARTS
@@ -15,6 +18,9 @@ from trapsim.plan.variants import NAME
 from trapsim.species import SPECIES, Atoms
 from trapsim.terms.function import Function, Potential
 from trapsim.terms.part import Part
+
+#: m, where a user's function is tried along x, y, z; K, what no potential is everywhere
+TRIED, HOT = np.array([-7.3e-6, -1.1e-6, 0.4e-6, 3.7e-6]), 1.0
 
 
 def kind_of(raw: Mapping[str, Any], place: str, key: str, kinds: Mapping[str, type]) -> type | Complaint:
@@ -63,6 +69,7 @@ def with_functions(
     for name, part in trap.items():
         if isinstance(part, Function) and name in functions:
             out[name] = dataclasses.replace(part, function=functions[name])
+            complaints.extend(_tried(f"trap.{name}", functions[name]))
         elif isinstance(part, Function):
             complaints.append(Complaint(f"trap.{name}", 'kind = "function"', "its function is handed over in Python",
                                         f'trapsim.read_plan(path, functions={{"{name}": V}}) with V(x, y, z, t) in J'))
@@ -71,6 +78,31 @@ def with_functions(
             complaints.append(Complaint(f"trap.{name}", "a function", "the plan has no such part of the kind function",
                                         f'write [trap.{name}], kind = "function"'))
     return out, complaints
+
+
+def _tried(place: str, function: Potential) -> list[Complaint]:
+    """What is wrong with the values of a user's function, seen at some points around the origin at the start."""
+    x, y, z = (TRIED.reshape(shape) for shape in ((-1, 1, 1), (1, -1, 1), (1, 1, -1)))
+    way_out = "write it with numpy functions of x, y, z in m and t in s, and an energy in J as its value"
+    if not callable(function):
+        return [Complaint(place, shown(function), "a function V(x, y, z, t) is needed", way_out)]
+    try:
+        with np.errstate(all="ignore"):
+            values = np.asarray(function(x, y, z, 0.0))
+    except Exception as error:  # whatever a stranger's function may raise
+        got = f"{type(error).__name__}: {error}"
+        return [Complaint(place, got, "the function must give a value at any x, y, z, t", way_out)]
+    fits = len(values.shape) <= 3 and all(n in (1, len(TRIED)) for n in values.shape)
+    if not fits or values.dtype.kind not in "fiu":
+        got = f"{values.dtype} of shape {values.shape} for x, y, z of {x.shape}, {y.shape}, {z.shape}"
+        return [Complaint(place, got, "the function's value is a real number at every point", way_out)]
+    if not np.isfinite(values).all():
+        return [Complaint(place, "values that are not finite", "a potential is finite everywhere", way_out)]
+    if np.abs(values).min() > HOT * K_B:
+        return [Complaint(place, f"{values.flat[0]:.3g} J at {1e6 * TRIED[0]:.3g} um along x, y and z",
+                          f"that is {np.abs(values).min() / K_B:.2g} K, and a potential for cold atoms is in J",
+                          "multiply what is in K by 1.380649e-23 J/K, and what is in Hz by 6.62607015e-34 J s")]
+    return []
 
 
 def read_cameras(raw: Any, atoms: Atoms | None, keep: Any, complaints: list[Complaint]) -> dict[str, Camera]:

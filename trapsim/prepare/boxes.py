@@ -53,7 +53,7 @@ def box_lengths(lengths: Lengths, box: Box, q: float, accuracy: Accuracy, free: 
         wall = box.size[j] / 2
         # when it is let go, its rim runs off at twice the speed of sound before the frame has gathered speed
         half[j] = max(wall + 1.2 * box.edge + accuracy.tail * decay, HEAD_START * wall)
-        finest[j] = min(min(FOOT, COARSEST_FOOT / accuracy.spacing) * min(foot, healing), box.size[j] / 8)
+        finest[j] = min(finest[j], min(FOOT, COARSEST_FOOT / accuracy.spacing) * min(foot, healing), box.size[j] / 8)
     return replace(lengths, half=half, finest=finest, mu=mu)
 
 

@@ -15,6 +15,9 @@ from trapsim.quantities import human
 from trapsim.space.axes import Array, Axis, Mirror, Radial, Wall, Wave
 from trapsim.space.space import Space
 
+#: points of a whole axis: transforms do with more, but the matrices of a mirror, wall or radial axis grow as their square
+LONGEST = {"wave": 2**20, "mirror": 3 * 2**12, "wall": 2**13, "radial": 2**12}
+
 
 @dataclass(frozen=True)
 class Accuracy:
@@ -192,18 +195,42 @@ def choose_space(
         asked = max(points[j] for j in group)
         if group == pair:
             n = asked or max(8, int(np.ceil(half / spacing)) + 2)
-            axes.append(Radial(group, n, half))
+            axes.append(Radial(group, _bounded(n, half / n, group, words, lengths), half))
         elif lengths.walls[group[0]]:
-            axes.append(_around_walls(group[0], half, spacing, lengths, asked, closed=words[group[0]] == Wall.kind))
+            axes.append(_around_walls(
+                group[0], half, spacing, lengths, asked, words=words
+            ))
         elif lengths.period[group[0]]:
-            axes.append(_commensurate(group[0], half, spacing, lengths, asked, fixed=bool(extent[group[0]])))
+            axes.append(_commensurate(
+                group[0], half, spacing, lengths, asked, fixed=bool(extent[group[0]]), words=words
+            ))
         elif np.isinf(spacing):
             axes.append(Wave(group, asked or 1, half))
         else:
-            n = asked or _fast_even(max(12, 2 * half / spacing))
-            axes.append(Wave(group, n, half))
+            n = asked or _fast_even(_bounded(max(12, 2 * half / spacing), spacing, group, words, lengths))
+            axes.append(Wave(group, _bounded(n, spacing, group, words, lengths), half))
     axes = [_mirrored(a) if words[a.covers[0]] == "mirror" else a for a in axes]
     return Space(axes, threads=threads)
+
+
+def _bounded(n: float, spacing: float, group: Sequence[int], words: Sequence[str], lengths: Lengths) -> float:
+    """The number of points of a whole axis, if it is not absurd: looked at before anything of that size is made.
+
+    Raises
+    ------
+    PlanError
+    """
+    j = group[0]
+    most = LONGEST[words[j]]
+    if n <= most:
+        return n
+    fine = lengths.period[j] > 0 or np.isfinite(lengths.spacing[j])
+    raise PlanError.at(
+        f"numerics.points[{j}]", f"{n:.4g} points along {'xyz'[j]}, {1e9 * spacing:.3g} nm apart",
+        f"a {words[j]} axis has at most {most}",
+        "the light, or the potential of yours, that acts along it asks for this: look at its depth, spacing, detuning and "
+        "duration" if fine else 'take a shorter numerics.extent, or numerics.accuracy = "draft"',
+    )  # fmt: skip
 
 
 def _mirrored(axis: Axis) -> Axis:
@@ -211,7 +238,9 @@ def _mirrored(axis: Axis) -> Axis:
     return Mirror(axis.covers, (axis.n + 1) // 2, axis.half_extent)
 
 
-def _around_walls(j: int, half: float, spacing: float, lengths: Lengths, asked: int, *, closed: bool) -> Axis:
+def _around_walls(
+    j: int, half: float, spacing: float, lengths: Lengths, asked: int, *, words: Sequence[str]
+) -> Axis:
     """The axis between perfectly reflecting walls, or that which takes over when they are opened.
 
     The walls are at cell boundaries of the second too: a density that is even about its ends is then summed exactly.
@@ -219,15 +248,18 @@ def _around_walls(j: int, half: float, spacing: float, lengths: Lengths, asked: 
     wall = lengths.walls[j]
     if lengths.period[j]:
         spacing = min(spacing, lengths.period[j] / (UNMATCHED * lengths.per_period[j]))
-    n = asked or fft.next_fast_len(int(np.ceil(max(12, 2 * wall / spacing))))
-    if closed:
+    across = max(12, 2 * wall / spacing)
+    n = asked or fft.next_fast_len(int(np.ceil(_bounded(across, spacing, (j,), words, lengths))))
+    if words[j] == Wall.kind:
         return Wall((j,), n, wall)
     spacing = 2 * wall / (OPENED * n)
-    whole = _fast_even(2 * half / spacing)
+    whole = _fast_even(_bounded(2 * half / spacing, spacing, (j,), words, lengths))
     return Wave((j,), whole, whole * spacing / 2)
 
 
-def _commensurate(j: int, half: float, spacing: float, lengths: Lengths, asked: int, *, fixed: bool) -> Wave:
+def _commensurate(
+    j: int, half: float, spacing: float, lengths: Lengths, asked: int, *, fixed: bool, words: Sequence[str]
+) -> Wave:
     """A wave axis with a whole number of points per lattice period, and a whole number of periods.
 
     A grid that is not commensurate with a lattice that holds the cloud gives another lattice at every site.
@@ -242,6 +274,7 @@ def _commensurate(j: int, half: float, spacing: float, lengths: Lengths, asked: 
             )  # fmt: skip
         periods = round(periods)
     per = max(int(lengths.per_period[j]), int(np.ceil(period / spacing)) if np.isfinite(spacing) else 1)
+    _bounded(asked or np.ceil(periods) * per, period / per, (j,), words, lengths)
     per = fft.next_fast_len(per)  # a large prime would spoil every number of periods
     if asked:
         per = asked / (periods if fixed else round(asked * 2 * half / (asked * period)))

@@ -41,7 +41,8 @@ def measure_up(
     """Lengths of the cloud at rest, whatever holds it."""
     parts = timeline.initial.parts_at(0.0)
     extent = np.asarray(plan.numerics.extent, dtype=float)
-    box = next((p for p in parts if isinstance(p, Box)), None)
+    boxes = [p for p in parts if isinstance(p, Box)]
+    box = _holding(boxes)
     free = omega == 0
     length = np.where(extent > 0, extent, box.size if box else 0.0)
     most = max([coupling, *(s.stretch.coupling(s.stretch.stop) for s in timeline.steps)]) if coupling >= 0 else coupling
@@ -51,11 +52,35 @@ def measure_up(
         force, _ = steered(parts, timeline.origin)
         lengths = hard_lengths(lengths, box, q, most, force, trapped=bool(omega.any()))
     elif box is not None:
-        lengths = box_lengths(lengths, box, q, accuracy, free)
+        lengths = box_lengths(_squeezed(lengths, box, omega, most, q), box, q, accuracy, free | _reaches(lengths, box))
     elif any(isinstance(p, Beam) for p in parts):
         lengths = _within_rim(lengths, parts, timeline.origin, omega)
     periodic = free if box is None else np.zeros(3, dtype=bool)
     return replace(lengths, half=np.where(extent > 0, extent / 2, lengths.half), periodic=periodic)
+
+
+def _holding(boxes: Sequence[Box]) -> Box | None:
+    """What several boxes are together: the nearest walls, the greatest height and the sharpest edge of them."""
+    if len(boxes) < 2:
+        return boxes[0] if boxes else None
+    return replace(
+        boxes[0], size=tuple(np.min([p.size for p in boxes], axis=0)), strength=1.0,
+        height=max(p.strength * p.height for p in boxes), edge=min(p.edge for p in boxes),
+    )  # fmt: skip
+
+
+def _reaches(lengths: Lengths, box: Box) -> Array:
+    """Directions (3,) of a trap in which the cloud would be larger than the box that stands in it."""
+    return np.isfinite(lengths.half) & (lengths.half > np.asarray(box.size) / 2)
+
+
+def _squeezed(lengths: Lengths, box: Box, omega: Array, coupling: float, q: float) -> Lengths:
+    """The lengths with at least the chemical potential that the box's walls alone would make."""
+    reached = _reaches(lengths, box)
+    if not reached.any():
+        return lengths
+    alone = scattering_number(coupling, q, np.asarray(box.size) / 2, np.zeros(3))
+    return replace(lengths, mu=max(lengths.mu, 4 * np.pi * q * alone + float(omega[~reached].sum()) / 2))
 
 
 def _along_lab(timeline: Timeline, omega: Array, q: float, number: float, accuracy: Accuracy) -> Lengths:

@@ -30,6 +30,10 @@ from trapsim.terms.part import remainder, steered
 AXES = "xyz"
 #: from this many points on, more than one thread pays
 LARGE = 48**3
+#: arrays of the grid that are there at the same time, and bytes for all that does not grow with it
+COMPLEX_ARRAYS, RECORDED = 18, 16e6
+#: a curvature less than this share of the strongest is none
+FLAT = 1e-9
 #: a part with less strength than this at the end of a stretch is dying away, not holding
 DYING = 1e-3
 
@@ -130,6 +134,7 @@ def prepare(plan: Plan) -> Setup:
     q = HBAR / plan.atoms.mass
     coupling = timeline.initial.coupling(0.0)
     _, curvature = steered(timeline.initial.parts_at(0.0), timeline.origin)
+    _rest_in_a_valley(timeline, curvature)
     omega = np.sqrt(np.maximum(curvature, 0.0) / plan.atoms.mass)
     needs = measure_up(plan, timeline, omega, q, coupling, accuracy)
     standing = plan.numerics.frame == "lab"
@@ -158,6 +163,18 @@ def prepare(plan: Plan) -> Setup:
         guards=Guards(accuracy.edge, accuracy.spectrum, accuracy.norm, watched), shots=shots,
         why=_why(plan, round_about, words), notices=timeline.notices,
     )  # fmt: skip
+
+
+def _rest_in_a_valley(timeline: Timeline, curvature: Array) -> None:
+    """Refuse a cloud made on top of a hill: its size cannot be taken from the trap's curvature there."""
+    uphill = [AXES[j] for j in range(3) if curvature[j] < -FLAT * np.abs(curvature).max()]
+    if uphill and not any(isinstance(p, Box) for p in timeline.initial.parts_at(0.0)):
+        raise PlanError.at(
+            "trap", f"the top of a hill along {', '.join(uphill)} where the forces on the atoms balance",
+            "the room for a cloud follows from the valley in which it rests",
+            "move the beam that repels, or the two that pull apart; hold the cloud in a box as well; or hand that light "
+            'over from Python, as a part of the kind "function"',
+        )  # fmt: skip
 
 
 def _leave_uniform(timeline: Timeline, lengths: Lengths) -> None:
@@ -229,8 +246,8 @@ def _space(plan: Plan, words: tuple[str, ...], lengths: Lengths, accuracy: Accur
 
 
 def memory_needed(points: int) -> float:
-    """Bytes a run keeps in work on a grid of so many points: about a dozen complex arrays."""
-    return 12 * 16.0 * points
+    """Bytes a run takes at most on a grid of so many points, found by measuring: complex arrays, and what is recorded."""
+    return 16.0 * COMPLEX_ARRAYS * points + RECORDED
 
 
 def _legs(

@@ -34,7 +34,8 @@ class Step:
     """A stretch together with the stage it belongs to and the kick at its start.
 
     `stands` are the directions in which a box or a lattice holds the cloud where it is; `fallen` the velocities (3,)
-    that forces and kicks have given to the classical centre since each lattice first acted, at the end of the step.
+    that forces and kicks have given to the classical centre since each lattice first acted, at the end of the step, with
+    what it then was faster than a whole order.
     """
 
     stretch: Stretch
@@ -105,7 +106,7 @@ class _Builder:
         self.first_on = frozenset(n for n, p in self.parts.items() if p.strength > 0)
         self.travel: dict[str, float] = {}
         self.fallen: dict[str, Array] = {}
-        self._gain(self.parts, {}, np.zeros(3))
+        self._gain(self.parts, {}, np.zeros(3), came=np.zeros(3))
         at_rest = {n: replace(p, centre=(0.0, 0.0, 0.0)) if getattr(p, "centre", None) == HELD else p
                    for n, p in self.parts.items()}
         origin = equilibrium(self._stretch(0.0, 0.0, {}, at_rest).parts_at(0.0))
@@ -139,10 +140,11 @@ class _Builder:
 
     def _stage(self, index: int, stage: Stage, start: float, stop: float) -> list[Step]:
         if isinstance(stage, Kick):
+            came = self.state[3:].copy()
             self.state[3:] += stage.velocity
             self.path.append(self.state.copy())
             stretch = self._stretch(start, start, {})
-            fallen = self._gain(self.parts, {}, np.array(stage.velocity))
+            fallen = self._gain(self.parts, {}, np.array(stage.velocity), came=came)
             return [Step(stretch, index, True, True, stage.velocity, frozenset(), fallen)]
         before = (dict(self.parts), self.scattering)
         courses = self._courses(stage, start, stop)
@@ -159,8 +161,9 @@ class _Builder:
             stretch = self._stretch(t0, t1, running)
             leaving = stage.off if isinstance(stage, Release) else ()
             stands = stretch.gripped(leaving) if stage.kind in STANDING else stretch.walled()
+            came = self.state[3:].copy()
             gained = self._follow(stretch, stands)
-            fallen = self._gain(stretch.parts, stretch.courses, gained)
+            fallen = self._gain(stretch.parts, stretch.courses, gained, came=came)
             steps.append(Step(stretch, index, t0 == start, t1 == stop, ORIGIN, stands, fallen))
             for name, part in self.parts.items():
                 if isinstance(part, Lattice):
@@ -244,14 +247,24 @@ class _Builder:
                 self._met.add(name)
                 self.parts[name] = replace(part, centre=tuple(self.state[:3]))
 
-    def _gain(self, parts: Mapping[str, Part], courses: Collection[str], gained: Array) -> dict[str, Array]:
-        """Add a velocity (3,) to every lattice that has acted or acts now, and say what each has by then."""
+    def _gain(
+        self, parts: Mapping[str, Part], courses: Collection[str], gained: Array, *, came: Array
+    ) -> dict[str, Array]:
+        """Add a velocity (3,) to every lattice that has acted or acts now, and say what each has by then.
+
+        It begins with what the velocity `came` (3,), with which the cloud meets the light, has above the nearest whole
+        order: a cloud between two orders would else be counted half to the one and half to the other.
+        """
         for name, part in parts.items():
             if not isinstance(part, Lattice):
                 continue
             acts = part.strength * part.depth > 0 or not {f"{name}.strength", f"{name}.depth"}.isdisjoint(courses)
             if acts or name in self.fallen:
-                self.fallen[name] = self.fallen.get(name, np.zeros(3)) + gained
+                if name not in self.fallen:
+                    beyond = np.zeros(3)
+                    beyond[part.direction] = math.remainder(came[part.direction], 2 * part.recoil_velocity)
+                    self.fallen[name] = beyond
+                self.fallen[name] = self.fallen[name] + gained
         return dict(self.fallen)
 
     def _follow(self, stretch: Stretch, stands: frozenset[int]) -> Array:

@@ -40,7 +40,7 @@ def _row(name: str, text: str) -> str:
 
 
 def _three(values: Sequence[float], unit: str) -> str:
-    return ", ".join("free" if not np.isfinite(v) else four(v) for v in values) + f" {unit}"
+    return ", ".join("free" if np.isinf(v) else four(v) for v in values) + f" {unit}"
 
 
 def _cloud(setup: Setup, law: ScalingLaw | None) -> list[str]:
@@ -61,12 +61,16 @@ def _prediction(setup: Setup, law: ScalingLaw | None) -> list[str]:
     name = law.model if law else "no scaling law for this cloud"
     lines = [f"What to expect at the end of each stage ({name}; centre: classical path)"]
     lines.append(f"  {'stage':<16}{'ends at':>10}   {'half-width x, y, z (um)':<28}{'centre x, y, z (um)'}")
+    silent = False
     last = {step.stage: i for i, step in enumerate(setup.timeline.steps)}
     for index, (stage, (_, stop)) in enumerate(zip(setup.plan.sequence, setup.timeline.stage_times, strict=True)):
         centre = setup.timeline.path[last[index]][:3] - np.array(setup.timeline.origin)
         widths = _three(1e6 * law.at(stop)[0], "") if law else "-"
         where = _three(1e6 * _quiet(centre), "")
         lines.append(f"  {stage.name:<16}{four(1e3 * stop):>7} ms   {widths:<28}{where}".rstrip())
+        silent = silent or (law is not None and "-," in f"{widths},")
+    if silent:
+        lines.append(f"  {'':<29}-: the scaling law does not hold here; run the plan")
     return lines
 
 

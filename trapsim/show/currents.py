@@ -43,7 +43,9 @@ def flow_figure(
     side = (WIDTH - 0.35 - 0.85 * len(planes)) / max(len(planes), 2)
     height = side + 2.05
     moment = summary.end.time_ms if summary.end is not None else 0.0
-    words = f"{brief(moment)} ms after the start; arrows: where the atoms go next, the centre's own velocity taken off"
+    lit = summary.end is not None and bool(summary.end.orders)
+    less = "the centre's velocity taken off" if not lit else "centre at rest; fringes are not followed"
+    words = f"{brief(moment)} ms after the start; arrows: where the atoms go next, {less}"
     figure = new_figure(height, summary.title or "Flow", words)
     for n, plane in enumerate(planes):
         ax = box(figure, 0.8 + n * (side + 0.85), height - 1.15 - side, side, side)

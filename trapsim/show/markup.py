@@ -2,11 +2,15 @@
 
 from __future__ import annotations
 
+import re
 from collections.abc import Sequence
 from dataclasses import dataclass
 from html import escape
 
 from trapsim.show.numbers import MISSING
+
+#: a figure that there is not, by itself or in a row of figures
+_ABSENT = re.compile(rf"(?<![^\s(]){MISSING}(?=$|[,;)\s])")
 
 
 @dataclass(frozen=True)
@@ -26,7 +30,7 @@ def html(one: Cell) -> str:
 
 def pretty(text: str) -> str:
     """The signs of print in a number written for the terminal."""
-    return "–" if text == MISSING else text.replace("+-", "±").replace("-", "−").replace("um", "µm")
+    return _ABSENT.sub("–", text).replace("+-", "±").replace("-", "−").replace("um", "µm")
 
 
 def numbers(cells: Sequence[str]) -> list[str]:

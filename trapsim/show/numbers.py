@@ -40,6 +40,8 @@ def with_error(value: float | None, error: float | None) -> str:
     """
     if value is None or error is None or not math.isfinite(value) or not (math.isfinite(error) and error > 0):
         return four(value)
+    if abs(value) < error / 10:
+        return f"0 +- {Decimal(f'{error:.0e}'):f}"
     size = math.floor(math.log10(abs(value))) if value else math.floor(math.log10(error))
     digits = 1 + size - math.floor(math.log10(error))
     if digits > 9:
