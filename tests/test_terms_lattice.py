@@ -8,6 +8,7 @@ import numpy as np
 import pytest
 from scipy import special
 
+import trapsim
 from reference import units
 from reference.planewaves import Recoil
 from trapsim.terms.lattice import Lattice
@@ -87,3 +88,16 @@ def test_how_fast_it_changes_for_an_atom_that_flies_past() -> None:
     # an atom at 0.2 m/s meets sites of 532 nm at 376 kHz
     assert LATTICE.rate(np.array([0.2, 0.0, 0.0])) == pytest.approx(2 * pi * 0.2 / 532e-9, rel=1e-12, abs=0)
     assert moving.rate(np.zeros(3)) == pytest.approx(2 * pi * 5e3, rel=1e-12, abs=0)
+
+
+@pytest.mark.parametrize(
+    "written", ['"1064"', '"1064 mn"', "1064", '"x nm"', '["1064 nm"]', "true", '""', "{}", '"1e999 nm"']
+)
+@pytest.mark.parametrize("entry", ["wavelength", "spacing"])
+def test_a_wavelength_that_cannot_be_read_is_complained_of_in_words(entry: str, written: str) -> None:
+    text = (
+        '[atoms]\nspecies = "Rb-87"\nnumber = 1e4\n'
+        f'[trap.light]\nkind = "lattice"\ndepth = "12 Er"\n{entry} = {written}\n'
+    )
+    with pytest.raises(trapsim.PlanError, match=rf"trap\.light\.{entry}"):
+        trapsim.plan_from_text(text, "slip")

@@ -78,7 +78,7 @@ class Lattice(Part):
             if name in table:
                 try:
                     period = share * quantities.parse(table[name], "length").value
-                except quantities.UnreadableQuantity:
+                except quantities.QuantityError:
                     return {}
                 recoil = (HBAR * np.pi / period) ** 2 / (2 * mass) if period > 0 else 0.0
                 return {"energy": {"Er": recoil}, "frequency": {"Er": recoil / HBAR}} if recoil else {}
