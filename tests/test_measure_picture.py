@@ -227,7 +227,7 @@ def test_a_cloud_outside_the_picture_has_no_width_there_and_is_said_to_be_outsid
     assert away.as_dict()["width_um"] == away.as_dict()["centre_um"] == [None, None]
     assert [n.text.split(":")[0] for n in run.summary.warnings if n.code == "outside"] == ["picture away_release_6ms"]
     assert "no atom is on it" in " ".join(summary_text(run.summary).split())
-    assert str(pictures_table(run.summary.pictures)).count("−, −") == 2
+    assert str(pictures_table(run.summary.pictures)).count("–, –") == 2
     # half of a normal distribution: its mean is sqrt(2/pi) widths from the edge, its variance 1 - 2/pi
     assert beside.atoms == pytest.approx(NUMBER / 2, rel=1e-3)
     assert 1e-6 * beside.centre_um[0] == pytest.approx(WIDTHS[0] * sqrt(2 / pi), rel=5e-3)
