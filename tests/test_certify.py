@@ -18,7 +18,7 @@ from trapsim.corridor.certify import NONE, finer_plan
 from trapsim.errors import Interrupted
 from trapsim.estimate.truth import certificate, difference, missed
 from trapsim.prepare.extent import ACCURACY, finer_than
-from trapsim.prepare.setup import Setup, prepare
+from trapsim.prepare.setup import Setup, memory_needed, prepare
 from trapsim.record.store import read_run
 from trapsim.record.summary import Summary
 from trapsim.show.page import page_html
@@ -271,11 +271,11 @@ def test_begun_anew_a_result_loses_its_certificate_and_what_was_left_of_one(tmp_
 def test_a_finer_run_that_does_not_fit_is_told_and_the_result_stays(
     tmp_path: Path, capsys: pytest.CaptureFixture[str]
 ) -> None:
-    """Memory for the plan's own grid, and not for one of nearly twice the points."""
+    """Memory for the plan's own grid, and not for the finer one."""
     plan = plan_of()
-    setup = prepare(plan)
-    needed = 12 * 16 * max(s.size for s in spaces(setup))
-    argv = command(tmp_path, "--set", f"numerics.memory={1.2 * needed / 1e6:.6f} MB", "--certify")
+    needed, more = (memory_needed(max(s.size for s in spaces(prepare(p)))) for p in (plan, finer_plan(plan)))
+    assert more > needed
+    argv = command(tmp_path, "--set", f"numerics.memory={0.5 * (needed + more) / 1e3:.6f} kB", "--certify")
     assert main(argv) == 0
     shown = capsys.readouterr()
     assert "there is no certificate" in " ".join(shown.out.split()) and "numerics.memory" in shown.out
