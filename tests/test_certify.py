@@ -255,6 +255,20 @@ def test_interrupted_while_certifying_the_result_is_safe_and_the_same_call_goes_
     assert found.picture_atoms_relative == pytest.approx(whole.difference.picture_atoms_relative, rel=1e-6)
 
 
+def test_a_damaged_beginning_of_a_certificate_is_begun_anew_and_the_result_is_not(folder: Path, tmp_path: Path) -> None:
+    plan, place = plan_of(), tmp_path / "r"
+    trapsim.run(plan, place)
+    before = (place / "track.csv").stat().st_mtime_ns
+    with pytest.raises(Interrupted):
+        trapsim.run(plan, place, stop=lambda: True, certify=True)
+    kept = place / "certificate" / "checkpoint.npz"
+    kept.write_bytes(kept.read_bytes()[:-200])
+    found = trapsim.run(plan, place, certify=True).summary.numerics.certified.difference
+    whole = trapsim.open_run(folder).summary.numerics.certified.difference
+    assert found.width_relative == pytest.approx(whole.width_relative, rel=1e-6)
+    assert (place / "track.csv").stat().st_mtime_ns == before
+
+
 def test_begun_anew_a_result_loses_its_certificate_and_what_was_left_of_one(tmp_path: Path) -> None:
     plan, place = plan_of(), tmp_path / "r"
     trapsim.run(plan, place, certify=True)

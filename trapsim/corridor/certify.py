@@ -42,6 +42,8 @@ def certified(done: Run, play: Callable[[Plan, Path | None], Run]) -> Run:
     work = None if done.folder is None else done.folder / place.CERTIFICATE
     if done.summary.numerics.certified is not None and not (work and work.exists()):
         return done
+    if done.folder is not None:
+        place.drop_damaged_certificate(done.folder)
     summary = _without_notice(done.summary)
     plan = finer_plan(done.plan)
     try:

@@ -179,6 +179,16 @@ def clear(folder: Path) -> None:
     discard_certificate(folder)
 
 
+def drop_damaged_certificate(folder: Path) -> None:
+    """Take out what the finer run of a certificate has left where it cannot be taken up; the result itself is not it."""
+    path = folder / CERTIFICATE / CHECKPOINT
+    if path.exists():
+        try:
+            read_checkpoint(path)
+        except FileTrouble:
+            discard_certificate(folder)
+
+
 def discard_certificate(folder: Path) -> None:
     """Take out what the finer run of a certificate has left."""
     work = folder / CERTIFICATE
