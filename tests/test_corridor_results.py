@@ -58,6 +58,7 @@ SUMMARY = {
 }  # fmt: skip
 NUMERICS = {
     "axes", "points", "legs", "ground", "march", "seconds", "norm_drift", "energy_drift", "continuity", "error",
+    "certified",
 }  # fmt: skip
 
 
@@ -79,7 +80,7 @@ def test_summary_json_has_the_names_that_were_promised_and_no_nan(finished):
     assert set(told["numerics"]) == NUMERICS
     assert set(told["numerics"]["ground"]) == {"pairs", "seconds"}
     assert set(told["numerics"]["march"]) == {"steps", "pairs", "observing_pairs", "seconds"}
-    assert set(told["numerics"]["error"]) == {"width_relative", "rate_relative", "centre_um"}
+    assert set(told["numerics"]["error"]) == {"width_relative", "rate_relative", "centre_um", "orders"}
     assert all(set(one) == {"code", "text"} for one in told["warnings"])
 
 

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from math import pi, sqrt
+from typing import Any
 
 import numpy as np
 import pytest
@@ -12,7 +13,7 @@ import trapsim
 from motion import RB, Natural
 from reference import expansion, units
 from trapsim.estimate.law import scaling_law
-from trapsim.estimate.trust import trust
+from trapsim.estimate.trust import Trust, trust
 from trapsim.estimate.validity import CARE, DOUBT, FINE, Check, validity
 from trapsim.evolve.state import Books
 from trapsim.prepare.setup import prepare
@@ -109,9 +110,35 @@ def test_what_is_doubted_is_told_and_what_is_fine_is_not() -> None:
 # ---- the numerical error -------------------------------------------------------------------------------------------
 
 
+def told_by(books: Books | None = None, **but: Any) -> Trust:
+    """What is said of a run in which nothing is wrong but what is given."""
+    fine = {"residual": 0.0, "slack": 0.0, "energy_drift": 0.0, "swing": 0.0, "resistance": 1.0, "centre_off": None}
+    return trust(books or Books(), **(fine | but))
+
+
 def test_the_error_of_a_perfect_run_is_nothing_but_its_ground_state() -> None:
-    told = trust(Books(), residual=1e-9, virial=0.0, energy_drift=0.0, swing=0.0, centre_off=0.0)
+    told = told_by(residual=1e-9, centre_off=0.0)
     assert (told.width, told.rate, told.centre) == pytest.approx((1e-9, 1.5e-9, 0.0), rel=1e-12, abs=0)
+    assert told.orders is None
+    assert told_by(residual=1e-9, lit=(1,)).orders == pytest.approx(1e-9, rel=1e-12)
+
+
+def test_each_cause_of_an_error_is_heard() -> None:
+    """Whatever is measured to be wrong makes the estimate larger, and orders hear of steps and of full spectra."""
+    full = np.array([0.0, 1e-4, 0.0])
+    for books in (Books(extrapolated=1e-4), Books(pull=1e-4), Books(spectrum=full)):
+        told = told_by(books, lit=(1,))
+        assert told.width > 5e-5 and told.orders > 5e-5
+    assert told_by(Books(edge=full)).width > 1e-6
+    # a spectrum that is full across a lattice leaves its orders alone
+    assert told_by(Books(spectrum=full), lit=(0, 2)).orders == 0
+    for cause in ("slack", "energy_drift", "swing", "kink"):
+        told = told_by(lit=(1,), **{cause: 1e-4})
+        assert told.width > 5e-5 and told.rate > told.width and told.orders == 0
+    # walls that have just opened have made rates wrong, and not yet widths
+    assert told_by(kink=1e-2, grown=0.0).width == 0 and told_by(kink=1e-2, grown=0.0).rate > 1e-2
+    assert told_by(Books(pull=1.0), resistance=1e4).width == pytest.approx(1e-4)
+    assert told_by(slack=1e-4, slowed=100.0).rate == pytest.approx(10 * told_by(slack=1e-4).rate)
 
 
 @pytest.mark.parametrize(

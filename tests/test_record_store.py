@@ -81,7 +81,7 @@ def test_what_does_not_apply_is_null_and_never_not_a_number() -> None:
     before = moment_of(kept, 0, mass=invented_run.MASS)
     assert before.flight_ms is None
     estimate = ErrorEstimate(width_relative=math.nan, rate_relative=np.float64(np.inf), centre_um=np.float64(2.0))
-    assert estimate.as_dict() == {"width_relative": None, "rate_relative": None, "centre_um": 2.0}
+    assert estimate.as_dict() == {"width_relative": None, "rate_relative": None, "centre_um": 2.0, "orders": None}
     assert type(estimate.centre_um) is float
 
 

@@ -108,6 +108,9 @@ def _parser() -> argparse.ArgumentParser:
         sub.add_argument("--threads", type=int, metavar="N", help="for the transforms")
     run.add_argument("--out", metavar="DIR", help="the result folder (default: results/<plan name>-<key>)")
     run.add_argument("--quiet", action="store_true", help="no progress, no summary")
+    run.add_argument("--certify", action="store_true",
+                     help="play it once more on a finer grid with shorter steps, and report the true differences beside "
+                     "the estimated errors; a result that is there is not computed anew")
     run.add_argument("--force", action="store_true", help="begin anew, and overwrite the result in the folder")
     show.add_argument("result", metavar="RESULT", help="a result folder")
     for sub in (run, show):
@@ -159,7 +162,8 @@ def _run(options: argparse.Namespace) -> int:
     quiet = options.quiet or options.json
     with _Stopper(talk=not options.quiet) as stopper:
         progress = Silent() if quiet else _Bar()
-        finished = run(plan, folder, progress=progress, stop=stopper.asked, force=options.force)
+        finished = run(plan, folder, progress=progress, stop=stopper.asked, force=options.force,
+                       certify=options.certify)
     if again and not options.quiet:
         print(f"{folder} already holds this plan's result\n", file=sys.stderr if options.json else sys.stdout)
     return _present(finished, options)

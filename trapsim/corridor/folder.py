@@ -25,9 +25,11 @@ from trapsim.space.space import Space
 CHECKPOINT = "checkpoint.npz"
 PLAN = "plan.json"
 SUMMARY = "summary.json"
+#: where the finer run of a certificate works until it is done
+CERTIFICATE = "certificate"
 _LOCK = ".lock"
 #: how a checkpoint is laid out
-LAYOUT = 2
+LAYOUT = 3
 _FRAME = ("b", "bdot", "X", "Xdot")
 #: what the books keep per direction
 _PER_DIRECTION = ("edge", "spectrum", "kink")
@@ -174,6 +176,29 @@ def clear(folder: Path) -> None:
             (folder / name).unlink(missing_ok=True)
         for figure in (folder / "figures").glob("*.png"):
             figure.unlink()
+    discard_certificate(folder)
+
+
+def drop_damaged_certificate(folder: Path) -> None:
+    """Take out what the finer run of a certificate has left where it cannot be taken up; the result itself is not it."""
+    path = folder / CERTIFICATE / CHECKPOINT
+    if path.exists():
+        try:
+            read_checkpoint(path)
+        except FileTrouble:
+            discard_certificate(folder)
+
+
+def discard_certificate(folder: Path) -> None:
+    """Take out what the finer run of a certificate has left."""
+    work = folder / CERTIFICATE
+    with trouble(work):
+        if work.exists():
+            for name in (RUN_FILE, "track.csv", SUMMARY, CHECKPOINT, PLAN, _LOCK):
+                (work / name).unlink(missing_ok=True)
+                (work / f"{name}.part").unlink(missing_ok=True)
+            with suppress(OSError):  # what somebody else has put there stays
+                work.rmdir()
 
 
 def save(

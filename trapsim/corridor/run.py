@@ -18,6 +18,8 @@ from typing import Any, Protocol
 from trapsim.cloud.cloud import Cloud
 from trapsim.corridor import folder as place
 from trapsim.corridor.bounds import affordable, ordinary_numbers, set_up
+from trapsim.corridor.certify import certified
+from trapsim.corridor.doubts import balance
 from trapsim.corridor.findings import Spent, ground_figures, summarise, wave_function
 from trapsim.corridor.ground import ground_state
 from trapsim.errors import FileTrouble, Interrupted, Notice, PhysicsRefused
@@ -72,6 +74,7 @@ def run(
     progress: Progress | None = None,
     stop: Callable[[], bool] = lambda: False,
     force: bool = False,
+    certify: bool = False,
 ) -> Run:
     """Play a plan: relax the cloud, march through the sequence, keep what was seen.
 
@@ -86,6 +89,10 @@ def run(
         Asked after every step; when it says True the state is saved and the run stops.
     force : bool
         Begin anew, and throw away the result that is in the folder as soon as there is a new ground state.
+    certify : bool
+        Play the plan once more on a finer space with a tighter tolerance, and put the true differences beside the
+        estimates (`summary.numerics.certified`); where that is refused, a notice says why. A result that is there
+        already is not computed anew.
 
     Returns
     -------
@@ -103,14 +110,18 @@ def run(
         When the folder cannot be read or written.
     """
     setup = set_up(plan)
+    again = partial(run, progress=progress, stop=stop)
     if out is None:
-        return _Corridor(setup, None, progress or Silent(), stop).walk()
+        done = _Corridor(setup, None, progress or Silent(), stop).walk()
+        return certified(done, again) if certify else done
     folder = Path(out)
     with place.locked(folder):
         place.claim(folder, plan, force=force)
         if not force and place.is_finished(folder, plan):
-            return _opened_again(folder, plan)
-        return _Corridor(setup, folder, progress or Silent(), stop, force=force).walk()
+            done = _opened_again(folder, plan)
+        else:
+            done = _Corridor(setup, folder, progress or Silent(), stop, force=force).walk()
+        return certified(done, again) if certify else done
 
 
 def _opened_again(folder: Path, plan: Plan) -> Run:
@@ -222,9 +233,12 @@ class _Corridor:
         seen = self.recorder.begin(cloud, setup.timeline.initial)
         if setup.legs:
             self.album.look(cloud, setup.legs[0], centre=seen.centre, stage_ends=False, fallen={})
-        figures = ground_figures(setup, relaxed, cloud, seen, self.law)
-        ground = {"figures": figures.as_dict(), "pairs": relaxed.pairs, "seconds": time.perf_counter() - began,
-                  "march_seconds": 0.0, "continuity": None}
+        balanced = balance(setup, cloud, seen)
+        figures = ground_figures(setup, relaxed, cloud, seen, self.law, balanced)
+        ground = {
+            "figures": figures.as_dict(), "slack": balanced.slack if balanced else 0.0, "pairs": relaxed.pairs,
+            "seconds": time.perf_counter() - began, "march_seconds": 0.0, "continuity": None,
+        }  # fmt: skip
         state = State(cloud, notices=self._notices())
         self._last = state
         self._save(state, ground)
@@ -309,8 +323,8 @@ class _Corridor:
             seconds=self.clock.seconds(), recorder_pairs=self.recorder.pairs,
         )  # fmt: skip
         summary = summarise(
-            setup, status=status, ground=Ground(**self.ground["figures"]), state=state, track=track, law=self.law,
-            spent=spent, continuity=self.ground["continuity"], album=self.album,
+            setup, status=status, ground=Ground(**self.ground["figures"]), slack=self.ground["slack"], state=state,
+            track=track, law=self.law, spent=spent, continuity=self.ground["continuity"], album=self.album,
             notices=(*state.notices, *extra),
         )  # fmt: skip
         # samples are borrowed from the march: after a refused step they are no longer those of the last good state

@@ -248,7 +248,8 @@ def _play(
             books = replace(
                 books.spent(spent, flight=not leg.trapped),
                 steps=books.steps + 1, rejected=books.rejected + taken.rejected, error=books.error + taken.error,
-                local=max(books.local, taken.local), edge=np.maximum(books.edge, edge),
+                extrapolated=books.extrapolated + taken.error ** (5 / 3), local=max(books.local, taken.local),
+                pull=max(books.pull, taken.local / taken.h), edge=np.maximum(books.edge, edge),
                 spectrum=np.maximum(books.spectrum, spectrum),
             )  # fmt: skip
             crowded = not leg.trapped and edge.max() > max(HELD_BACK * guards.edge, 2 * law_start.edge)

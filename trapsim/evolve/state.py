@@ -80,8 +80,12 @@ class Books:
     steps, rejected : int
     error : float
         Sum of the L2 error estimates of the steps in flight.
+    extrapolated : float
+        Sum of these estimates to the power 5/3, each about the L2 error of the step that was taken.
     local : float
         Highest L2 error of a plain step in a trap.
+    pull : float
+        Highest such error over the length of its step, rad/s: how hard what the steps get wrong pulls at the cloud.
     edge, spectrum : (3,)
         Highest populations seen near the edges of the axes and of their spectra.
     kink : (3,)
@@ -94,7 +98,9 @@ class Books:
     steps: int = 0
     rejected: int = 0
     error: float = 0.0
+    extrapolated: float = 0.0
     local: float = 0.0
+    pull: float = 0.0
     edge: Array = field(default_factory=lambda: np.zeros(3))
     spectrum: Array = field(default_factory=lambda: np.zeros(3))
     kink: Array = field(default_factory=lambda: np.zeros(3))

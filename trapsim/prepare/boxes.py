@@ -52,7 +52,7 @@ def box_lengths(lengths: Lengths, box: Box, q: float, accuracy: Accuracy, free: 
     for j in np.nonzero(free)[0]:
         wall = box.size[j] / 2
         # when it is let go, its rim runs off at twice the speed of sound before the frame has gathered speed
-        half[j] = max(wall + 1.2 * box.edge + accuracy.tail * decay, HEAD_START * wall)
+        half[j] = max(wall + 1.2 * box.edge + accuracy.tail * decay, accuracy.wider * HEAD_START * wall)
         finest[j] = min(finest[j], min(FOOT, COARSEST_FOOT / accuracy.spacing) * min(foot, healing), box.size[j] / 8)
     return replace(lengths, half=half, finest=finest, mu=mu)
 

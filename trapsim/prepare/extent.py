@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 from scipy import fft, optimize
@@ -39,6 +39,9 @@ class Accuracy:
         Of the ground state.
     edge, spectrum, norm : float
         Where the guards stop.
+    finer, wider : float
+        How many times as many points per length, whatever else asks for them, and how many times as much room where the
+        plan or a box says how much.
     """
 
     spacing: float
@@ -51,6 +54,16 @@ class Accuracy:
     edge: float
     spectrum: float
     norm: float
+    finer: float = 1.0
+    wider: float = 1.0
+
+    def outdone(self) -> Accuracy:
+        """What shows the errors of this one: more points, more room, shorter steps, a better ground state."""
+        return replace(
+            self, tolerance=self.tolerance / 10, cap=self.cap / 2, tail=self.tail + 2, room=self.room + 1.5,
+            inner=self.inner + 1, residual=self.residual / 10, edge=self.edge / 10, spectrum=self.spectrum / 2,
+            norm=self.norm / 2, finer=1.4 * self.finer, wider=1.2 * self.wider,
+        )  # fmt: skip
 
 
 #: spacings of the axis that takes over when such a wall opens, per spacing between the walls
@@ -63,6 +76,14 @@ ACCURACY = {
     "normal": Accuracy(1.4, 1e-4, 2.4, 5.5, 5.0, 1.5, 1e-7, 1e-4, 1e-4, 1e-3),
     "fine": Accuracy(1.0, 1e-5, 0.8, 7.0, 6.0, 4.0, 1e-9, 2e-6, 5e-5, 1e-4),
 }
+
+
+def finer_than(word: str) -> str:
+    """What the accuracy is called that shows the errors of another; no plan can ask for it."""
+    return f"finer than {word}"
+
+
+ACCURACY |= {finer_than(word): accuracy.outdone() for word, accuracy in ACCURACY.items()}
 
 
 @dataclass(frozen=True)
@@ -189,25 +210,27 @@ def choose_space(
     axes: list[Axis] = []
     pair = tuple(j for j in range(3) if words[j] == "radial")
     groups = ([pair] if pair else []) + [(j,) for j in range(3) if words[j] != "radial"]
+    finer = accuracy.finer
+    wider = np.where(lengths.periodic, 1.0, accuracy.wider)
     for group in groups:
-        half = max(extent[j] / 2 if extent[j] else lengths.half[j] for j in group)
-        spacing = min(min(accuracy.spacing * lengths.finest[j], lengths.spacing[j]) for j in group)
-        asked = max(points[j] for j in group)
+        half = max(wider[j] * extent[j] / 2 if extent[j] else lengths.half[j] for j in group)
+        spacing = min(min(accuracy.spacing * lengths.finest[j], lengths.spacing[j]) / finer for j in group)
+        j = group[0]
+        asked = _more(max(points[j] for j in group), finer * (wider[j] if extent[j] else 1.0))
         if group == pair:
-            n = asked or max(8, int(np.ceil(half / spacing)) + 2)
+            n = asked or int(np.ceil(max(8 * finer, half / spacing + 2 * finer)))
             axes.append(Radial(group, _bounded(n, half / n, group, words, lengths), half))
-        elif lengths.walls[group[0]]:
-            axes.append(_around_walls(
-                group[0], half, spacing, lengths, asked, words=words
-            ))
-        elif lengths.period[group[0]]:
+        elif lengths.walls[j]:
+            asked = _more(points[j], finer)
+            axes.append(_around_walls(j, half, spacing, lengths, asked, finer, words=words))
+        elif lengths.period[j]:
             axes.append(_commensurate(
-                group[0], half, spacing, lengths, asked, fixed=bool(extent[group[0]]), words=words
+                j, half, spacing, lengths, points[j], finer, fixed=bool(extent[j]), words=words
             ))
         elif np.isinf(spacing):
             axes.append(Wave(group, asked or 1, half))
         else:
-            n = asked or _fast_even(_bounded(max(12, 2 * half / spacing), spacing, group, words, lengths))
+            n = asked or _fast_even(_bounded(max(12 * finer, 2 * half / spacing), spacing, group, words, lengths))
             axes.append(Wave(group, _bounded(n, spacing, group, words, lengths), half))
     axes = [_mirrored(a) if words[a.covers[0]] == "mirror" else a for a in axes]
     return Space(axes, threads=threads)
@@ -233,13 +256,18 @@ def _bounded(n: float, spacing: float, group: Sequence[int], words: Sequence[str
     )  # fmt: skip
 
 
+def _more(points: int, times: float) -> int:
+    """So many times the points that a plan asks for."""
+    return points if points <= 1 or times == 1 else _fast_even(times * points)
+
+
 def _mirrored(axis: Axis) -> Axis:
     """Half of a wave axis; an odd number of points is made even."""
     return Mirror(axis.covers, (axis.n + 1) // 2, axis.half_extent)
 
 
 def _around_walls(
-    j: int, half: float, spacing: float, lengths: Lengths, asked: int, *, words: Sequence[str]
+    j: int, half: float, spacing: float, lengths: Lengths, asked: int, finer: float, *, words: Sequence[str]
 ) -> Axis:
     """The axis between perfectly reflecting walls, or that which takes over when they are opened.
 
@@ -247,8 +275,8 @@ def _around_walls(
     """
     wall = lengths.walls[j]
     if lengths.period[j]:
-        spacing = min(spacing, lengths.period[j] / (UNMATCHED * lengths.per_period[j]))
-    across = max(12, 2 * wall / spacing)
+        spacing = min(spacing, lengths.period[j] / (UNMATCHED * lengths.per_period[j] * finer))
+    across = max(12 * finer, 2 * wall / spacing)
     n = asked or fft.next_fast_len(int(np.ceil(_bounded(across, spacing, (j,), words, lengths))))
     if words[j] == Wall.kind:
         return Wall((j,), n, wall)
@@ -258,7 +286,7 @@ def _around_walls(
 
 
 def _commensurate(
-    j: int, half: float, spacing: float, lengths: Lengths, asked: int, *, fixed: bool, words: Sequence[str]
+    j: int, half: float, spacing: float, lengths: Lengths, asked: int, finer: float, *, fixed: bool, words: Sequence[str]
 ) -> Wave:
     """A wave axis with a whole number of points per lattice period, and a whole number of periods.
 
@@ -267,16 +295,21 @@ def _commensurate(
     period, place = lengths.period[j], f"numerics.extent[{j}]"
     periods = 2 * half / period
     if fixed:
-        if abs(periods - round(periods)) > 1e-6 or round(periods) < 1:
+        if finer == 1 and (abs(periods - round(periods)) > 1e-6 or round(periods) < 1):
             raise PlanError.at(
                 place, human(2 * half, "length"), f"a whole number of lattice periods of {human(period, 'length')}",
                 f"write {human(max(round(periods), 1) * period, 'length', figures=9)}",
             )  # fmt: skip
         periods = round(periods)
-    per = max(int(lengths.per_period[j]), int(np.ceil(period / spacing)) if np.isfinite(spacing) else 1)
+    per = max(
+        int(np.ceil(finer * lengths.per_period[j])), int(np.ceil(period / spacing)) if np.isfinite(spacing) else 1
+    )
     _bounded(asked or np.ceil(periods) * per, period / per, (j,), words, lengths)
     per = fft.next_fast_len(per)  # a large prime would spoil every number of periods
-    if asked:
+    if asked and finer > 1:
+        # there may be more periods now than the plan had points for
+        per = fft.next_fast_len(int(np.ceil(finer**2 * asked / round(periods))))
+    elif asked:
         per = asked / (periods if fixed else round(asked * 2 * half / (asked * period)))
         if per != int(per):
             raise PlanError.at(
@@ -284,7 +317,9 @@ def _commensurate(
                 f"write a multiple of the number of periods, {round(periods)}",
             )  # fmt: skip
         per = int(per)
-    if not fixed:
+    if asked and finer == 1:
+        periods = round(periods)
+    elif not fixed:
         # a number of periods that makes the number of points transform well
         periods = next(m for m in range(int(np.ceil(periods)), 10**7) if _fast(m * per))
     return Wave((j,), int(periods * per), periods * period / 2)

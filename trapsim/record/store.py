@@ -35,7 +35,7 @@ from trapsim.record.summary import Summary
 
 __all__ = [
     "RUN_FILE", "Contents", "read_checkpoint", "read_run", "write_atomic", "write_checkpoint", "write_results",
-    "write_run",
+    "write_run", "write_summary",
 ]  # fmt: skip
 RUN_FILE = "run.h5"
 LAYOUT = 1
@@ -107,6 +107,24 @@ def write_run(folder: str | Path, contents: Contents) -> Path:
     return path
 
 
+def write_summary(folder: str | Path, summary: Summary) -> None:
+    """Put other figures into a result folder, into run.h5 and summary.json; all else in them stays as it is.
+
+    Raises
+    ------
+    FileTrouble
+        When the result cannot be read, or the new one not be written; what was there before stays.
+    """
+    path = Path(folder) / RUN_FILE
+    with reading(path, "a finished run's folder is needed here; run the plan again to make it"):
+        memory = io.BytesIO(path.read_bytes())
+        with h5py.File(memory, "r+") as file:
+            del file["summary"], file["notices"]
+            _put_summary(file, summary)
+    write_atomic(path, memory.getbuffer())
+    write_atomic(path.with_name("summary.json"), summary.as_json().encode())
+
+
 def read_run(folder: str | Path) -> Contents:
     """Read back what `write_run` wrote.
 
@@ -157,7 +175,7 @@ def _fill(file: h5py.File, contents: Contents) -> None:
     summary = contents.summary
     file.attrs.update(layout=LAYOUT, title=summary.title, status=summary.status, version=summary.version)
     file.attrs.update(key=summary.key, march_key=summary.march_key)
-    _Group(file).put("summary", summary.as_json(), (), "text", "all figures of the run, as JSON, units in the names")
+    _put_summary(file, summary)
     plan = _Group(file.create_group("plan"))
     plan.put("text", contents.plan_text, (), "text", "the plan as it was given, TOML")
     plan.put("resolved", json.dumps(contents.plan), (), "text", "the plan as it was understood, JSON, SI units")
@@ -177,6 +195,10 @@ def _fill(file: h5py.File, contents: Contents) -> None:
         put_momentum(_Group(_ordered(file, "momentum").create_group(f"{seen.stage}_{seen.part}")), seen)
     for view, plane in contents.flow.items():
         put_flow(_Group(_ordered(file, "flow").create_group(view)), plane)
+
+
+def _put_summary(file: h5py.File, summary: Summary) -> None:
+    _Group(file).put("summary", summary.as_json(), (), "text", "all figures of the run, as JSON, units in the names")
     notices = _Group(file.create_group("notices"))
     notices.scale("notice", np.arange(len(summary.warnings)), "1", "number of the notice")
     notices.put("code", [one.code for one in summary.warnings], ("notice",), "text", "the notice in one word")

@@ -9,46 +9,38 @@ width; `expansion_energy` is m (velocity spread)^2 / k_B of each direction, the 
 from __future__ import annotations
 
 import json
-import math
 from collections.abc import Mapping
-from dataclasses import asdict, dataclass, field, fields, is_dataclass
+from dataclasses import dataclass, field
 from pathlib import Path
-from typing import Any, ClassVar, get_args, get_type_hints
+from typing import Any
 
 import numpy as np
 
 from trapsim.constants import K_B
 from trapsim.errors import FileTrouble, Notice
+from trapsim.record.numerics import (
+    Certificate,
+    Difference,
+    Effort,
+    ErrorEstimate,
+    LegSpace,
+    MarchEffort,
+    Numerics,
+    Overestimate,
+    SpaceFigures,
+)
+from trapsim.record.plain import Number, Record, Triple, built
 from trapsim.record.series import ColumnSeries, Track, WaveFunction, track_csv
 
-Number = float | None
-Triple = tuple[Number, Number, Number]
-
 __all__ = [
-    "ColumnSeries", "Effort", "ErrorEstimate", "Ground", "Law", "LegSpace", "MarchEffort", "Moment", "Notice",
-    "Numerics", "PictureFigures", "Run", "StageEnd", "Summary", "Track", "WaveFunction", "moment_of", "track_csv",
+    "Certificate", "ColumnSeries", "Difference", "Effort", "ErrorEstimate", "Ground", "Law", "LegSpace", "MarchEffort",
+    "Moment", "Notice", "Numerics", "Overestimate", "PictureFigures", "Run", "SpaceFigures", "StageEnd", "Summary",
+    "Track", "WaveFunction", "moment_of", "track_csv",
 ]  # fmt: skip
 
 
 @dataclass(frozen=True)
-class _Record:
-    """Plain values only: arrays become tuples, numpy numbers Python's, and what is not finite becomes None."""
-
-    #: Properties that are written beside the fields.
-    derived: ClassVar[tuple[str, ...]] = ()
-
-    def __post_init__(self) -> None:
-        for one in fields(self):
-            object.__setattr__(self, one.name, _tidy(getattr(self, one.name)))
-
-    def as_dict(self) -> dict[str, Any]:
-        """The record as JSON knows it: objects, lists, numbers, words, null."""
-        names = [*(one.name for one in fields(self)), *self.derived]
-        return {name: _plain(getattr(self, name)) for name in names}
-
-
-@dataclass(frozen=True)
-class Law(_Record):
+class Law(Record):
     """What the instant model says for the same moment; `model` names it."""
 
     model: str
@@ -57,7 +49,7 @@ class Law(_Record):
 
 
 @dataclass(frozen=True)
-class Moment(_Record):
+class Moment(Record):
     """The cloud at one moment; `flight_ms` counts from the start of the last release."""
 
     derived = ("aspect_ratio",)
@@ -86,7 +78,7 @@ class Moment(_Record):
 
 
 @dataclass(frozen=True)
-class Ground(_Record):
+class Ground(Record):
     """The cloud at rest in its trap; `origin_um` is the lab position that all reported positions count from."""
 
     origin_um: Triple
@@ -105,7 +97,7 @@ class Ground(_Record):
 
 
 @dataclass(frozen=True)
-class StageEnd(_Record):
+class StageEnd(Record):
     """One step of the sequence and the cloud at its end; `end` is None when the run stopped earlier."""
 
     name: str
@@ -116,45 +108,7 @@ class StageEnd(_Record):
 
 
 @dataclass(frozen=True)
-class ErrorEstimate(_Record):
-    """How wrong the numerics may be, from the step estimates and the guards: one sigma, not a bound."""
-    width_relative: Number = None
-    rate_relative: Number = None
-    centre_um: Number = None
-
-
-@dataclass(frozen=True)
-class LegSpace(_Record):
-    """The grid of one stretch of the march: axis kind and number of points per lab direction, and why so."""
-
-    name: str
-    start_ms: float
-    stop_ms: float
-    axes: tuple[str, str, str]
-    points: tuple[int, int, int]
-    reason: str = ""
-
-
-@dataclass(frozen=True)
-class Effort(_Record):
-    """What finding the ground state cost: transform pairs and seconds."""
-
-    pairs: Number
-    seconds: Number
-
-
-@dataclass(frozen=True)
-class MarchEffort(_Record):
-    """What the march cost: steps, the transform pairs of the steps and of looking at the cloud, seconds of both."""
-
-    steps: int
-    pairs: Number
-    observing_pairs: Number
-    seconds: Number
-
-
-@dataclass(frozen=True)
-class PictureFigures(_Record):
+class PictureFigures(Record):
     """What a picture shows; widths and centre are to the right and upwards, at the atoms, and null where none is."""
 
     name: str
@@ -168,23 +122,7 @@ class PictureFigures(_Record):
 
 
 @dataclass(frozen=True)
-class Numerics(_Record):
-    """How it was computed, what that cost and how far it can be trusted; axes and points per lab direction."""
-
-    axes: tuple[str, str, str]
-    points: tuple[int, int, int]
-    legs: tuple[LegSpace, ...]
-    ground: Effort
-    march: MarchEffort | None
-    seconds: Number
-    norm_drift: Number = None
-    energy_drift: Number = None
-    continuity: Number = None
-    error: ErrorEstimate = field(default_factory=ErrorEstimate)
-
-
-@dataclass(frozen=True)
-class Summary(_Record):
+class Summary(Record):
     """All figures of a run; `end` is None for a plan without a sequence."""
 
     title: str
@@ -213,7 +151,7 @@ class Summary(_Record):
             When entries are missing or are not what they should be.
         """
         try:
-            return _built(cls, raw)
+            return built(cls, raw)
         except (TypeError, KeyError, AttributeError, ValueError) as error:
             raise FileTrouble.at(
                 place, str(error), "a summary written by trapsim is needed here", "run the plan again with --force"
@@ -309,42 +247,3 @@ def moment_of(
         orders=orders,
         law=law,
     )
-
-
-def _tidy(value: Any) -> Any:
-    if isinstance(value, np.ndarray | np.generic):
-        value = value.tolist()
-    if isinstance(value, float) and not math.isfinite(value):
-        return None
-    if isinstance(value, list | tuple):
-        return tuple(_tidy(one) for one in value)
-    return value
-
-
-def _plain(value: Any) -> Any:
-    if isinstance(value, _Record):
-        return value.as_dict()
-    if is_dataclass(value) and not isinstance(value, type):
-        return asdict(value)
-    if isinstance(value, tuple):
-        return [_plain(one) for one in value]
-    return value
-
-
-def _built(cls: type, raw: Mapping[str, Any]) -> Any:
-    hints = get_type_hints(cls)
-    given = {one.name: _read(hints[one.name], raw[one.name]) for one in fields(cls) if one.name in raw}
-    return cls(**given)
-
-
-def _read(hint: Any, raw: Any) -> Any:
-    if isinstance(raw, list):
-        return tuple(_read(hint, one) for one in raw)
-    inner = _record_in(hint)
-    return _built(inner, raw) if inner and raw is not None else raw
-
-
-def _record_in(hint: Any) -> type | None:
-    if is_dataclass(hint):
-        return hint
-    return next((found for one in get_args(hint) if (found := _record_in(one))), None)

@@ -74,7 +74,9 @@ def page_html(kept: Run | Contents, figures: Mapping[str, bytes] | None = None) 
         _figures(figures),
         section("The cloud at the end of each step", tables.stage_ends_table(summary)),
         section("The cloud at rest", tables.ground_table(summary.ground)),
-        section("Can it be trusted?", tables.validity_table(summary)),
+        section(
+            "Can it be trusted?", tables.validity_table(summary), tables.certificate_table(summary.numerics)
+        ),
         section("How it was computed", tables.numerics_table(summary.numerics)),
         section("Conventions", paragraph(CONVENTIONS)),
         _plan(kept),

@@ -7,9 +7,10 @@ from collections.abc import Mapping, Sequence
 
 from trapsim.constants import BOHR_RADIUS
 from trapsim.record.summary import Ground, Moment, Numerics, PictureFigures, Summary
-from trapsim.show.markup import Cell, Html, numbers, pretty, table
+from trapsim.show.certificate import HEAD, compared, steps_of, verdict
+from trapsim.show.markup import Cell, Html, numbers, paragraph, pretty, table
 from trapsim.show.numbers import brief, figures, four, percentage
-from trapsim.show.text import grid_words, law_beside, small, with_errors
+from trapsim.show.text import grid_words, law_beside, rates_with_errors, small, with_errors
 from trapsim.show.wording import Raw, parts_in_words, what_changes, words
 
 #: Orders with less than this share of the atoms have no row.
@@ -27,15 +28,14 @@ def end_table(summary: Summary) -> Html | None:
     rows: list[list[Cell]] = []
     quiet = []
     measured = (
-        ("half-width (µm)", "width_um", error.width_relative),
-        ("expansion rate (mm/s)", "expansion_rate_mm_per_s", error.rate_relative),
+        ("half-width (µm)", "width_um", with_errors(end.width_um, relative=error.width_relative)),
+        ("expansion rate (mm/s)", "expansion_rate_mm_per_s", rates_with_errors(end, error.rate_relative)),
     )
-    for name, field, relative in measured:
-        values = getattr(end, field)
-        rows.append([name, *numbers(with_errors(values, relative=relative))])
+    for name, field, cells in measured:
+        rows.append([name, *numbers(cells)])
         if end.law is not None:
             quiet.append(len(rows))
-            rows.append([end.law.model, *numbers(law_beside(end.law, field, values))])
+            rows.append([end.law.model, *numbers(law_beside(end.law, field, getattr(end, field)))])
     rows += [
         ["centre (µm)", *numbers(with_errors(end.centre_um, absolute=error.centre_um))],
         ["velocity (mm/s)", *numbers([small(v) for v in end.velocity_mm_per_s])],
@@ -172,13 +172,27 @@ def validity_table(summary: Summary) -> Html:
         ("drift of the energy", numerics.energy_drift, "while nothing changes, share of it; exact: 0"),
         ("continuity", numerics.continuity, "flow against change of density; exact: 0"),
         ("error of the widths", error.width_relative, "estimated, relative"),
-        ("error of the rates", error.rate_relative, "estimated, relative"),
+        ("error of the rates", error.rate_relative, "estimated, share of the velocity spread"),
         ("error of the centre", error.centre_um, "µm, against the classical path"),
+        ("error of the orders", error.orders, "estimated, share of the atoms"),
     )
     rows += [[name, _small_number(value), about] for name, value, about in measures if value is not None]
     if numerics.march is not None and error.width_relative is None:
         rows.append(["error of the widths", "–", "not estimated"])
     return table((), rows, kind="facts three")
+
+
+def certificate_table(numerics: Numerics) -> Html | None:
+    """The errors that a finer run has found, beside their estimates; None without one."""
+    certified = numerics.certified
+    if certified is None:
+        return None
+    rows = [[row.name, *numbers(row.cells())] for row in compared(numerics)]
+    grid = f"The same once more on a finer grid, {grid_words(certified.space)}, with {steps_of(certified)}."
+    words = [paragraph(grid), table(("", *HEAD), rows, kind="numbers")]
+    if told := verdict(certified):
+        words.append(paragraph(told))
+    return Html("".join(one.text for one in words))
 
 
 def _small_number(value: float) -> Cell:

@@ -5,7 +5,18 @@ from __future__ import annotations
 from collections.abc import Iterable, Mapping, Sequence
 from textwrap import wrap
 
-from trapsim.record.summary import Ground, Law, LegSpace, Moment, Numerics, PictureFigures, StageEnd, Summary
+from trapsim.record.summary import (
+    Ground,
+    Law,
+    LegSpace,
+    Moment,
+    Numerics,
+    PictureFigures,
+    SpaceFigures,
+    StageEnd,
+    Summary,
+)
+from trapsim.show.certificate import HEAD, compared, steps_of, verdict
 from trapsim.show.numbers import MISSING, brief, figures, four, percent, percentage, with_error
 
 SAFETY = (
@@ -53,7 +64,7 @@ def summary_text(summary: Summary) -> str:
         lines += ["", *_end(summary)]
     if summary.pictures:
         lines += ["", *_pictures(summary.pictures)]
-    lines += ["", *_numerics(summary.numerics)]
+    lines += ["", *_numerics(summary.numerics), *_certificate(summary.numerics)]
     if summary.warnings:
         lines += ["", "Warnings"]
         for notice in summary.warnings:
@@ -127,7 +138,7 @@ def _end(summary: Summary) -> list[str]:
         _row("", ["along x", "along y", "along z"]),
         _row("half-width (um)", with_errors(end.width_um, relative=error.width_relative)),
         *_beside(end.law, "width_um", end.width_um),
-        _row("expansion rate (mm/s)", with_errors(end.expansion_rate_mm_per_s, relative=error.rate_relative)),
+        _row("expansion rate (mm/s)", rates_with_errors(end, error.rate_relative)),
         *_beside(end.law, "expansion_rate_mm_per_s", end.expansion_rate_mm_per_s),
         _row("centre (um)", with_errors(end.centre_um, absolute=error.centre_um)),
         _row("velocity (mm/s)", [small(one) for one in end.velocity_mm_per_s]),
@@ -164,6 +175,15 @@ def with_errors(
         nothing = value is not None and abs(value) < _NOTHING and (error or 0.0) < _NOTHING
         cells.append("0" if nothing else with_error(value, error))
     return cells
+
+
+def rates_with_errors(end: Moment, share: float | None) -> list[str]:
+    """Expansion rates with their errors, which are shares of the velocity spread."""
+    scales = zip(end.expansion_rate_mm_per_s, end.velocity_spread_mm_per_s, strict=True)
+    return [
+        with_errors([rate], absolute=None if share is None or spread is None else share * spread)[0]
+        for rate, spread in scales
+    ]
 
 
 def _beside(law: Law | None, name: str, full: Sequence[float | None]) -> list[str]:
@@ -228,8 +248,8 @@ def _numerics(numerics: Numerics) -> list[str]:
     books = (
         ("norm drift", numerics.norm_drift), ("energy drift", numerics.energy_drift),
         ("continuity residual", numerics.continuity),
-        ("relative error of widths", error.width_relative), ("relative error of rates", error.rate_relative),
-        ("error of the centre (um)", error.centre_um),
+        ("relative error of widths", error.width_relative), ("error of rates over spread", error.rate_relative),
+        ("error of the centre (um)", error.centre_um), ("error of orders", error.orders),
     )  # fmt: skip
     lines += [_row(name, [figures(value, 2)]) for name, value in books if value is not None]
     if march is not None and error.width_relative is None:
@@ -237,7 +257,22 @@ def _numerics(numerics: Numerics) -> list[str]:
     return lines
 
 
-def grid_words(space: Numerics | LegSpace) -> str:
+def _certificate(numerics: Numerics) -> list[str]:
+    """The errors that a finer run has found, beside their estimates."""
+    certified = numerics.certified
+    if certified is None:
+        return []
+    lines = ["", "Certified: the same once more on a finer grid with shorter steps"]
+    lines.append(_row("its axes and points", [grid_words(certified.space)]))
+    lines.append(_row("its steps", [f"{steps_of(certified)}, {_seconds(certified.seconds)}"]))
+    lines.append(_row("", HEAD))
+    lines += [_row(row.name, row.cells()) for row in compared(numerics)]
+    if told := verdict(certified):
+        lines += wrap(told, _LINE, initial_indent="  ! ", subsequent_indent="    ")
+    return lines
+
+
+def grid_words(space: Numerics | LegSpace | SpaceFigures) -> str:
     return ", ".join(f"{d} {kind} {n}" for d, kind, n in zip("xyz", space.axes, space.points, strict=True))
 
 
