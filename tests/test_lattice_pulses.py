@@ -19,6 +19,8 @@ import motion
 import trapsim
 from light import RECOIL
 from reference import planewaves, units
+from trapsim.prepare.cost import predict
+from trapsim.prepare.setup import prepare
 from trapsim.terms.lattice import Lattice
 
 Solved = Callable[[trapsim.Plan], trapsim.Run]
@@ -161,6 +163,17 @@ def test_the_narrow_cloud_is_as_narrow_as_it_is_said_to_be(solved: Solved) -> No
 
 
 @pytest.mark.slow
+def test_light_that_rushes_past_is_said_to_cost() -> None:
+    """Two samples a period of what passes is the least there can be (the sampling theorem), three pairs a step."""
+    pairs = {}
+    for megahertz in (0, 10, 20):
+        flash = light.pulse(0.3, detuning=megahertz * 1e6 / RECOIL.hertz)
+        pairs[megahertz] = predict(prepare(released(flash, s=2.0, accuracy="draft"))).pairs
+    periods = 1e7 * 0.3 * RECOIL.time
+    assert pairs[10] - pairs[0] > 3 * 2 * periods - pairs[0] > 0
+    assert pairs[20] - pairs[10] == pytest.approx(pairs[10], rel=0.5)
+
+
 def test_a_flash_on_a_falling_expanding_kicked_cloud_is_the_same_on_a_grid_that_stands(solved: Solved) -> None:
     stages = (
         motion.stage("kick", velocity='["0.7 mm/s", "0 mm/s", "0 mm/s"]'), motion.stage("release", 1e-3),

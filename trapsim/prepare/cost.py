@@ -8,8 +8,10 @@ from dataclasses import dataclass
 import numpy as np
 
 from trapsim.evolve.march import PROFILE_PAIRS
+from trapsim.evolve.splitstep import SAMPLED
+from trapsim.evolve.state import Leg
 from trapsim.prepare.setup import Setup, memory_needed
-from trapsim.space.space import Space
+from trapsim.space.space import Array, Space
 
 #: a step's pointwise work, in units of a bare transform pair
 OVERHEAD = 2.5
@@ -42,21 +44,28 @@ def predict(setup: Setup) -> Cost:
     pairs = GROUND_PAIRS
     seconds = GROUND_PAIRS * timed[id(setup.space)] * OVERHEAD
     elapsed = 0.0
-    for leg in setup.legs:
+    for leg, place in zip(setup.legs, setup.timeline.path, strict=True):
         length = leg.stop - leg.start
-        if leg.trapped:
+        if leg.trapped and not leg.brief:
             steps = length * _trapped_rate(setup, leg.space) / setup.pace.cap
             spent = steps * (1 + PROFILE_PAIRS / 4)
         else:
             # found by counting: the steps of a flight grow with its length, so that their number goes as a logarithm
             tight = float(setup.omega.max()) if setup.omega.any() else 1.0
             steps = 10 * (1e-4 / setup.pace.tolerance) ** 0.3 * np.log1p(tight * (length + elapsed))
+            steps = max(steps, length * _passing(leg, np.abs(place[3:])) / SAMPLED)
             spent = steps * (3 + PROFILE_PAIRS)
             elapsed += length
         pairs += spent
         seconds += spent * timed[id(leg.space)] * OVERHEAD
     memory = memory_needed(max(g.space.size for g in (setup, *setup.legs)))
     return Cost(float(pairs), memory, float(seconds))
+
+
+def _passing(leg: Leg, speed: Array) -> float:
+    """How fast (rad/s) light goes past a cloud of that speed (3,), in m/s: every step samples it."""
+    parts = leg.interval.parts_at(0.5 * (leg.start + leg.stop))
+    return max((p.rate(speed) for p in parts if not p.quadratic), default=0.0)
 
 
 def _trapped_rate(setup: Setup, space: Space) -> float:
