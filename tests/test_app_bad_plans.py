@@ -265,6 +265,7 @@ def asked_outside(argv: Sequence[str], folder: Path, **environment: str) -> Answ
     return Answer(done.returncode, done.stdout, done.stderr)
 
 
+@pytest.mark.slow
 def test_a_process_of_its_own_answers_alike(tmp_path):
     (tmp_path / "plan.toml").write_text(GOOD.replace('"60 Hz"', '"60 um"'))
     before = everything(tmp_path)

@@ -99,6 +99,7 @@ def test_run_writes_a_folder_named_after_plan_and_key(ask, tmp_path):
     assert "already" not in out
 
 
+@pytest.mark.slow
 def test_json_is_one_document_on_standard_output(ask, tmp_path):
     code, out, err = ask("run", "push.toml", "--json", "--out", "r")
     told = json.loads(out)
@@ -134,6 +135,7 @@ def test_running_a_finished_plan_again_says_so_and_computes_nothing(ask, tmp_pat
     assert ask("run", "push.toml", "--no-figures", "--out", "r", "--force")[0] == 1  # the trap works
 
 
+@pytest.mark.slow
 def test_force_computes_anew_and_clears_what_was_there(ask, tmp_path):
     assert ask("run", "push.toml", "--quiet", "--out", "r")[0] == 0
     (tmp_path / "r" / "notes.txt").write_text("mine")
@@ -151,6 +153,7 @@ def test_set_changes_the_run_and_its_folder(ask, tmp_path):
     assert len({one["key"] for one in told}) == 2
 
 
+@pytest.mark.slow
 def test_a_plan_without_a_sequence_stops_after_the_ground_state(ask, tmp_path):
     (tmp_path / "still.toml").write_text(GOOD.partition("[[sequence]]")[0] + '[numerics]\naccuracy = "draft"\n')
     assert ask("run", "still.toml", "--out", "r", "--quiet")[0] == 0
@@ -197,6 +200,7 @@ def test_figures_that_do_not_apply_are_null(ask, tmp_path):
 # show
 
 
+@pytest.mark.slow
 def test_show_tells_a_result_from_its_folder_alone(ask, tmp_path):
     assert ask("run", "push.toml", "--out", "r", "--quiet", "--no-figures")[0] == 0
     (tmp_path / "copy").mkdir()

@@ -140,6 +140,7 @@ def test_signals_save_and_the_same_command_goes_on(undisturbed, tmp_path):
     agree(undisturbed, tmp_path / "r")
 
 
+@pytest.mark.slow
 def test_a_terminal_sees_a_bar_with_the_stage_and_the_time_left(tmp_path):
     (tmp_path / "push.toml").write_text(GOOD)
     ours, theirs = pty.openpty()

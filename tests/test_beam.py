@@ -84,6 +84,7 @@ def crossed(*stages: str, **more: object) -> trapsim.Plan:
     return light.plain(*stages, parts=CROSSED, rest=GRAVITY, **more)
 
 
+@pytest.mark.slow
 def test_a_sloshing_cloud_in_crossed_beams_keeps_its_energy(solved: Solved) -> None:
     push = '["0 mm/s", "2 mm/s", "6 mm/s"]'
     setup = crossed(motion.stage("kick", velocity=push), motion.stage("hold", 8e-3))

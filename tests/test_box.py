@@ -79,6 +79,7 @@ def test_the_plain_run_keeps_its_energy() -> None:
     assert after == pytest.approx(before, rel=1e-5, abs=0)
 
 
+@pytest.mark.slow
 @pytest.mark.parametrize("accuracy", ["draft", "normal", "fine"])
 @pytest.mark.parametrize("shape", ["cuboid", "cylinder"])
 def test_a_cloud_in_a_soft_box_and_after_it_is_let_go(solved: Solved, shape: str, accuracy: str) -> None:
@@ -123,6 +124,7 @@ def energy(track: Track, i: int) -> float:
     return own + track["centre_kinetic"][i] + there
 
 
+@pytest.mark.slow
 def test_a_cloud_pushed_against_its_walls_keeps_its_energy(solved: Solved) -> None:
     push = '["0.3 mm/s", "0 mm/s", "0 mm/s"]'
     run = solved(plan("cuboid", motion.stage("kick", velocity=push), motion.stage("hold", 18e-3)))
@@ -207,6 +209,7 @@ def test_a_faint_trap_in_a_box_adds_its_mean_energy(solved: Solved) -> None:
     assert added > 1e-3 * alone.energy_hz
 
 
+@pytest.mark.slow
 def test_a_run_that_is_good_for_nothing_says_so(solved: Solved) -> None:
     """An edge of 10 nm on a grid of half a micrometre; a run whose error is small says nothing."""
     codes = {}

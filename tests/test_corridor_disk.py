@@ -68,6 +68,7 @@ def test_a_disk_full_at_the_end_costs_nothing(run_here, tmp_path, monkeypatch):
     agree(tmp_path / "whole", tmp_path / "r")
 
 
+@pytest.mark.slow
 def test_a_full_disk_leaves_the_old_result_as_it_was(run_here, tmp_path, monkeypatch, capsys):
     assert run_here()[0] == 0
     before = {p: p.read_bytes() for p in (tmp_path / "r").rglob("*") if p.is_file()}

@@ -141,6 +141,7 @@ def test_each_cause_of_an_error_is_heard() -> None:
     assert told_by(slack=1e-4, slowed=100.0).rate == pytest.approx(10 * told_by(slack=1e-4).rate)
 
 
+@pytest.mark.slow
 @pytest.mark.parametrize(
     ("frequency", "to", "a"),
     [

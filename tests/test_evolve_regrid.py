@@ -46,6 +46,7 @@ def test_a_gaussian_outgrows_its_grid_and_spreads_as_it_should() -> None:
     assert run.summary.numerics.norm_drift < 1e-5
 
 
+@pytest.mark.slow
 def test_a_cloud_that_falls_on_a_standing_grid_takes_up_room_and_points() -> None:
     """It falls by g t^2/2 and gains k = m g t/hbar, which is beyond what its first grid holds."""
     t = 2e-3
@@ -111,6 +112,7 @@ def test_more_room_or_more_points_leave_a_function_as_it_is(axis) -> None:
     assert space.grown(np.ones(3), np.ones(3)) is space
 
 
+@pytest.mark.slow
 def test_a_lattice_keeps_a_whole_number_of_points_per_period() -> None:
     """A cloud let run against a lattice that holds it: the grid grows, and its spacing still divides the period."""
     light = '[trap.light]\nkind = "lattice"\nwavelength = "1064 nm"\ndepth = "8 Er"\n'

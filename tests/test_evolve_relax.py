@@ -184,6 +184,7 @@ def test_radial_and_full_agree_to_a_hundred_millionth_at_a_spacing_of_one_healin
 # attraction
 
 
+@pytest.mark.slow
 @pytest.mark.parametrize("method", ["conjugate gradient", "imaginary time"])
 @pytest.mark.parametrize("row", [r for r in tables.ATTRACTIVE if r.na < 0.56], ids=lambda r: f"{r.na:g}")
 def test_both_methods_hold_an_attractive_cloud(row: tables.Attractive, method: str) -> None:

@@ -127,6 +127,7 @@ def test_a_plain_step_in_a_trap_stays_under_the_cap() -> None:
     assert step.fastest_phase(0.0, first.h, peak) == pytest.approx(q * k2 * first.h / 2 + mean_field * peak, rel=1e-3)
 
 
+@pytest.mark.slow
 def test_beyond_the_cap_the_splitting_is_wrong_with_a_perfect_norm() -> None:
     """Why there is a cap: Weideman and Herbst, SIAM J. Numer. Anal. 23, 485 (1986)."""
     own = Natural(beta=500.0)

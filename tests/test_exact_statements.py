@@ -337,6 +337,7 @@ def test_a_grid_that_stands_still_in_the_lab_sees_the_same_flight(solved: Solved
     assert lab.summary.end.interaction_nk == pytest.approx(moving.summary.end.interaction_nk, rel=1e-4)
 
 
+@pytest.mark.slow
 def test_atoms_too_fast_for_a_grid_in_the_lab_are_refused() -> None:
     """While it falls, the cloud leaves the spectrum, which would fold it back as slow atoms."""
     plan = motion.cloud(

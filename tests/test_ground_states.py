@@ -91,6 +91,7 @@ every_axes = pytest.mark.parametrize("axes", ["auto", "full"])
 both_axes_slowly = pytest.mark.parametrize("axes", ["auto", pytest.param("full", marks=pytest.mark.slow)])
 
 
+@pytest.mark.slow
 @every_axes
 @pytest.mark.parametrize("row", tables.ISOTROPIC, ids=lambda r: f"{r.beta:g}")
 def test_isotropic_repulsive(solved: Solve, row: tables.Isotropic, axes: str) -> None:
@@ -122,6 +123,7 @@ def test_isotropic_attractive(solved: Solve, row: tables.Attractive, axes: str) 
     in_balance(run)
 
 
+@pytest.mark.slow
 @every_axes
 @pytest.mark.parametrize("accuracy", ["draft", "normal"])
 def test_just_below_the_collapse_there_is_a_cloud_and_just_above_there_is_none(

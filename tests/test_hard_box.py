@@ -69,6 +69,7 @@ def test_a_large_cloud_comes_to_rest_in_nine_pairs_from_the_first_guess() -> Non
         assert found.converged and found.pairs <= pairs
 
 
+@pytest.mark.slow
 def test_an_ideal_gas_has_the_energy_and_the_width_of_a_particle_in_a_box(solved: Solved) -> None:
     run = solved(boxes.plan(motion.stage("release", 60e-3), a="0 a0", number=10, accuracy="normal"))
     ground = run.summary.ground
@@ -146,6 +147,7 @@ def test_a_short_pulse_inside_the_walls_makes_the_orders_of_bessels_functions(so
         assert found[str(n)] == pytest.approx(special.jv(n, theta) ** 2, abs=3e-3)
 
 
+@pytest.mark.slow
 def test_letting_an_interacting_cloud_out_keeps_its_energy_but_for_what_is_told(solved: Solved) -> None:
     runs = {a: solved(boxes.plan(motion.stage("hold", 1e-3), motion.stage("release", 10e-3), number=2e4, accuracy=a))
             for a in ("draft", "normal")}  # fmt: skip

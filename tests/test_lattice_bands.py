@@ -189,6 +189,7 @@ def test_a_cloud_under_a_force_oscillates_with_blochs_period(solved: Solved, per
         assert track["velocity"][i, 0] / RECOIL.velocity == pytest.approx(mean, abs=4e-3)
 
 
+@pytest.mark.slow
 def test_blochs_period_is_that_of_one_site(solved: Solved) -> None:
     """Atoms that their weight pulls along a lattice of 1064 nm turn round after half a period and after a whole one."""
     weight = motion.RB * 9.80665 * SPACING / RECOIL.energy

@@ -101,6 +101,7 @@ def test_a_long_flash_is_nothing_like_bessel(solved: Solved) -> None:
     assert special.jv(0, s * tau / 2) ** 2 == pytest.approx(0.002341, abs=1e-6)
 
 
+@pytest.mark.slow
 @pytest.mark.parametrize(("s", "printed"), planewaves.BRAGG_PULSES)
 def test_a_bragg_pi_pulse_on_a_plane_wave(solved: Solved, s: float, printed: float) -> None:
     """Detuned by 4 E_R/h and h/V0 long it moves all atoms by +2 hbar k."""
@@ -128,6 +129,7 @@ def test_two_flashes_a_talbot_time_apart(solved: Solved, share: float, theta: fl
 # ---- a narrow cloud ------------------------------------------------------------------------------------------------
 
 
+@pytest.mark.slow
 @pytest.mark.parametrize(("s", "tau", "printed"), planewaves.SHORT_PULSES[::2])
 def test_a_flash_on_a_narrow_cloud_and_where_its_orders_fly(s: float, tau: float, printed: tuple[float, ...]) -> None:
     flight = 15e-3
@@ -174,6 +176,7 @@ def test_light_that_rushes_past_is_said_to_cost() -> None:
     assert pairs[20] - pairs[10] == pytest.approx(pairs[10], rel=0.5)
 
 
+@pytest.mark.slow
 def test_a_flash_on_a_falling_expanding_kicked_cloud_is_the_same_on_a_grid_that_stands(solved: Solved) -> None:
     stages = (
         motion.stage("kick", velocity='["0.7 mm/s", "0 mm/s", "0 mm/s"]'), motion.stage("release", 1e-3),

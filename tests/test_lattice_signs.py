@@ -85,6 +85,7 @@ def test_a_flash_pushes_atoms_towards_its_minima(solved: Solved) -> None:
     assert 1e-3 * end.velocity_mm_per_s[0] == pytest.approx(push, rel=2e-3)
 
 
+@pytest.mark.slow
 def test_two_halves_of_a_pulse_are_the_whole_of_it(solved: Solved) -> None:
     """The phase that the detuning has added up is carried from stage to stage."""
     parts = light.lattice(1, detuning=f'"{4 * RECOIL.hertz!r} Hz"')
@@ -140,6 +141,7 @@ def test_a_kick_of_two_recoils_is_order_one(solved: Solved) -> None:
     assert found["1"] == pytest.approx(1.0, abs=1e-4)
 
 
+@pytest.mark.slow
 @pytest.mark.parametrize("p", [2.0, 3.0, -5.3])
 def test_a_cloud_that_comes_with_a_velocity_is_not_cut_in_two(solved: Solved, p: float) -> None:
     """Light that moves along with the atoms does to them what standing light does to atoms at rest (Galilei)."""

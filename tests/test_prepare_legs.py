@@ -89,6 +89,7 @@ def test_a_frame_that_stands_sees_what_breaks_the_roundness() -> None:
     assert along == [ROUND, ("wave", "radial", "radial")] and across == [ROUND, ("mirror", "wave", "mirror")]
 
 
+@pytest.mark.slow
 def test_a_cloud_goes_from_round_to_even_axes_unharmed(solved: Solved) -> None:
     stages = (
         motion.stage("pulse", 1e-3, to='{ "dipole.frequency" = ["33 Hz", "99 Hz", "99 Hz"] }'),

@@ -80,6 +80,7 @@ strength = {strength}
     assert nothing.width_um == pytest.approx(hardly.width_um, rel=1e-5)
 
 
+@pytest.mark.slow
 @pytest.mark.parametrize("recoils", [1, 16])
 def test_a_kick_in_a_lattice_is_kept_or_refused_but_never_folded_back(recoils: int) -> None:
     light = LATTICE.format(strength=1, detuning="0 Hz")

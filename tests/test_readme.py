@@ -41,6 +41,7 @@ def test_the_program_in_the_readme_runs(monkeypatch: pytest.MonkeyPatch, capsys:
     assert picture.values[-1].sum() * cell == pytest.approx(2e5, rel=2e-3)
 
 
+@pytest.mark.slow
 def test_the_names_in_the_readme_are_in_the_summary(play: Play) -> None:
     """Every name in the README's table of results is a name of summary.json."""
 

@@ -135,6 +135,7 @@ def test_isotropic_flight_in_laboratory_units() -> None:
         assert found.widths[0] * n.length == pytest.approx(row.width[0], abs=6e-12)
 
 
+@pytest.mark.slow
 def test_cigar_flight_in_laboratory_units() -> None:
     row = flights.FREE_IN_LAB[2]
     n = units.natural(RB, 2 * pi * row.frequency[1], number=1e5, scattering_length=A_RB)

@@ -149,6 +149,7 @@ def test_a_window_stays_on_the_sensor(pictures: list[Picture]) -> None:
     assert (right, top) == pytest.approx((edges[1], edges[3])) and left > edges[0] + 100 and bottom > edges[2] + 60
 
 
+@pytest.mark.slow
 def test_a_film_is_shown_in_a_selection_and_says_so(pictures: list[Picture]) -> None:
     film = [dataclasses.replace(pictures[1], name=f"side_{n}") for n in range(30)]
     figure = camera_figure(invented_run.contents().summary, film)

@@ -123,6 +123,7 @@ def test_a_title_is_shown_as_it_was_written() -> None:
     assert seen.startswith("costs $5 or $6_a and so on") and seen.endswith(" ...") and len(seen) <= 68
 
 
+@pytest.mark.slow
 def test_no_figure_shows_a_power_of_ten() -> None:
     kept = invented_run.track()
     tiny = Track(kept.time * 1e-4, kept.stage, {k: dataclasses.replace(s, values=s.values * 1e-6)
@@ -331,6 +332,7 @@ def test_a_figure_is_at_least_900_pixels_wide_and_always_the_same() -> None:
     assert int.from_bytes(first[16:20], "big") >= 900  # the width field of the PNG header (ISO/IEC 15948)
 
 
+@pytest.mark.slow
 def test_a_run_gets_the_figures_it_has_data_for(tmp_path: Path) -> None:
     whole = invented_run.contents()
     names = ["flight", "pictures_side", "momentum", "orders", "columns", "strip", "energies", "flow"]
@@ -374,6 +376,7 @@ def test_there_is_no_wide_gap_below_the_title() -> None:
     assert 0 < (subtitle.y0 - title.y1) / figure.dpi < 0.35  # inches
 
 
+@pytest.mark.slow
 def test_no_figure_loads_pyplot() -> None:
     script = "import sys, trapsim.show.figures; print('matplotlib.pyplot' in sys.modules, 'matplotlib' in sys.modules)"
     done = subprocess.run(

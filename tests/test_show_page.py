@@ -201,6 +201,7 @@ def test_a_run_in_memory_has_the_same_page(contents: Contents) -> None:
     assert page_html(run, PNG) == page_html(dataclasses.replace(contents, plan_text=""), PNG)
 
 
+@pytest.mark.slow
 def test_show_writes_figures_and_page_or_neither(
     tmp_path: Path, contents: Contents, capsys: pytest.CaptureFixture[str]
 ) -> None:

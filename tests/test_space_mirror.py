@@ -73,6 +73,7 @@ def test_a_run_on_mirror_axes_is_the_run_on_wave_axes() -> None:
         assert np.abs(a - b).max() < 1e-6 * b.max()
 
 
+@pytest.mark.slow
 def test_what_breaks_the_evenness_moves_the_cloud_to_whole_axes() -> None:
     light = """
 [trap.light]

@@ -54,6 +54,7 @@ def test_a_second_process_remembers_what_the_first_has_planned(tmp_path: Path) -
     assert plan_in_a_process(tmp_path) == (True, "")
 
 
+@pytest.mark.slow
 def test_what_another_process_learns_meanwhile_is_not_lost(tmp_path: Path) -> None:
     # this one began before the other had planned anything, and writes after it
     child = CHILD.replace("whole = ", "sys.stdin.readline()\nwhole = ")
@@ -69,6 +70,7 @@ def test_what_another_process_learns_meanwhile_is_not_lost(tmp_path: Path) -> No
     assert first < set(kept(tmp_path).read_bytes().splitlines())
 
 
+@pytest.mark.slow
 @pytest.mark.parametrize("content", [b"", b"(fftw-2.0 rubbish", b"\x00\xff" * 40], ids=["empty", "foreign", "binary"])
 def test_a_damaged_file_is_ignored_with_a_notice_and_replaced(tmp_path: Path, content: bytes) -> None:
     plan_in_a_process(tmp_path)
@@ -79,6 +81,7 @@ def test_a_damaged_file_is_ignored_with_a_notice_and_replaced(tmp_path: Path, co
     assert plan_in_a_process(tmp_path) == (True, "")
 
 
+@pytest.mark.slow
 def test_half_a_file_is_ignored(tmp_path: Path) -> None:
     plan_in_a_process(tmp_path)
     whole = kept(tmp_path).read_bytes()
