@@ -7,7 +7,7 @@ import os
 import shutil
 import tempfile
 
-# what planning learns stays with this session, and with the processes it starts
+# what planning learns is for these tests alone, and for the processes they start
 os.environ["XDG_CACHE_HOME"] = tempfile.mkdtemp(prefix="trapsim-cache-")
 atexit.register(shutil.rmtree, os.environ["XDG_CACHE_HOME"], ignore_errors=True)
 for _name in ("OMP_NUM_THREADS", "OPENBLAS_NUM_THREADS"):

@@ -103,5 +103,3 @@ def test_an_unfinished_kind_of_axis_says_what_it_lacks() -> None:
     for ask in (lambda a: a.x1(0), lambda a: a.x2(0), lambda a: a.k2(0), lambda a: a.basis(0)):
         with pytest.raises(TypeError, match="Axis does not say"):
             ask(Axis())
-    with pytest.raises(TypeError, match="no finer twin"):
-        Axis().finer()

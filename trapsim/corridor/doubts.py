@@ -77,7 +77,10 @@ def _pressure(cloud: Cloud, axis: Axis) -> float:
     return float(0.5 * HBAR * cloud.q * axis.half_extent * steep.sum())
 
 
-def doubts(setup: Setup, state: State, track: Track, *, residual: float, slack: float, lit: Collection[int]) -> Trust:
+def doubts(
+    setup: Setup, state: State, track: Track, *, residual: float, slack: float, drift: float, kink: float,
+    lit: Collection[int],
+) -> Trust:
     """How wrong a run may be, from its books and from what it can be held against.
 
     Parameters
@@ -88,15 +91,17 @@ def doubts(setup: Setup, state: State, track: Track, *, residual: float, slack: 
     track : Track
     residual, slack : float
         Of the ground state.
+    drift, kink : float
+        `energy_drift` and `kink_error`.
     lit : directions
         Along which lattices have acted.
     """
     legs, origin = setup.legs, setup.timeline.origin
     return trust(
-        state.books, residual=residual, slack=slack, energy_drift=energy_drift(track, legs, origin) or 0.0,
+        state.books, residual=residual, slack=slack, energy_drift=drift,
         swing=swing_error(track, legs, setup.q, origin), resistance=resistance(setup),
         slowed=slowed(track), centre_off=_centre_off(setup, state, track),
-        kink=kink_error(state.books.kink, track, setup.q), grown=grown(track, legs), lit=lit,
+        kink=kink, grown=grown(track, legs), lit=lit,
     )  # fmt: skip
 
 

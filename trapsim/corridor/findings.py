@@ -107,7 +107,7 @@ def summarise(
     drift = energy_drift(track, setup.legs, timeline.origin)
     kink = kink_error(state.books.kink, track, setup.q)
     error = doubts(
-        setup, state, track, residual=ground.residual or 0.0, slack=slack,
+        setup, state, track, residual=ground.residual or 0.0, slack=slack, drift=drift or 0.0, kink=kink,
         lit={plan.trap[part].direction for one in stages if one.end for part in one.end.orders or {}},
     )  # fmt: skip
     return Summary(

@@ -6,6 +6,9 @@ from collections.abc import Iterable, Iterator, Sequence
 
 from trapsim.record.summary import Certificate, Difference, Moment, Number, Overestimate, SpaceFigures, Summary
 
+#: an estimate below this share of the truth is not an estimate any more
+LEAST = 0.2
+
 
 def certificate(run: Summary, finer: Summary, *, tolerance: float) -> Certificate:
     """What the finer run says about the other one.
@@ -74,6 +77,3 @@ def missed(certified: Certificate) -> Sequence[str]:
     over = certified.estimate_over_truth.as_dict()
     return [name for name, ratio in over.items() if ratio is not None and ratio < LEAST]
 
-
-#: an estimate below this share of the truth is not an estimate any more
-LEAST = 0.2

@@ -9,7 +9,7 @@ import numpy as np
 
 from trapsim.cloud.cloud import Cloud, regauge
 from trapsim.errors import PhysicsRefused
-from trapsim.measure.observables import profile, reach
+from trapsim.measure.observables import profile, reach, spectral_marginals
 from trapsim.space.resample import resample
 from trapsim.space.space import Array, Space
 
@@ -86,8 +86,7 @@ def made_fit(cloud: Cloud, moving: Sequence[bool], *, place: str, afford: Afford
 def _square_k(cloud: Cloud) -> Array:
     """<k_j^2> (3,)."""
     space = cloud.space
-    spectrum = space.forward(space.array(cloud.phi))
-    marginals = space.spectral_marginals(spectrum.real**2 + spectrum.imag**2)
+    marginals = spectral_marginals(cloud)
     norm = float(marginals[0] @ space.axes[0].spectral_weights)
     weighted = [m * a.spectral_weights / norm for m, a in zip(marginals, space.axes, strict=True)]
     return np.array([float(weighted[space.dim(j)] @ space.axis(j).k2(j)) for j in range(3)])

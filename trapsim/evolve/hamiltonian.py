@@ -65,7 +65,7 @@ class Hamiltonian:
         varied = [a for a in space.axes if not a.uniform]
         if space.size < LARGE or self.c < 0 or any(len(a.covers) > 1 or a.n % 2 or a.n < 2 * FEWEST for a in varied):
             return None
-        fewer = Space([a.grown(0.5, 1) for a in space.axes], threads=space.threads)
+        fewer = space.grown((0.5,) * 3, (1,) * 3)
         return Hamiltonian(fewer, means(self.V, space), coupling=self.c, q=self.q)
 
     def rms_too_small(self, u: Array) -> bool:

@@ -20,7 +20,7 @@ from trapsim.evolve.regrid import grown_alike, nearly_full, roomier
 from trapsim.evolve.scaling import LawStart, MovingLaw, StandingLaw, measure_law
 from trapsim.evolve.splitstep import Rest, SplitStep
 from trapsim.evolve.state import Leg, Pace, State, Tick
-from trapsim.measure.observables import Profile, profile, reach
+from trapsim.measure.observables import Profile, profile, reach, spectral_marginals
 from trapsim.space.space import Array, Space
 from trapsim.terms.part import remainder
 
@@ -287,8 +287,7 @@ def _stop_at(
 
 def _spectrum(cloud: Cloud) -> Array:
     """Populations (3,) near the highest wave numbers; for half a pair."""
-    samples = cloud.space.forward(cloud.space.array(cloud.phi))
-    return spectrum_population(cloud.space, cloud.space.spectral_marginals(samples.real**2 + samples.imag**2))
+    return spectrum_population(cloud.space, spectral_marginals(cloud))
 
 
 def _has_moved(cloud: Cloud, marginals: list[Array], law: LawStart, leg: Leg) -> bool:

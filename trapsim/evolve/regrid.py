@@ -14,6 +14,7 @@ from trapsim.errors import Notice
 from trapsim.evolve.door import Afford, through
 from trapsim.evolve.guards import Guards, share_beyond
 from trapsim.evolve.state import Leg
+from trapsim.measure.observables import spectral_marginals
 from trapsim.space.space import Array, Space
 
 #: more than this share of what the guards allow is reason enough
@@ -23,10 +24,10 @@ EMPTY = 1e-3
 #: where the guards' outer part starts once an axis is half as long
 HALF = 0.4
 
+
 def nearly_full(guards: Guards, edge: Array, spectrum: Array) -> bool:
-    """Whether populations (3,) near the edges, or near the highest wave numbers, are close to what is allowed."""
-    watched = np.where(guards.watched, edge, 0.0)
-    return bool(watched.max() > NEARLY * guards.edge or spectrum.max() > NEARLY * guards.spectrum)
+    """Whether populations (3,) near the watched edges, or near the highest wave numbers, are close to what is allowed."""
+    return bool(edge.max() > NEARLY * guards.edge or spectrum.max() > NEARLY * guards.spectrum)
 
 
 def roomier(
@@ -37,20 +38,19 @@ def roomier(
     Parameters
     ----------
     edge, spectrum : (3,)
-        Populations near the edges and near the highest wave numbers; where they are nearly full, more room is made.
+        Populations near the edges that are watched, and near the highest wave numbers; where they are nearly full, more
+        room is made.
     afford : callable
         Whether there is memory for so many points.
     """
     space = cloud.space
-    samples = space.forward(space.array(cloud.phi))
-    density = space.marginals(cloud.density())
-    spectral = space.spectral_marginals(samples.real**2 + samples.imag**2)
+    density, spectral = space.marginals(cloud.density()), spectral_marginals(cloud)
     points, extent = np.ones(3), np.ones(3)
     for d, axis in enumerate(space.axes):
         along = list(axis.covers)
         # a lattice that holds atoms wants its own period to remain a whole number of spacings
         free = all(leg.moving[j] or not leg.split[j] for j in along)
-        if max(edge[j] * guards.watched[j] for j in along) > NEARLY * guards.edge:
+        if max(edge[j] for j in along) > NEARLY * guards.edge:
             extent[along] = 2.0
             slow = free and share_beyond(spectral[d] * axis.spectral_weights, axis.k, HALF) < EMPTY * guards.spectrum
             points[along] = 1.0 if slow else 2.0

@@ -56,14 +56,19 @@ class Profile:
     flow: list[Array]
 
 
+def spectral_marginals(cloud: Cloud) -> list[Array]:
+    """Per array dimension, |spectrum|^2 with all other wave numbers summed away; costs half a transform pair."""
+    samples = cloud.space.forward(cloud.space.array(cloud.phi))
+    return cloud.space.spectral_marginals(samples.real**2 + samples.imag**2)
+
+
 def profile(cloud: Cloud) -> Profile:
     """Measure a cloud in its own frame; costs half a transform pair and one derivative per direction."""
     space = cloud.space
     n = cloud.density()
     quartic = space.integral(n**2)
     density = space.marginals(n)
-    spectrum_samples = space.forward(space.array(cloud.phi))
-    spectrum = space.spectral_marginals(spectrum_samples.real**2 + spectrum_samples.imag**2)
+    spectrum = spectral_marginals(cloud)
     norm = float(np.dot(density[0], space.axes[0].weights))
     mean, var, k_mean, k_var, cov = (np.zeros(3) for _ in range(5))
     flow = [np.zeros(a.n) for a in space.axes]

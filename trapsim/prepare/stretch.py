@@ -102,10 +102,6 @@ class Stretch:
         course = self.courses.get(SCATTERING)
         return self.factor * (course.at(t) if course else self.scattering)
 
-    def confined(self, t: float) -> bool:
-        """Whether a part that confines is on at a time inside."""
-        return any(p.confines and p.strength > 0 for p in self.parts_at(t))
-
     def gripped(self, leaving: Collection[str] = ()) -> frozenset[int]:
         """Directions in which a part holds the atoms all the time without steering them, but for those `leaving`."""
         middle = 0.5 * (self.start + self.stop)

@@ -124,7 +124,7 @@ def reading(path: Path, way_out: str) -> Iterator[None]:
         raise FileTrouble.at(str(path), "", "there is no such file", way_out) from error
     except PermissionError as error:
         raise FileTrouble.at(str(path), "", "trapsim is not allowed to read it", "ask its owner for leave") from error
-    except (
+    except (  # a damaged file may raise any of these, deep inside numpy, zipfile or HDF5
         OSError, RuntimeError, KeyError, ValueError, TypeError, IndexError, EOFError, NotImplementedError,
         zipfile.BadZipFile,
     ) as error:  # fmt: skip

@@ -9,6 +9,7 @@ from typing import Any
 import numpy as np
 
 from trapsim.show.wording import Raw, plain
+from trapsim.terms.ramps import SHAPES
 
 #: What makes a part strong, by its kind; its strength multiplies it.
 _MAIN = {"harmonic": "frequency", "lattice": "depth", "box": "height", "gradient": "acceleration"}
@@ -90,16 +91,12 @@ def _during(now: Mapping[str, float], own: Mapping[str, Raw], time: float) -> di
     """Values on their way at a time since the start of the stage."""
     out = {}
     for key, change in own.items():
-        since = time - (plain(change.get("delay")) or 0.0)
-        length = plain(change.get("duration")) or 0.0
-        share = min(max(since / length, 0.0), 1.0) if length > 0 else 1.0
-        shape = change.get("shape")
-        if shape == "smooth":
-            share = share**2 * (3 - 2 * share)
-        elif shape == "exponential" and (constant := plain(change.get("time_constant"))):
-            share = -math.expm1(-max(since, 0.0) / constant)
-        elif shape == "sudden":
-            share = 1.0
+        since = max(time - (plain(change.get("delay")) or 0.0), 0.0)
+        length, shape = plain(change.get("duration")) or 0.0, change.get("shape")
+        share = 1.0
+        if shape != "sudden" and since <= length and length > 0:
+            sharpness = length / (plain(change.get("time_constant")) or length)
+            share = SHAPES[shape or "linear"](since / length, sharpness)
         out[key] = now[key] + share * (_size(change["value"]) - now[key])
     return out
 

@@ -7,10 +7,10 @@ import re
 from collections.abc import Mapping, Sequence
 from typing import Any
 
-from trapsim.constants import HBAR
 from trapsim.quantities import KINDS, human
 from trapsim.record.summary import Summary
 from trapsim.show.numbers import brief, signed
+from trapsim.terms.lattice import Lattice
 
 Raw = Mapping[str, Any]
 _KIND = {kind.si: name for name, kind in KINDS.items() if kind.si}
@@ -58,10 +58,10 @@ def recoil_energy(plan: Raw, part: str) -> float | None:
     """The recoil energy of a lattice, J; None for any other part."""
     raw = plan.get("trap", {}).get(part, {})
     mass = plain(plan.get("atoms", {}).get("mass"))
-    spacing = plain(raw.get("spacing")) or 0.5 * (plain(raw.get("wavelength")) or 0.0)
-    if raw.get("kind") != "lattice" or not mass or not spacing:
+    spacing, wavelength = plain(raw.get("spacing")), plain(raw.get("wavelength"))
+    if raw.get("kind") != "lattice" or not mass or not (spacing or wavelength):
         return None
-    return (HBAR * math.pi / spacing) ** 2 / (2 * mass)
+    return Lattice(spacing=spacing, wavelength=wavelength, depth=0.0, mass=mass).recoil_energy
 
 
 def what_changes(plan: Raw, stage: Raw) -> str:

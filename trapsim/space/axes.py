@@ -74,9 +74,6 @@ class Wave(Axis):
         kernel = np.where(close, 1.0, kernel)
         return np.where(np.abs(x)[:, None] <= self.half_extent, kernel, 0.0)
 
-    def finer(self) -> Wave:
-        return Wave(self.covers, 2 * self.n if self.n > 1 else 1, self.half_extent)
-
     def project(self, x: Array) -> Array:
         """(len(x), n): a round density's samples seen from the side; a flat axis has no side view of its own."""
         raise TypeError("a wave axis is integrated over, it has no side view")
@@ -137,9 +134,6 @@ class Mirror(Axis):
     @property
     def counted(self) -> int:
         return 2 * self.n
-
-    def finer(self) -> Mirror:
-        return Mirror(self.covers, 2 * self.n, self.half_extent)
 
     @property
     def whole(self) -> int:
@@ -236,9 +230,6 @@ class Wall(Axis):
         cosines = np.cos(np.outer(np.asarray(x, dtype=float) + self.half_extent, self.k))
         return (cosines * (self.k * self._shares)[None, :]) @ self._forward
 
-    def finer(self) -> Wall:
-        return Wall(self.covers, 2 * self.n, self.half_extent)
-
 
 class Radial(Axis):
     """Round in two directions; Bessel series on the zeros of J0.
@@ -297,9 +288,6 @@ class Radial(Axis):
         series = special.j0(np.outer(x, self.k)) * self._norms[None, :]
         series[x > self.half_extent] = 0.0
         return series @ self.forward_matrix
-
-    def finer(self) -> Radial:
-        return Radial(self.covers, 2 * self.n, self.half_extent)
 
     def project(self, x: Array) -> Array:
         """(len(x), n): the side view of a round density on a line, by the Fourier slice theorem.

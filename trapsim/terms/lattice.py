@@ -80,7 +80,7 @@ class Lattice(Part):
                     period = share * quantities.parse(table[name], "length").value
                 except quantities.QuantityError:
                     return {}
-                recoil = (HBAR * np.pi / period) ** 2 / (2 * mass) if period > 0 else 0.0
+                recoil = cls(spacing=period, depth=0.0, mass=mass).recoil_energy if period > 0 else 0.0
                 return {"energy": {"Er": recoil}, "frequency": {"Er": recoil / HBAR}} if recoil else {}
         return {}
 
