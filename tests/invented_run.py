@@ -178,7 +178,9 @@ def momenta() -> tuple[Seen, ...]:
         orders = dict(zip(("-1", "0", "1"), shares, strict=True))
         away = {n: (k - offset - 2 * int(n) * RECOIL) / wide for n in orders}
         density = sum(p * np.exp(-(away[n] ** 2) / 2) for n, p in orders.items()) / (np.sqrt(2 * np.pi) * wide)
-        out.append(Seen(stage, "light", RECOIL, fallen, Momentum(2, k, density), orders))
+        speed = constants.hbar * RECOIL / MASS
+        told = {n: (2 * int(n) * speed, 0.05 * speed) for n in orders}
+        out.append(Seen(stage, "light", RECOIL, fallen, Momentum(2, k, density), orders, told))
     return tuple(out)
 
 

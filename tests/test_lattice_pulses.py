@@ -140,6 +140,10 @@ def test_a_flash_on_a_narrow_cloud_and_where_its_orders_fly(s: float, tau: float
     assert light.off(found, planewaves.averaged(s, tau, NARROW)) < 1e-5
     # independent calculation for a plane wave at rest
     assert [found.get(n, 0.0) for n in "012"] == pytest.approx(printed, abs=1e-3)
+    # exact: orders move with 2 n recoils, and each is as narrow as an ideal gas in its trap was
+    told = run.momenta[-1].motion
+    assert [told[n][0] for n in ("-1", "1")] == pytest.approx([-2 * RECOIL.velocity, 2 * RECOIL.velocity], rel=1e-3)
+    assert [told[n][1] for n in ("-1", "0", "1")] == pytest.approx([NARROW * RECOIL.velocity] * 3, rel=1e-2)
     picture = run.pictures["side_hold_15ms"]
     across = picture.optical_density.sum(axis=0)
     for n in (-2, -1, 1, 2):

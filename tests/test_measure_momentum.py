@@ -14,7 +14,7 @@ import light
 import motion
 from reference import units
 from trapsim.cloud.cloud import Cloud
-from trapsim.measure.momentum import Momentum, momentum, order_places, order_shares
+from trapsim.measure.momentum import Momentum, momentum, order_motion, order_shares
 from trapsim.prepare.setup import prepare
 from trapsim.space.axes import Mirror, Radial, Wave
 from trapsim.space.frame import Frame
@@ -156,8 +156,11 @@ def test_orders_are_told_by_name_and_place() -> None:
     found = order_shares(comb(shares), LIGHT, fallen=0.0)
     assert list(found) == ["-2", "-1", "0", "1", "3"]
     assert found == pytest.approx({str(n): p for n, p in shares.items()}, abs=1e-9)
-    places = order_places(comb(shares), LIGHT, fallen=0.0)
-    assert places == pytest.approx({str(n): 2 * n * LIGHT.recoil_velocity for n in shares}, rel=1e-9, abs=1e-12)
+    motion = order_motion(comb(shares), LIGHT, fallen=0.0)
+    assert {n: v for n, (v, _) in motion.items()} == pytest.approx(
+        {str(n): 2 * n * LIGHT.recoil_velocity for n in shares}, rel=1e-9, abs=1e-12
+    )
+    assert [spread for _, spread in motion.values()] == pytest.approx([0.02 * LIGHT.recoil_velocity] * 5, rel=1e-6)
 
 
 @pytest.mark.parametrize("recoils", [-3.2, 0.7, 25.0])
@@ -167,7 +170,7 @@ def test_what_uniform_forces_gave_is_taken_off(recoils: float) -> None:
     moved = Momentum(0, seen.k + recoils * LIGHT.k, seen.density)
     fallen = recoils * LIGHT.recoil_velocity
     assert order_shares(moved, LIGHT, fallen=fallen) == pytest.approx({str(n): p for n, p in shares.items()}, abs=1e-9)
-    places = order_places(moved, LIGHT, fallen=fallen)
+    places = {n: v for n, (v, _) in order_motion(moved, LIGHT, fallen=fallen).items()}
     assert places == pytest.approx({str(n): 2 * n * LIGHT.recoil_velocity for n in shares}, rel=1e-9, abs=1e-12)
 
 

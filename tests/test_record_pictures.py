@@ -76,6 +76,7 @@ def test_what_was_seen_comes_back_as_it_was(run: trapsim.Run, folder: Path) -> N
     assert [(s.stage, s.part) for s in again.momenta] == [(1, "light"), (2, "light")]
     for kept, seen in zip(again.momenta, run.momenta, strict=True):
         assert np.array_equal(kept.momentum.density, seen.momentum.density) and kept.orders == pytest.approx(seen.orders)
+        assert kept.motion == seen.motion and set(kept.motion) == set(kept.orders)
     for view, plane in run.flow.items():
         assert np.array_equal(again.flow[view].right, plane.right, equal_nan=True)
 

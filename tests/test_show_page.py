@@ -164,8 +164,11 @@ def test_every_number_of_the_summary_is_that_of_the_page(contents: Contents, pag
 
 def test_the_orders_stand_in_a_table(page: str) -> None:
     seen = rows(page)
-    assert seen["order of light"] == ["end of 2. nudge", "end of 3. release"]
-    assert (seen["−1"], seen["0"], seen["+1"]) == (["15.0 %", "20.0 %"], ["75.0 %", "70.0 %"], ["10.0 %", "10.0 %"])
+    assert seen["order of light"] == ["end of 2. nudge", "end of 3. release", "last velocity (mm/s)", "spread (mm/s)"]
+    # two recoils of h/(m lambda) = 4.315 mm/s (CODATA), each order 0.05 of one wide
+    assert seen["−1"] == ["15.0 %", "20.0 %", "−8.630", "0.2158"]
+    assert seen["0"] == ["75.0 %", "70.0 %", "0", "0.2158"]
+    assert seen["+1"] == ["10.0 %", "10.0 %", "8.630", "0.2158"]
 
 
 def test_the_page_says_what_must_be_said(page: str) -> None:
@@ -197,7 +200,9 @@ def test_a_cloud_at_rest_has_a_page_too() -> None:
 
 
 def test_a_run_in_memory_has_the_same_page(contents: Contents) -> None:
-    run = Run(contents.plan, contents.summary, contents.track, contents.columns, contents.pictures)
+    run = Run(
+        contents.plan, contents.summary, contents.track, contents.columns, contents.pictures, momenta=contents.momenta
+    )
     assert page_html(run, PNG) == page_html(dataclasses.replace(contents, plan_text=""), PNG)
 
 

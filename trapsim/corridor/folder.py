@@ -29,7 +29,7 @@ SUMMARY = "summary.json"
 CERTIFICATE = "certificate"
 _LOCK = ".lock"
 #: how a checkpoint is laid out
-LAYOUT = 3
+LAYOUT = 4
 _FRAME = ("b", "bdot", "X", "Xdot")
 #: what the books keep per direction
 _PER_DIRECTION = ("edge", "spectrum", "kink")

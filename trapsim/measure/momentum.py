@@ -9,7 +9,6 @@ is multiplied on. (Fresnel's integral as a convolution; J. W. Goodman, Introduct
 
 from __future__ import annotations
 
-from collections.abc import Mapping
 from dataclasses import dataclass
 
 import numpy as np
@@ -170,13 +169,21 @@ def order_shares(seen: Momentum, lattice: Lattice, *, fallen: float) -> dict[str
     return {str(n): p for n, p in shares.items() if p > VISIBLE}
 
 
-def order_places(seen: Momentum, lattice: Lattice, *, fallen: float) -> Mapping[str, float]:
-    """Mean velocity of each visible order, m/s, what forces and kicks gave taken off."""
+def order_motion(seen: Momentum, lattice: Lattice, *, fallen: float) -> dict[str, tuple[float, float]]:
+    """Mean velocity and rms velocity spread of each visible order, m/s, what forces and kicks gave taken off.
+
+    Parameters
+    ----------
+    seen, lattice, fallen
+        As in `order_shares`.
+    """
     k, v = lattice.k, lattice.recoil_velocity
     offset = fallen / v * k
     out = {}
     for name in order_shares(seen, lattice, fallen=fallen):
         edges = np.clip(_cell_edges(seen.k), (2 * int(name) - 1) * k + offset, (2 * int(name) + 1) * k + offset)
         part = seen.density * np.diff(edges)
-        out[name] = float((seen.k - offset) @ part / part.sum()) * v / k
+        part /= part.sum()
+        mean = float((seen.k - offset) @ part)
+        out[name] = (mean * v / k, float(np.sqrt((seen.k - offset - mean) ** 2 @ part)) * v / k)
     return out

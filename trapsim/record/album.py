@@ -12,7 +12,7 @@ from trapsim.cloud.cloud import Cloud
 from trapsim.evolve.state import Leg
 from trapsim.measure.camera import Camera
 from trapsim.measure.columns import ColumnViews
-from trapsim.measure.momentum import Momentum, momentum, order_shares
+from trapsim.measure.momentum import Momentum, momentum, order_motion, order_shares
 from trapsim.measure.picture import Picture, pixel_edges, pixel_means, resonant_cross_section
 from trapsim.record.series import Array
 from trapsim.space.space import Space
@@ -57,6 +57,9 @@ class Seen:
         Velocity that forces and kicks have given since the lattice first acted, m/s.
     momentum : Momentum
     orders : mapping of str to float
+        Share of the atoms in each.
+    motion : mapping of str to (float, float)
+        Mean velocity and rms velocity spread of each order along the lattice, m/s, `fallen` taken off.
     """
 
     stage: int
@@ -65,6 +68,7 @@ class Seen:
     fallen: float
     momentum: Momentum
     orders: Mapping[str, float]
+    motion: Mapping[str, tuple[float, float]]
 
 
 class Album:
@@ -113,7 +117,8 @@ class Album:
                     fell = float(fallen[name][part.direction])
                     spread = momentum(cloud, part.direction)
                     orders = order_shares(spread, part, fallen=fell)
-                    self.seen.append(Seen(leg.stage, name, part.k, fell, spread, orders))
+                    motion = order_motion(spread, part, fallen=fell)
+                    self.seen.append(Seen(leg.stage, name, part.k, fell, spread, orders, motion))
 
     def orders(self, stage: int) -> dict[str, dict[str, float]] | None:
         """Populations by lattice at the end of a stage; None where no lattice has acted."""
@@ -158,7 +163,8 @@ class Album:
                 [p.name, p.camera, p.time, p.atoms_per_od, p.right, p.up] for p in self.pictures.values()
             ],
             "seen": [
-                [s.stage, s.part, s.recoil, s.fallen, s.momentum.direction, dict(s.orders)] for s in self.seen
+                [s.stage, s.part, s.recoil, s.fallen, s.momentum.direction, dict(s.orders), dict(s.motion)]
+                for s in self.seen
             ],
         }  # fmt: skip
         return arrays, told
@@ -175,8 +181,9 @@ class Album:
             Seen(
                 stage, part, recoil, fallen,
                 Momentum(direction, arrays[f"momentum{i}_k"], arrays[f"momentum{i}_density"]), orders,
+                {name: tuple(pair) for name, pair in motion.items()},
             )
-            for i, (stage, part, recoil, fallen, direction, orders) in enumerate(told["seen"])
+            for i, (stage, part, recoil, fallen, direction, orders, motion) in enumerate(told["seen"])
         ]  # fmt: skip
 
 

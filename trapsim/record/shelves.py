@@ -51,6 +51,9 @@ def put_momentum(group: Shelf, seen: Seen) -> None:
     group.put("density", seen.momentum.density, ("wave_number",), "m", "share of the atoms per wave number")
     group.scale("order", np.array([*map(int, seen.orders)], int), "1", "diffraction order, in pairs of photon momenta")
     group.put("share", np.array([*seen.orders.values()], float), ("order",), "1", "share of the atoms in the order")
+    motion = np.array([seen.motion[name] for name in seen.orders], float).reshape(-1, 2)
+    for name, values, words in zip(("velocity", "velocity_spread"), motion.T, ("mean", "rms spread of"), strict=True):
+        group.put(name, values, ("order",), "m/s", f"{words} velocity of the order, fallen_velocity taken off")
 
 
 def put_flow(group: Shelf, plane: FlowPlane) -> None:
@@ -80,8 +83,10 @@ def read_momentum(group: Any) -> Seen:
     told = group.attrs
     momentum = Momentum(DIRECTIONS.index(told["direction"]), group["wave_number"][()], group["density"][()])
     orders = {str(n): float(share) for n, share in zip(group["order"][()], group["share"][()], strict=True)}
+    motion = dict(zip(orders, zip(group["velocity"][()], group["velocity_spread"][()], strict=True), strict=True))
+    motion = {name: (float(mean), float(spread)) for name, (mean, spread) in motion.items()}
     recoil, fallen = float(told["recoil_wave_number"]), float(told["fallen_velocity"])
-    return Seen(int(told["stage"]), told["part"], recoil, fallen, momentum, orders)
+    return Seen(int(told["stage"]), told["part"], recoil, fallen, momentum, orders, motion)
 
 
 def read_flow(group: Any) -> FlowPlane:

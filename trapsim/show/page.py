@@ -69,7 +69,7 @@ def page_html(kept: Run | Contents, figures: Mapping[str, bytes] | None = None) 
         _head(summary, title),
         _sequence(kept),
         _end(summary),
-        section("Diffraction orders", tables.orders_table(summary)),
+        section("Diffraction orders", tables.orders_table(summary, kept.momenta)),
         section("Pictures", tables.pictures_table(summary.pictures)),
         _figures(figures),
         section("The cloud at the end of each step", tables.stage_ends_table(summary)),

@@ -6,10 +6,11 @@ import math
 from collections.abc import Mapping, Sequence
 
 from trapsim.constants import BOHR_RADIUS
+from trapsim.record.album import Seen
 from trapsim.record.summary import Ground, Moment, Numerics, PictureFigures, Summary
 from trapsim.show.certificate import HEAD, compared, steps_of, verdict
 from trapsim.show.markup import Cell, Html, numbers, paragraph, pretty, table
-from trapsim.show.numbers import brief, figures, four, percentage
+from trapsim.show.numbers import MISSING, brief, figures, four, percentage
 from trapsim.show.text import grid_words, law_beside, rates_with_errors, small, with_errors
 from trapsim.show.wording import Raw, parts_in_words, what_changes, words
 
@@ -60,18 +61,27 @@ def totals_table(end: Moment) -> Html:
     return table((), rows, kind="facts")
 
 
-def orders_table(summary: Summary) -> Html | None:
-    """Populations of the diffraction orders of each lattice at the ends of the steps; None where there was no lattice."""
+def orders_table(summary: Summary, momenta: Sequence[Seen] = ()) -> Html | None:
+    """Populations of the diffraction orders of each lattice at the ends of the steps, and how they move at the last.
+
+    None where there was no lattice.
+    """
     told = [(f"{n}. {s.name}", s.end.orders) for n, s in enumerate(summary.stages, start=1) if s.end and s.end.orders]
     parts = list(dict.fromkeys(part for _, orders in told for part in orders))
     tables = []
     for part in parts:
         columns = [(name, orders[part]) for name, orders in told if part in orders]
         seen = sorted({int(n) for _, orders in columns for n, share in orders.items() if share >= FAINT})
+        motion = next((one.motion for one in reversed(momenta) if one.part == part), {})
         rows = [
-            [pretty(f"{n:+d}" if n else "0"), *(_share(orders.get(str(n))) for _, orders in columns)] for n in seen
+            [
+                pretty(f"{n:+d}" if n else "0"), *(_share(orders.get(str(n))) for _, orders in columns),
+                *numbers([MISSING if v is None else small(1e3 * v) for v in motion.get(str(n), (None, None))]),
+            ]
+            for n in seen
         ]
-        tables.append(table((f"order of {part}", *(f"end of {name}" for name, _ in columns)), rows, kind="numbers"))
+        head = (f"order of {part}", *(f"end of {name}" for name, _ in columns), "last velocity (mm/s)", "spread (mm/s)")
+        tables.append(table(head, rows, kind="numbers"))
     return Html("".join(one.text for one in tables)) if tables else None
 
 
