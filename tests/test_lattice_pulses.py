@@ -94,6 +94,27 @@ def test_a_flash_on_a_plane_wave(solved: Solved, s: float, tau: float, printed: 
     assert [found.get(n, 0.0) for n in "012"] == pytest.approx(printed, abs=1e-5)
 
 
+def test_two_lattices_at_once_have_their_orders_apart() -> None:
+    """Along x and y an ideal gas does not know of the other light (exact: the energies add); recoils differ."""
+    short = 390e-9
+    second = light.lattice(6.0, axis="y").replace("trap.light", "trap.blue").replace("532 nm", "390 nm")
+    tau = 0.3
+    run = trapsim.run(motion.cloud(
+        motion.stage("pulse", tau * RECOIL.time, to='{ "light.strength" = 1, "blue.strength" = 1 }'),
+        frequency=(0, 0, 50), a="0 a0", parts=light.lattice(10.0) + second,
+        numerics=f'extent = ["{light.SPACING!r} m", "{short!r} m", "auto"]',
+    ))  # fmt: skip
+    found = run.summary.end.orders
+    blue = planewaves.Recoil(motion.RB, short)
+    assert light.off(found["light"], planewaves.pulsed(10.0, tau)) < 1e-5
+    assert light.off(found["blue"], planewaves.pulsed(6.0, tau * RECOIL.time / blue.time)) < 1e-5
+    # exact: 2 n hbar k/m, each of its own lattice
+    motions = {seen.part: seen.motion for seen in run.momenta}
+    for part, own in (("light", RECOIL), ("blue", blue)):
+        found = [motions[part][n][0] for n in ("-1", "1")]
+        assert found == pytest.approx([-2 * own.velocity, 2 * own.velocity], rel=1e-9)
+
+
 def test_a_long_flash_is_nothing_like_bessel(solved: Solved) -> None:
     s, tau, _ = planewaves.SHORT_PULSES[2]
     found = light.orders(solved(light.plane_wave(light.pulse(tau), parts=light.lattice(s))))

@@ -14,4 +14,4 @@ POLARISABILITY = _codata.physical_constants["atomic unit of electric polarizabil
 STANDARD_GRAVITY = _codata.g
 
 #: Enters every key: raise it when the same plan would give another result.
-PHYSICS_VERSION = 6
+PHYSICS_VERSION = 7

@@ -143,11 +143,11 @@ def prepare(plan: Plan) -> Setup:
     lengths = hold_orders(needs, timeline, omega, q, coupling, moving)
     _leave_uniform(timeline, lengths)
     round_about = round_directions(timeline, standing=standing)
-    axis = lasting_axis(round_about, lengths.uniform)
+    axis = lasting_axis(round_about, lengths.uniform | lengths.periodic)
     even = even_directions(timeline, still=still)
     walls = [timeline.initial.walled(), *(s.stretch.walled() for s in timeline.steps)]
     words = [
-        between(w, _words(plan, axis, r, e, lengths.uniform)) for r, e, w in zip(round_about, even, walls, strict=True)
+        between(w, _words(plan, axis, r, e, lengths)) for r, e, w in zip(round_about, even, walls, strict=True)
     ]
     _open_softly(plan, walls)
     spaces: dict[tuple[str, ...], Space] = {}
@@ -207,22 +207,22 @@ def _open_softly(plan: Plan, walls: list[frozenset[int]]) -> None:
 
 
 def _words(
-    plan: Plan, axis: int | None, round_about: frozenset[int], even: Sequence[bool], uniform: Array
+    plan: Plan, axis: int | None, round_about: frozenset[int], even: Sequence[bool], lengths: Lengths
 ) -> tuple[str, str, str]:
     asked = plan.numerics.axes
     if asked == "auto":
-        return choose_words(axis, round_about, [e and not u for e, u in zip(even, uniform, strict=True)])
+        return choose_words(axis, round_about, [e and not u for e, u in zip(even, lengths.uniform, strict=True)])
     words = ("wave", "wave", "wave") if asked == "full" else tuple("wave" if w == "wall" else w for w in asked)
     pair = [j for j in range(3) if words[j] == "radial"]
     if pair:
         (alone,) = set(range(3)) - set(pair)
-        if alone not in round_about or any(uniform[j] for j in pair):
+        if alone not in round_about or any(lengths.uniform[j] or lengths.periodic[j] for j in pair):
             raise PlanError.at(
                 "numerics.axes", str(list(words)), f"the plan is not round about {AXES[alone]} all the way",
                 "write axes = \"auto\", or \"full\"",
             )  # fmt: skip
     for j in range(3):
-        if words[j] == "mirror" and (not even[j] or uniform[j]):
+        if words[j] == "mirror" and (not even[j] or lengths.uniform[j]):
             raise PlanError.at(
                 f"numerics.axes[{j}]", '"mirror"', f"the plan is not even along {AXES[j]} all the way",
                 "write axes = \"auto\", or \"wave\" here",

@@ -124,9 +124,12 @@ def _round_about(stretch: Stretch, place: Array, moved: frozenset[int]) -> froze
     return out
 
 
-def lasting_axis(round_about: Sequence[frozenset[int]], uniform: Sequence[bool]) -> int | None:
-    """The direction about which the cloud stays round for the most steps; one radial axis serves it all that time."""
-    fit = [a for a in sorted(round_about[0]) if not any(uniform[j] for j in range(3) if j != a)]
+def lasting_axis(round_about: Sequence[frozenset[int]], endless: Sequence[bool]) -> int | None:
+    """The direction about which the cloud stays round for the most steps; one radial axis serves it all that time.
+
+    A radial axis ends at its edge, so it covers no direction that is uniform or periodic.
+    """
+    fit = [a for a in sorted(round_about[0]) if not any(endless[j] for j in range(3) if j != a)]
     return max(fit, key=lambda a: sum(a in still_round for still_round in round_about), default=None)
 
 
