@@ -274,12 +274,14 @@ def test_a_process_of_its_own_answers_alike(tmp_path):
     assert everything(tmp_path) == before
 
 
+@pytest.mark.slow
 def test_a_terminal_that_knows_only_ascii_is_no_trouble(tmp_path):
     (tmp_path / "plan.toml").write_text(GOOD.replace("Invented", "Wölkchen µ"), encoding="utf-8")
     answer = asked_outside(["check", "plan.toml"], tmp_path, PYTHONIOENCODING="ascii", PYTHONUTF8="0", LC_ALL="C")
     assert (answer.code, answer.err) == (0, "") and answer.out.startswith("W\\xf6lkchen \\xb5")
 
 
+@pytest.mark.slow
 def test_a_full_disk_behind_the_output_is_said(tmp_path):
     if not Path("/dev/full").exists():
         pytest.skip("this system has no /dev/full")

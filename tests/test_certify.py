@@ -255,6 +255,7 @@ def test_interrupted_while_certifying_the_result_is_safe_and_the_same_call_goes_
     assert found.picture_atoms_relative == pytest.approx(whole.difference.picture_atoms_relative, rel=1e-6)
 
 
+@pytest.mark.slow
 def test_a_damaged_beginning_of_a_certificate_is_begun_anew_and_the_result_is_not(folder: Path, tmp_path: Path) -> None:
     plan, place = plan_of(), tmp_path / "r"
     trapsim.run(plan, place)
@@ -269,6 +270,7 @@ def test_a_damaged_beginning_of_a_certificate_is_begun_anew_and_the_result_is_no
     assert (place / "track.csv").stat().st_mtime_ns == before
 
 
+@pytest.mark.slow
 def test_begun_anew_a_result_loses_its_certificate_and_what_was_left_of_one(tmp_path: Path) -> None:
     plan, place = plan_of(), tmp_path / "r"
     trapsim.run(plan, place, certify=True)

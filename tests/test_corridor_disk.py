@@ -54,6 +54,7 @@ def test_a_disk_full_from_the_start_leaves_nothing(run_here, tmp_path, monkeypat
     assert [p.name for p in tmp_path.iterdir()] == ["push.toml"]
 
 
+@pytest.mark.slow
 def test_a_disk_full_at_the_end_costs_nothing(run_here, tmp_path, monkeypatch):
     for name in ("run.h5", "track.csv", "summary.json"):
         with monkeypatch.context() as patch:
@@ -158,6 +159,7 @@ def test_a_folder_in_which_another_run_is_at_work_is_refused(run_here, tmp_path)
     assert run_here("--no-figures") == (0, "")
 
 
+@pytest.mark.slow
 def test_a_lock_is_no_hindrance_after_its_owner_died(run_here, tmp_path):
     code = "import os; from pathlib import Path; from trapsim.corridor.folder import locked\n"
     code += "with locked(Path('r')): os._exit(9)"

@@ -151,6 +151,7 @@ def test_a_run_that_crashes_goes_on_from_its_last_checkpoint(whole, tmp_path, ti
     equal(trapsim.run(PLAN, tmp_path / "r"), whole)
 
 
+@pytest.mark.slow
 def test_checkpoints_at_every_tick_change_nothing(whole, tmp_path, monkeypatch):
     monkeypatch.setattr("trapsim.corridor.run.FIRST", 0.0)
     monkeypatch.setattr("trapsim.corridor.run.PATIENCE", 0.0)

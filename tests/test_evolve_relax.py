@@ -46,6 +46,7 @@ SPACES = {"waves": waves(40, 6.0), "round": round_space(40, 6.0)}
 every_space = pytest.mark.parametrize("space", SPACES.values(), ids=SPACES.keys())
 
 
+@pytest.mark.slow
 @every_space
 @pytest.mark.parametrize("method", ["conjugate gradient", "imaginary time"])
 def test_the_ideal_gas_relaxes_to_the_oscillator(space: Space, method: str) -> None:

@@ -69,6 +69,7 @@ def test_the_centre_moves_alike_with_and_without_interaction(solved: Solved) -> 
         assert one.end.velocity_mm_per_s == pytest.approx(other.end.velocity_mm_per_s, rel=1e-9, abs=1e-9)
 
 
+@pytest.mark.slow
 def test_a_sloshing_cloud_keeps_its_shape(solved: Solved) -> None:
     """Only the trap's jump of place acts here, which pushes all atoms alike."""
     run = solved(slosh("100.4 a0", accuracy="fine"))
@@ -207,6 +208,7 @@ def test_plain_steps_are_unitary(solved: Solved) -> None:
     assert abs(run.summary.numerics.norm_drift) < 1e-12
 
 
+@pytest.mark.slow
 def test_the_virial_theorem_rules_the_second_derivative_of_the_size(solved: Solved) -> None:
     """<r^2>'' = (4 E_kin + 6 E_int - 4 E_pot)/m, from the derivative of the exact first one."""
     run = solved(breathing(accuracy="fine", at=tuple(np.arange(400, 425) * 1e-5)))
@@ -254,6 +256,7 @@ def reversed_in_time(state: State, start: float) -> State:
     return State(replace(cloud, phi=cloud.space.array(cloud.phi.conj()), frame=mirrored, time=start))
 
 
+@pytest.mark.slow
 @pytest.mark.parametrize(
     "stages",
     [(motion.stage("release", 5e-3),), (motion.stage("hold", 5e-3),)],

@@ -147,6 +147,7 @@ def test_the_collapse_in_the_trap_of_an_experiment(solved: Solve) -> None:
         solved(plan((1, 1, lam), -0.555 * a_mean))
 
 
+@pytest.mark.slow
 def test_imaginary_time_refuses_where_the_conjugate_gradient_does(solved: Solve) -> None:
     # As above; at 0.55 the cloud holds, with the tabulated mu (independent calculation).
     row = next(r for r in tables.ATTRACTIVE if r.na == 0.55)

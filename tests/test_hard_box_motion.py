@@ -52,6 +52,7 @@ def test_a_packet_comes_back_and_shows_its_mirror_image_half_way(directions: int
         assert np.sqrt(space.integral(np.abs(now - then) ** 2)) < 1e-6
 
 
+@pytest.mark.slow
 def test_a_periodic_box_would_come_back_four_times_as_soon() -> None:
     """What a box without walls would do, so that the test above can tell them apart."""
     walls = boxes.space([SIZE], 64)

@@ -159,6 +159,7 @@ def test_a_cloud_that_comes_with_a_velocity_is_not_cut_in_two(solved: Solved, p:
     assert exact["0"] < 0.9
 
 
+@pytest.mark.slow
 def test_orders_are_told_in_free_fall(solved: Solved) -> None:
     """Gravity along the lattice moves every order alike; what is told is as if there were none."""
     found = {}
@@ -180,6 +181,7 @@ def kick(recoils: float) -> str:
     return motion.stage("kick", velocity=f'["{recoils * RECOIL.velocity!r} m/s", "0 m/s", "0 m/s"]')
 
 
+@pytest.mark.slow
 @pytest.mark.parametrize("p", [-1.4, 2.6])
 def test_a_kick_after_the_light_leaves_every_atom_in_its_order(solved: Solved, p: float) -> None:
     """A second flash meets the atoms as they then move, and changes orders by what that light does alone."""

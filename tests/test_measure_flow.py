@@ -39,6 +39,7 @@ def densities(space: Space, t: float) -> list[np.ndarray]:
     ]
 
 
+@pytest.mark.slow
 def test_the_current_of_flying_packets() -> None:
     # Closed form: j = n [v + (b'/b)(x - v t)] for each of the three packets.
     space, t = waves(), 0.6

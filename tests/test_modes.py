@@ -87,6 +87,7 @@ def test_an_ideal_gas_breathes_at_twice_the_frequency_of_each_direction(solved: 
         assert squares[:, j] == pytest.approx(exact, rel=1e-5)
 
 
+@pytest.mark.slow
 @pytest.mark.parametrize("lam", [0.1, 8**0.5])
 def test_a_large_round_cloud_swings_at_the_two_hydrodynamic_frequencies(lam: float) -> None:
     """Both m = 0 modes at once; a finite cloud is off by a little that shrinks with its size."""

@@ -120,6 +120,7 @@ for write, given in ((write_run, (sys.argv[1], contents)), (write_checkpoint, ch
 """
 
 
+@pytest.mark.slow
 def test_a_full_disk_is_explained_and_leaves_the_older_result(tmp_path: Path, contents: Contents) -> None:
     write_run(tmp_path, contents)
     before = (tmp_path / "run.h5").read_bytes()

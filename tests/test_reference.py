@@ -117,6 +117,7 @@ def test_collapse_of_an_isotropic_cloud() -> None:
         stationary.isotropic(3, -4 * pi * 0.58)
 
 
+@pytest.mark.slow
 def test_collapse_in_a_round_trap() -> None:
     row = tables.CRITICAL_PUBLISHED[3]
     # Gammal et al., PRA 64, 055602 (2001), abstract: 0.55; the isotropic limit as above.

@@ -47,6 +47,7 @@ def kept(cache: Path) -> Path:
     return file
 
 
+@pytest.mark.slow
 def test_a_second_process_remembers_what_the_first_has_planned(tmp_path: Path) -> None:
     assert plan_in_a_process(tmp_path) == (False, "")
     name = kept(tmp_path).name

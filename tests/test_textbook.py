@@ -57,6 +57,7 @@ def test_an_ideal_gas_spreads_by_the_gaussian_law() -> None:
     assert grid.widths(psi) == pytest.approx([width(1.2, omega=w) for w in OMEGA], rel=1e-8)
 
 
+@pytest.mark.slow
 def test_a_released_cloud_expands_as_the_full_equation_says() -> None:
     """1e5 Rb-87 at 20/150/150 Hz, 5 ms: independent calculation (oscillator functions in stretched coordinates)."""
     record = next(r for r in FREE_IN_LAB if r.frequency[0] == 20)
